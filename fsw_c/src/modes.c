@@ -1,0 +1,163 @@
+/* Modes: the table in mrd.h, one small function per command and per mode. */
+#include "arith.h"
+#include "supervisor.h"
+
+static uint16_t is_mode(uint16_t mode)
+{
+    switch (mode) {
+    case MRD_MODE_HOLD_OFF:
+    case MRD_MODE_DAMPING:
+    case MRD_MODE_SETTLED:
+    case MRD_MODE_SAFE:
+    case MRD_MODE_INHIBIT:
+    case MRD_MODE_BENCH:
+        return 1;
+    default:
+        return 0;
+    }
+}
+
+/* ---- commands: each returns 1 if accepted ---- */
+
+static uint16_t command_inhibit(mrd_state *state)
+{
+    if (state->mode == MRD_MODE_SAFE || state->mode == MRD_MODE_BENCH) {
+        return 0;
+    }
+    state->mode = MRD_MODE_INHIBIT;
+    state->inhibit_commanded = 1;
+    return 1;
+}
+
+static uint16_t command_safe(mrd_state *state)
+{
+    state->mode = MRD_MODE_SAFE;
+    state->inhibit_commanded = 0;
+    return 1;
+}
+
+static uint16_t command_resume(mrd_state *state)
+{
+    if (state->mode != MRD_MODE_SAFE && state->mode != MRD_MODE_INHIBIT && state->mode != MRD_MODE_BENCH) {
+        return 0;
+    }
+    state->mode = MRD_MODE_HOLD_OFF;
+    state->inhibit_commanded = 0;
+    return 1;
+}
+
+static uint16_t command_arm(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs)
+{
+    if (state->mode != MRD_MODE_SAFE || inputs->command_key != config->bench_key) {
+        return 0;
+    }
+    state->mode = MRD_MODE_BENCH;
+    return 1;
+}
+
+static uint16_t command_bench(const mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs)
+{
+    uint32_t ticks = mrd_abs_s32(inputs->command_ticks);
+
+    return state->mode == MRD_MODE_BENCH && !inputs->low_power && inputs->command_coil < 3u && ticks >= 1u
+           && ticks <= (uint32_t)config->bench_limit_ticks;
+}
+
+static uint16_t obey(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                     uint16_t *bench_pulse)
+{
+    switch (inputs->command) {
+    case MRD_COMMAND_NONE:
+        return 1;
+    case MRD_COMMAND_ARM:
+        return command_arm(state, config, inputs);
+    case MRD_COMMAND_INHIBIT:
+        return command_inhibit(state);
+    case MRD_COMMAND_SAFE:
+        return command_safe(state);
+    case MRD_COMMAND_RESUME:
+        return command_resume(state);
+    case MRD_COMMAND_BENCH:
+        *bench_pulse = command_bench(state, config, inputs);
+        return *bench_pulse;
+    default:
+        return 0;
+    }
+}
+
+/* ---- transitions: each returns the mode that follows ---- */
+
+static uint16_t from_hold_off(const mrd_supervisor_config *config, const mrd_inputs *inputs)
+{
+    if (inputs->low_power) {
+        return MRD_MODE_INHIBIT;
+    }
+    return inputs->separation_s >= config->hold_off_s ? MRD_MODE_DAMPING : MRD_MODE_HOLD_OFF;
+}
+
+static uint16_t from_inhibit(const mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs)
+{
+    if (inputs->low_power || state->inhibit_commanded) {
+        return MRD_MODE_INHIBIT;
+    }
+    return from_hold_off(config, inputs);
+}
+
+static uint16_t from_damping(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                             const mrd_estimate *estimate)
+{
+    if (inputs->low_power) {
+        return MRD_MODE_INHIBIT;
+    }
+    if (estimate->valid) {
+        state->dwell = estimate->rate <= config->settled_rate ? mrd_count_u32(state->dwell) : 0u;
+    }
+    return state->dwell >= config->settle_dwell ? MRD_MODE_SETTLED : MRD_MODE_DAMPING;
+}
+
+static uint16_t from_settled(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                             const mrd_estimate *estimate)
+{
+    if (inputs->low_power) {
+        return MRD_MODE_INHIBIT;
+    }
+    if (estimate->valid) {
+        state->dwell = estimate->rate > config->wake_rate ? mrd_count_u32(state->dwell) : 0u;
+    }
+    return state->dwell >= config->wake_dwell ? MRD_MODE_DAMPING : MRD_MODE_SETTLED;
+}
+
+uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                         const mrd_estimate *estimate, uint16_t *bench_pulse)
+{
+    uint16_t before = state->mode;
+    uint32_t status = 0;
+
+    *bench_pulse = 0;
+    if (!is_mode(state->mode)) {
+        state->mode = MRD_MODE_SAFE;
+    }
+    if (!obey(state, config, inputs, bench_pulse)) {
+        status |= MRD_BIT(MRD_S_COMMAND_REFUSED);
+    }
+    switch (state->mode) {
+    case MRD_MODE_HOLD_OFF:
+        state->mode = from_hold_off(config, inputs);
+        break;
+    case MRD_MODE_INHIBIT:
+        state->mode = from_inhibit(state, config, inputs);
+        break;
+    case MRD_MODE_DAMPING:
+        state->mode = from_damping(state, config, inputs, estimate);
+        break;
+    case MRD_MODE_SETTLED:
+        state->mode = from_settled(state, config, inputs, estimate);
+        break;
+    default: /* safe and bench: left by command only */
+        break;
+    }
+    if (state->mode != before) {
+        state->dwell = 0;
+    }
+    return status;
+}

@@ -1,0 +1,111 @@
+"""The header's structures as numpy records: one memory layout for C, numpy and files.
+
+A record's *columns* are its integers in declared order, named like C would: `trace.derivative.derivative[2]`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+
+def dtype_of(ffi: Any, name: str) -> np.dtype:
+    """The numpy dtype with the layout that this machine's C compiler gives to the structure `name`."""
+    return _convert(ffi, ffi.typeof(name))
+
+
+def _convert(ffi: Any, ctype: Any) -> np.dtype:
+    if ctype.kind == "primitive":
+        return np.dtype(ctype.cname.removesuffix("_t"))
+    if ctype.kind == "array":
+        return np.dtype((_convert(ffi, ctype.item), (ctype.length,)))
+    names, fields = zip(*ctype.fields, strict=True)
+    return np.dtype(
+        {
+            "names": names,
+            "formats": [_convert(ffi, field.type) for field in fields],
+            "offsets": [field.offset for field in fields],
+            "itemsize": ffi.sizeof(ctype),
+        }
+    )
+
+
+def columns(dtype: np.dtype, prefix: str = "") -> list[str]:
+    """Names of all integers of a record, in declared order."""
+    if dtype.subdtype:
+        return [f"{prefix}[{i}]" for i in range(dtype.shape[0])]
+    if dtype.names is None:
+        return [prefix]
+    dot = f"{prefix}." if prefix else ""
+    return [column for name in dtype.names for column in columns(dtype[name], dot + name)]
+
+
+def to_columns(records: np.ndarray) -> np.ndarray:
+    """All integers of n records as an int64 array (n, columns)."""
+    parts = [_column_block(records[name]) for name in records.dtype.names]
+    return np.concatenate(parts, axis=1)
+
+
+def _column_block(values: np.ndarray) -> np.ndarray:
+    if values.dtype.names is not None:
+        return to_columns(values)
+    return values.reshape(len(values), -1).astype(np.int64)
+
+
+def from_columns(dtype: np.dtype, table: np.ndarray) -> np.ndarray:
+    """n records from an integer array (n, columns); the inverse of `to_columns`."""
+    records = np.zeros(len(table), dtype)
+    _fill(records, table, 0)
+    return records
+
+
+def _fill(records: np.ndarray, table: np.ndarray, start: int) -> int:
+    for name in records.dtype.names:
+        target = records[name]
+        if target.dtype.names is not None:
+            start = _fill(target, table, start)
+        elif target.ndim == 1:
+            target[...] = table[:, start]
+            start += 1
+        else:
+            target[...] = table[:, start : start + target.shape[1]]
+            start += target.shape[1]
+    return start
+
+
+def to_record(dtype: np.dtype, values: Mapping[str, Any]) -> np.ndarray:
+    """One record (shape ()) from a nested mapping; fields that are left out are 0.
+
+    Raises KeyError for a field that the structure does not have, OverflowError for an integer that does not fit.
+    """
+    record = np.zeros((), dtype)
+    _assign(record, values)
+    return record
+
+
+def _assign(record: np.ndarray, values: Mapping[str, Any]) -> None:
+    for name, value in values.items():
+        if name not in record.dtype.names:
+            raise KeyError(f"no field {name!r} here, only {', '.join(record.dtype.names)}")
+        if isinstance(value, Mapping):
+            _assign(record[name], value)
+        else:
+            record[name] = value
+
+
+def to_dict(record: np.void | np.ndarray) -> dict[str, Any]:
+    """A nested dict of Python integers and tuples of them from one record."""
+    return _nested(record.dtype, record.item())
+
+
+def _nested(dtype: np.dtype, values: tuple) -> dict[str, Any]:
+    result = {}
+    for name, value in zip(dtype.names, values, strict=True):
+        field = dtype[name]
+        if field.names is not None:
+            result[name] = _nested(field, value)
+        else:
+            result[name] = tuple(value.tolist()) if field.subdtype else value
+    return result

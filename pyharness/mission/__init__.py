@@ -1,0 +1,38 @@
+"""The mission file: read, checked completely, and handed on as frozen data."""
+
+from pyharness.mission.errors import MissionError
+from pyharness.mission.load import demo_path, load_mission
+from pyharness.mission.model import (
+    AXES,
+    Body,
+    Coil,
+    Control,
+    Cycle,
+    Gyro,
+    Magnetometer,
+    Matrix,
+    Mission,
+    Orbit,
+    Supply,
+    Vector,
+    Winding,
+)
+
+__all__ = [
+    "AXES",
+    "Body",
+    "Coil",
+    "Control",
+    "Cycle",
+    "Gyro",
+    "Magnetometer",
+    "Matrix",
+    "Mission",
+    "MissionError",
+    "Orbit",
+    "Supply",
+    "Vector",
+    "Winding",
+    "demo_path",
+    "load_mission",
+]

@@ -1,0 +1,7 @@
+"""The plant in float64: orbit, geomagnetic field, rigid body, coils and sensors, over a batch of spacecraft."""
+
+from pyharness.plant.cycle import Timeline
+from pyharness.plant.field import ConstantField
+from pyharness.plant.plant import Plant, Sample, Snapshot
+
+__all__ = ["ConstantField", "Plant", "Sample", "Snapshot", "Timeline"]

@@ -1,0 +1,183 @@
+"""Coils: from signed timer ticks to the dipole that turns the body and to what the magnetometer sees of it.
+
+A pulse's dipole is a rectangle convolved with exp(−t/τ)/τ, τ = L/R; each pulse starts from zero current, which blanking
+that lets the current decay makes true. The body integrates a cubic instead, which has the same first four moments over the
+interval from one mid-sample to the next (the projection on the Legendre polynomials P0 to P3), so that a step of the
+integrator needs no stop at the edges. The magnetometer sees the exact edges.
+
+What a core keeps of a pulse, its remanence, acts from switch-off until the next pulse of that coil starts: during a pulse
+the full dipole is all there is.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+
+import numpy as np
+
+from pyharness.mission.model import Mission
+from pyharness.plant.batch import round_to, spacecraft_last
+from pyharness.plant.cycle import Timeline
+
+_TABLE_BITS = 40
+
+_CUBIC_FROM_MOMENTS = (
+    (16, -120, 240, -140),
+    (-120, 1200, -2700, 1680),
+    (240, -2700, 6480, -4200),
+    (-140, 1680, -4200, 2800),
+)
+"""Inverse of the 4 × 4 Hilbert matrix: moments ∫ f xⁿ dx over [0, 1] to the coefficients of the cubic that has them."""
+
+
+def _cubic(moments: Sequence[Fraction]) -> list[Fraction]:
+    return [sum(h * m for h, m in zip(row, moments, strict=True)) for row in _CUBIC_FROM_MOMENTS]
+
+
+def _rectangle_moment(power: int, start: Fraction, tick: Fraction) -> list[Fraction]:
+    """∫ xᵖ dx from `start` over n ticks, as the coefficients of n¹ … n⁴."""
+    moment = [Fraction(0)] * 4
+    for k in range(1, power + 2):
+        moment[k - 1] = math.comb(power + 1, k) * start ** (power + 1 - k) * tick**k / (power + 1)
+    return moment
+
+
+@lru_cache(maxsize=256)
+def _pulse_cubic(timeline: Timeline, time_constant_ms: float) -> tuple[tuple[float, ...], ...]:
+    """The cubic in x = t/T of a unit pulse of n ticks: row i holds the coefficients of n¹ … n⁴ in that of xⁱ.
+
+    With the delay X of the exponential, E[Xʲ] = j! τʲ, the moments of the convolution are
+    Σ_j binom(p, j) j! τʲ ∫ x^(p−j) over the rectangle. The tail is counted whole, also what little lies beyond T.
+    """
+    start = Fraction(timeline.delay_us, timeline.period_us)
+    tick = Fraction(timeline.tick_us, timeline.period_us)
+    tau = Fraction(time_constant_ms) * 1000 / timeline.period_us
+    rectangle = [_rectangle_moment(power, start, tick) for power in range(4)]
+    by_ticks = [
+        _cubic([sum(math.perm(p, j) * tau**j * rectangle[p - j][n] for j in range(p + 1)) for p in range(4)])
+        for n in range(4)
+    ]
+    return tuple(tuple(float(by_ticks[n][i]) for n in range(4)) for i in range(4))
+
+
+@lru_cache(maxsize=256)
+def _before_window_cubic(timeline: Timeline) -> tuple[float, ...]:
+    """The cubic in x of what is 1 until the drive window opens and 0 after."""
+    start = Fraction(timeline.delay_us, timeline.period_us)
+    return tuple(float(c) for c in _cubic([start ** (p + 1) / (p + 1) for p in range(4)]))
+
+
+@lru_cache(maxsize=256)
+def _edge_tables(timeline: Timeline, time_constant_ms: float) -> tuple[np.ndarray, np.ndarray]:
+    """By the tick of switch-off: the fraction of full dipole reached, and its mean left over the next sample."""
+    tau_us = time_constant_ms * 1000.0
+    ticks = np.arange(timeline.ticks_to_next_sample + 1)
+    reached = -np.expm1(-ticks * timeline.tick_us / tau_us)
+    over_sample = -math.expm1(-timeline.sample_us / tau_us) * tau_us / timeline.sample_us
+    left = reached * np.exp(-timeline.age_at_next_sample_us(ticks) / tau_us) * over_sample
+    return round_to(reached, _TABLE_BITS), round_to(left, _TABLE_BITS)
+
+
+@dataclass(frozen=True)
+class CoilState:
+    """What a cycle leaves behind, shape (3, N), A m², along body axes."""
+
+    remaining: np.ndarray  # of the decaying pulse, mean over the next sample
+    remanence: np.ndarray  # in the core
+
+
+@dataclass(frozen=True)
+class Drive:
+    """What one cycle's pulses do."""
+
+    state: CoilState
+    cubic: np.ndarray  # (4, 3, N), A m²: dipole as Σ cubic[i] xⁱ, x from 0 to 1 between mid-samples
+    switch_off_us: np.ndarray  # (3, N) int64, after the start of the drive window; 0 for a coil not driven
+
+
+class Coils:
+    """The three coils of N spacecraft, at each spacecraft's own supply voltage (V, shape (N,); None: nominal)."""
+
+    def __init__(self, missions: Sequence[Mission], supply_v: np.ndarray | None = None):
+        timelines = [Timeline.of(m) for m in missions]
+        nominal_v = spacecraft_last(m.supply.nominal_v for m in missions)
+        supply = 1.0 if supply_v is None else np.asarray(supply_v, dtype=float) / nominal_v
+
+        def per_coil(value) -> np.ndarray:
+            return spacecraft_last([value(coil) for coil in m.coil] for m in missions)
+
+        self._full = per_coil(lambda coil: coil.polarity * coil.dipole_a_m2) * supply
+        self._kept = per_coil(lambda coil: coil.remanence_fraction)
+        self._tau_s = per_coil(lambda coil: coil.time_constant_ms) * 1e-3
+        self._tick_us = np.array([t.tick_us for t in timelines])
+        self._window_ticks = np.array([t.window_ticks for t in timelines])
+        self._last_tick = np.array([t.ticks_to_next_sample for t in timelines])
+
+        lags = [(t, [coil.time_constant_ms for coil in m.coil]) for t, m in zip(timelines, missions, strict=True)]
+        # Both (4 powers of ticks, 4 powers of x, 3, N); without L/R for the time a core's remanence is overridden.
+        pulse = spacecraft_last([_pulse_cubic(t, tau) for tau in taus] for t, taus in lags)
+        rectangle = spacecraft_last([_pulse_cubic(t, 0.0) for _ in taus] for t, taus in lags)
+        self._by_ticks = np.ascontiguousarray(np.stack((pulse, rectangle)).transpose(3, 0, 2, 1, 4))
+        before = spacecraft_last([_before_window_cubic(t) for _ in range(3)] for t in timelines).swapaxes(0, 1)
+        self._before = np.ascontiguousarray(before)
+        self._after = -self._before
+        self._after[0] += 1.0
+        self._tabulate(lags)
+
+    def _tabulate(self, lags: Sequence[tuple[Timeline, list[float]]]) -> None:
+        """Lay the edge tables of all distinct coils end to end; `_first` says where each coil's begins."""
+        begins: dict[tuple[Timeline, float], int] = {}
+        tables, length = [], 0
+        for key in dict.fromkeys((t, tau) for t, taus in lags for tau in taus):
+            tables.append(_edge_tables(*key))
+            begins[key] = length
+            length += tables[-1][0].size
+        self._reached, self._left = (np.concatenate(column) for column in zip(*tables, strict=True))
+        self._first = np.array([[begins[t, tau] for tau in taus] for t, taus in lags]).T
+
+    @property
+    def full_dipole(self) -> np.ndarray:
+        """Dipole of positive ticks held on, A m², shape (3, N), with the polarity's sign."""
+        return self._full.copy()
+
+    def at_rest(self) -> CoilState:
+        """No current, no remanence."""
+        return CoilState(np.zeros_like(self._full), np.zeros_like(self._full))
+
+    def _widths(self, ticks: np.ndarray, late_ticks: np.ndarray | None) -> np.ndarray:
+        width = np.abs(ticks)
+        if (width > self._window_ticks).any():
+            raise ValueError(f"ticks: pulse of {width.max()} ticks, longer than its drive window")
+        if late_ticks is None:
+            return width
+        width = width + np.where(width > 0, late_ticks, 0)
+        if (width < 0).any() or (width > self._last_tick).any():
+            raise ValueError("late_ticks: switch-off must lie between the pulse's start and the next sample")
+        return width
+
+    def drive(self, state: CoilState, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> Drive:
+        """Pulses of signed `ticks` (3, N) ints, each switched off `late_ticks` after it should have been.
+
+        Raises ValueError for a pulse longer than the drive window, or switched off after the next sample's start.
+        """
+        width = self._widths(ticks, late_ticks)
+        strength = self._full * np.sign(ticks)
+        entry = self._first + width
+        n = width.astype(float)
+        p1, p2, p3, p4 = self._by_ticks
+        pulse, rectangle = n * (p1 + n * (p2 + n * (p3 + n * p4)))
+        remanence = np.where(width > 0, self._kept * strength * self._reached.take(entry), state.remanence)
+        cubic = strength * pulse + state.remanence * self._before + remanence * (self._after - rectangle)
+        remaining = strength * self._left.take(entry)
+        return Drive(CoilState(remaining, remanence), cubic, width * self._tick_us)
+
+    def waveform(self, ticks: np.ndarray, seconds: np.ndarray, late_ticks: np.ndarray | None = None) -> np.ndarray:
+        """Exact pulse dipole (K, 3, N), A m², at K times in s after the start of the drive window. For figures."""
+        width_s = self._widths(ticks, late_ticks) * self._tick_us * 1e-6
+        t = np.asarray(seconds, dtype=float)[:, None, None]
+        reached = -np.expm1(-np.clip(t, 0.0, width_s) / self._tau_s)
+        return self._full * np.sign(ticks) * reached * np.exp(-np.maximum(t - width_s, 0.0) / self._tau_s)
