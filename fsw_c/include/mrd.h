@@ -348,9 +348,10 @@ uint32_t mrd_path_drive(const mrd_path_config *config, mrd_trace *trace);
 /* Tells the path which pulses are really to be made in this cycle. */
 void mrd_path_commit(mrd_path_state *state, const int16_t ticks[3]);
 
-/* ---- layout, for whoever loads a build: version, sizes and offsets as this build has them ---- */
-
+/*
+ * Layout, for whoever loads a build: MRD_VERSION, then for each structure its size and the offset of each field as this
+ * build has them, then 65535.
+ */
 extern const uint16_t mrd_layout[];
-extern const uint16_t mrd_layout_length;
 
 #endif

@@ -1,4 +1,4 @@
-/* The layout of this build: version, then for each structure its size and the offset of each field. */
+/* The layout of this build: version, then for each structure its size and the offset of each field; 65535 ends it. */
 #include <stddef.h>
 
 #include "mrd.h"
@@ -159,6 +159,6 @@ const uint16_t mrd_layout[] = {
     AT(mrd_outputs, digest),
     AT(mrd_outputs, counters),
     AT(mrd_outputs, trace),
-};
 
-const uint16_t mrd_layout_length = sizeof mrd_layout / sizeof mrd_layout[0];
+    65535u,
+};

@@ -14,6 +14,7 @@ from pyharness.flight.header import Header, read_header
 from pyharness.flight.records import dtype_of
 from pyharness.flight.sources import Sources, find_sources
 
+LAYOUT_END = 65535
 _HOST = Path(__file__).with_name("host.c")
 _HOST_DECLARATIONS = """
 void host_step_many(void (*step)(mrd_state *, const mrd_config *, const mrd_inputs *, mrd_outputs *), mrd_state *states,
@@ -91,17 +92,14 @@ class Library:
         return build.build("mrd", units, [self.sources.include], headers, variant)
 
     def _check_layout(self) -> None:
-        expected = self.interface.layout()
         try:
-            length = self.lib.mrd_layout_length
-            found = [self.lib.mrd_layout[i] for i in range(length)]
+            table = self.lib.mrd_layout
         except AttributeError as error:
             raise LayoutError(f"{self.path}: exports no layout table ({error}); build it with src/layout.c") from None
-        for (meaning, want), have in zip(expected, found, strict=False):
-            if want != have:
+        for i, (meaning, want) in enumerate([*self.interface.layout(), ("end of the layout table", LAYOUT_END)]):
+            if table[i] != want:
+                have = "missing" if table[i] == LAYOUT_END else table[i]
                 raise LayoutError(f"{self.path}: {meaning} is {have}, this header has {want}; build it from this header")
-        if len(found) != len(expected):
-            raise LayoutError(f"{self.path}: its layout table has {len(found)} entries, this header {len(expected)}")
 
     def pointer(self, ctype: str, array: np.ndarray) -> Any:
         """A C pointer to the memory of a contiguous array of records."""
