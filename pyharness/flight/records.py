@@ -5,7 +5,8 @@ A record's *columns* are its integers in declared order, named like C would: `tr
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -97,15 +98,27 @@ def _assign(record: np.ndarray, values: Mapping[str, Any]) -> None:
 
 def to_dict(record: np.void | np.ndarray) -> dict[str, Any]:
     """A nested dict of Python integers and tuples of them from one record."""
-    return _nested(record.dtype, record.item())
+    return _unpacker(record.dtype)(record.item())
 
 
-def _nested(dtype: np.dtype, values: tuple) -> dict[str, Any]:
-    result = {}
-    for name, value in zip(dtype.names, values, strict=True):
-        field = dtype[name]
-        if field.names is not None:
-            result[name] = _nested(field, value)
-        else:
-            result[name] = tuple(value.tolist()) if field.subdtype else value
-    return result
+def to_tuple(dtype: np.dtype, values: Mapping[str, Any]) -> tuple:
+    """What numpy takes for one record, from a nested dict that has every field."""
+    return _packer(dtype)(values)
+
+
+@cache
+def _unpacker(dtype: np.dtype) -> Callable[[tuple], dict[str, Any]]:
+    parts = [(name, _unpack_field(dtype[name])) for name in dtype.names]
+    return lambda values: {name: unpack(value) for (name, unpack), value in zip(parts, values, strict=True)}
+
+
+def _unpack_field(dtype: np.dtype) -> Callable[[Any], Any]:
+    if dtype.names is not None:
+        return _unpacker(dtype)
+    return (lambda value: tuple(value.tolist())) if dtype.subdtype else (lambda value: value)
+
+
+@cache
+def _packer(dtype: np.dtype) -> Callable[[Mapping[str, Any]], tuple]:
+    parts = [(name, _packer(dtype[name]) if dtype[name].names else None) for name in dtype.names]
+    return lambda values: tuple(pack(values[name]) if pack else values[name] for name, pack in parts)

@@ -256,7 +256,8 @@ def _settled_above_the_orbit(settle_by: Named, settled: Named, period: Named) ->
     if settle_by.value == "field" and settled.value < least:
         yield (
             f"{settled}, must be at least {rounded(least, settled.unit)}, 3 turns in {period}: with "
-            f"{settle_by} the field's own turning over an orbit counts as rate; raise the threshold or settle by a gyro"
+            f"{settle_by} the field's own turning over an orbit counts as rate; raise the threshold or "
+            "settle by a gyro"
         )
 
 

@@ -114,8 +114,8 @@ def _checked(key: Key, path: str, value: object, shape: tuple[int, ...], problem
             problems.append(f"{path}: {shown(value)}, must be {key.expected(shape)}")
             return None
         return tuple(_checked(key, f"{path}[{i}]", item, shape[1:], problems) for i, item in enumerate(value))
-    if fault := _type_fault(key, value):
-        problems.append(f"{path}: {shown(value)}{fault.rstrip()}, must be {key.expected(())}")
+    if (fault := _type_fault(key, value)) is not None:
+        problems.append(f"{path}: {shown(value)}{fault}, must be {key.expected(())}")
         return None
     measured = len(value) if key.kind == "text" and not key.choices else value
     if (key.choices and value not in key.choices) or (key.limits and measured not in key.limits):
@@ -129,8 +129,8 @@ def _checked(key: Key, path: str, value: object, shape: tuple[int, ...], problem
 _TYPE_NAMES = {bool: " (a flag)", int: " (an integer)", float: " (a float)", str: " (a text)"}
 
 
-def _type_fault(key: Key, value: object) -> str:
-    """What is wrong with the type of a single value, to follow it in a message; empty if nothing is."""
+def _type_fault(key: Key, value: object) -> str | None:
+    """What is wrong with the type of a single value, to follow it in a message; None if nothing is."""
     is_integer = isinstance(value, int) and not isinstance(value, bool)
     right = {
         "number": is_integer or isinstance(value, float),
@@ -140,9 +140,9 @@ def _type_fault(key: Key, value: object) -> str:
         "time": isinstance(value, datetime),
     }[key.kind]
     if not right:
-        return _TYPE_NAMES.get(type(value), " ")
+        return _TYPE_NAMES.get(type(value), "")
     if key.kind == "time" and value.utcoffset() is None:
         return " (no offset from UTC: end it with Z)"
     if key.kind == "text" and not value.isprintable():
         return " (unprintable characters)"
-    return ""
+    return None

@@ -1,4 +1,5 @@
-"""The plant in float64: orbit, geomagnetic field, rigid body, coils and sensors, over a batch of spacecraft."""
+"""The plant in float64: orbit, geomagnetic field, rigid body, coils and sensors, over a batch of
+spacecraft."""
 
 from pyharness.plant.cycle import Timeline
 from pyharness.plant.field import ConstantField

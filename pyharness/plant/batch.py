@@ -28,5 +28,6 @@ def norm(a: np.ndarray) -> np.ndarray:
 
 
 def round_to(a: ArrayLike, bits: int) -> np.ndarray:
-    """Nearest multiples of 2**-bits: the same bits on every machine unless a value sits on the edge of a step."""
+    """Nearest multiples of 2**-bits: the same bits on every machine unless a value sits on the edge of a
+    step."""
     return np.rint(np.ldexp(a, bits)) * 2.0**-bits

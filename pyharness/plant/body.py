@@ -1,7 +1,8 @@
 """Rigid-body motion of N spacecraft, integrated from one mid-sample to the next.
 
-State (7, N): the attitude as a unit quaternion (scalar first) that takes body vectors to inertial axes, then the rate of
-the body against inertial axes, in body axes, rad/s. Equations: q̇ = ½ q ⊗ (0, ω); J ω̇ = (J ω) × ω + torque.
+State (7, N): the attitude as a unit quaternion (scalar first) that takes body vectors to inertial axes, then
+the rate of the body against inertial axes, in body axes, rad/s. Equations: q̇ = ½ q ⊗ (0, ω); J ω̇ = (J ω) ×
+ω + torque.
 """
 
 from __future__ import annotations
@@ -18,8 +19,8 @@ from pyharness.plant.field import FIELD, FLIGHT, GRADIENT
 STEP_ANGLE = 0.3
 """A step of the integrator turns the body by at most about this angle, rad."""
 
-# Rows of (q, −q) whose products make the rotation matrix and the quaternion's derivative; 0–3 are w x y z, 4–7 their
-# negatives. R = 2 (first · second + third · fourth) − 1, row by row.
+# Rows of (q, −q) whose products make the rotation matrix and the quaternion's derivative; 0–3 are w x y z,
+# 4–7 their negatives. R = 2 (first · second + third · fourth) − 1, row by row.
 _W, _X, _Y, _Z, _NW, _NX, _NY, _NZ = range(8)
 _FIRST = np.array(((_W, _X, _X), (_X, _W, _Y), (_X, _Y, _W)))
 _SECOND = np.array(((_W, _Y, _Z), (_Y, _W, _Z), (_Z, _Z, _W)))
@@ -76,8 +77,9 @@ class RigidBody:
     def propagate(self, state: np.ndarray, environment: np.ndarray, dipole: np.ndarray, period_s: float) -> np.ndarray:
         """State (7, N) one period later.
 
-        `environment` (3, 3, 3, N): quadratics of `field.Environment`; `dipole` (4, 3, N): the coils' cubic, A m², body
-        axes; both in x from 0 to 1. The fixed step divides the period by 1 + ⌊‖ω‖ T / 0.3⌋, each spacecraft by its own.
+        `environment` (3, 3, 3, N): quadratics of `field.Environment`; `dipole` (4, 3, N): the coils' cubic, A
+        m², body axes; both in x from 0 to 1. The fixed step divides the period by 1 + ⌊‖ω‖ T / 0.3⌋, each
+        spacecraft by its own.
         """
         steps = 1 + np.floor(norm(state[4:]) * period_s / STEP_ANGLE).astype(int)
         dipole = dipole.copy()
@@ -99,7 +101,8 @@ def _step(state: np.ndarray, step: int, period_s: float, parameters: np.ndarray,
           dipole: np.ndarray, steps: np.ndarray) -> np.ndarray:
     """One step of DOP853, the `step`-th of each spacecraft's `steps`."""
     n = steps.size
-    # Overwritten by every stage: factors of four cross products, x and y repeated below z; (q, −q); and the slopes.
+    # Overwritten by every stage: factors of four cross products, x and y repeated below z; (q, −q); and the
+    # slopes.
     left, right, both, k = np.empty((4, 5, n)), np.empty((4, 5, n)), np.empty((8, n)), np.empty((12, 7, n))
     inertia, inverse_inertia = parameters[:9].reshape(3, 3, n), parameters[9:18].reshape(3, 3, n)
     left[1, :3] = parameters[18:]
@@ -124,7 +127,8 @@ def _derivative(y: np.ndarray, environment: np.ndarray, dipole: np.ndarray, iner
                 out: np.ndarray) -> None:
     """dy/dt of the state (7, N) into `out`.
 
-    Four cross products at once: dipole × field, drag arm × flight, (−J s) × s of gravity's gradient, and (J ω) × ω.
+    Four cross products at once: dipole × field, drag arm × flight, (−J s) × s of gravity's gradient, and (J
+    ω) × ω.
     """
     q, rate = y[:4], y[4:]
     both[:4] = q

@@ -1,12 +1,13 @@
 """Coils: from signed timer ticks to the dipole that turns the body and to what the magnetometer sees of it.
 
-A pulse's dipole is a rectangle convolved with exp(−t/τ)/τ, τ = L/R; each pulse starts from zero current, which blanking
-that lets the current decay makes true. The body integrates a cubic instead, which has the same first four moments over the
-interval from one mid-sample to the next (the projection on the Legendre polynomials P0 to P3), so that a step of the
-integrator needs no stop at the edges. The magnetometer sees the exact edges.
+A pulse's dipole is a rectangle convolved with exp(−t/τ)/τ, τ = L/R; each pulse starts from zero current,
+which blanking that lets the current decay makes true. The body integrates a cubic instead, which has the same
+first four moments over the interval from one mid-sample to the next (the projection on the Legendre
+polynomials P0 to P3), so that a step of the integrator needs no stop at the edges. The magnetometer sees the
+exact edges.
 
-What a core keeps of a pulse, its remanence, acts from switch-off until the next pulse of that coil starts: during a pulse
-the full dipole is all there is.
+What a core keeps of a pulse, its remanence, acts from switch-off until the next pulse of that coil starts:
+during a pulse the full dipole is all there is.
 """
 
 from __future__ import annotations
@@ -31,7 +32,8 @@ _CUBIC_FROM_MOMENTS = (
     (240, -2700, 6480, -4200),
     (-140, 1680, -4200, 2800),
 )
-"""Inverse of the 4 × 4 Hilbert matrix: moments ∫ f xⁿ dx over [0, 1] to the coefficients of the cubic that has them."""
+"""Inverse of the 4 × 4 Hilbert matrix: moments ∫ f xⁿ dx over [0, 1] to the coefficients of the cubic that
+has them."""
 
 
 def _cubic(moments: Sequence[Fraction]) -> list[Fraction]:
@@ -50,8 +52,8 @@ def _rectangle_moment(power: int, start: Fraction, tick: Fraction) -> list[Fract
 def _pulse_cubic(timeline: Timeline, time_constant_ms: float) -> tuple[tuple[float, ...], ...]:
     """The cubic in x = t/T of a unit pulse of n ticks: row i holds the coefficients of n¹ … n⁴ in that of xⁱ.
 
-    With the delay X of the exponential, E[Xʲ] = j! τʲ, the moments of the convolution are
-    Σ_j binom(p, j) j! τʲ ∫ x^(p−j) over the rectangle. The tail is counted whole, also what little lies beyond T.
+    With the delay X of the exponential, E[Xʲ] = j! τʲ, the moments of the convolution are Σ_j binom(p, j) j!
+    τʲ ∫ x^(p−j) over the rectangle. The tail is counted whole, also what little lies beyond T.
     """
     start = Fraction(timeline.delay_us, timeline.period_us)
     tick = Fraction(timeline.tick_us, timeline.period_us)
@@ -73,7 +75,8 @@ def _before_window_cubic(timeline: Timeline) -> tuple[float, ...]:
 
 @lru_cache(maxsize=256)
 def _edge_tables(timeline: Timeline, time_constant_ms: float) -> tuple[np.ndarray, np.ndarray]:
-    """By the tick of switch-off: the fraction of full dipole reached, and its mean left over the next sample."""
+    """By the tick of switch-off: the fraction of full dipole reached, and its mean left over the next
+    sample."""
     tau_us = time_constant_ms * 1000.0
     ticks = np.arange(timeline.ticks_to_next_sample + 1)
     reached = -np.expm1(-ticks * timeline.tick_us / tau_us)
@@ -100,7 +103,8 @@ class Drive:
 
 
 class Coils:
-    """The three coils of N spacecraft, at each spacecraft's own supply voltage (V, shape (N,); None: nominal)."""
+    """The three coils of N spacecraft, at each spacecraft's own supply voltage (V, shape (N,); None:
+    nominal)."""
 
     def __init__(self, missions: Sequence[Mission], supply_v: np.ndarray | None = None):
         timelines = [Timeline.of(m) for m in missions]
@@ -118,7 +122,8 @@ class Coils:
         self._last_tick = np.array([t.ticks_to_next_sample for t in timelines])
 
         lags = [(t, [coil.time_constant_ms for coil in m.coil]) for t, m in zip(timelines, missions, strict=True)]
-        # Both (4 powers of ticks, 4 powers of x, 3, N); without L/R for the time a core's remanence is overridden.
+        # Both (4 powers of ticks, 4 powers of x, 3, N); without L/R for the time a core's remanence is
+        # overridden.
         pulse = spacecraft_last([_pulse_cubic(t, tau) for tau in taus] for t, taus in lags)
         rectangle = spacecraft_last([_pulse_cubic(t, 0.0) for _ in taus] for t, taus in lags)
         self._by_ticks = np.ascontiguousarray(np.stack((pulse, rectangle)).transpose(3, 0, 2, 1, 4))
@@ -162,7 +167,8 @@ class Coils:
     def drive(self, state: CoilState, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> Drive:
         """Pulses of signed `ticks` (3, N) ints, each switched off `late_ticks` after it should have been.
 
-        Raises ValueError for a pulse longer than the drive window, or switched off after the next sample's start.
+        Raises ValueError for a pulse longer than the drive window, or switched off after the next sample's
+        start.
         """
         width = self._widths(ticks, late_ticks)
         strength = self._full * np.sign(ticks)
@@ -176,7 +182,8 @@ class Coils:
         return Drive(CoilState(remaining, remanence), cubic, width * self._tick_us)
 
     def waveform(self, ticks: np.ndarray, seconds: np.ndarray, late_ticks: np.ndarray | None = None) -> np.ndarray:
-        """Exact pulse dipole (K, 3, N), A m², at K times in s after the start of the drive window. For figures."""
+        """Exact pulse dipole (K, 3, N), A m², at K times in s after the start of the drive window. For
+        figures."""
         width_s = self._widths(ticks, late_ticks) * self._tick_us * 1e-6
         t = np.asarray(seconds, dtype=float)[:, None, None]
         reached = -np.expm1(-np.clip(t, 0.0, width_s) / self._tau_s)

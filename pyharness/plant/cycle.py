@@ -19,7 +19,8 @@ def _microseconds(ms: float) -> int:
 
 @dataclass(frozen=True)
 class Timeline:
-    """Lengths and instants of a cycle, µs. Instants count from the start of the cycle unless they say otherwise."""
+    """Lengths and instants of a cycle, µs. Instants count from the start of the cycle unless they say
+    otherwise."""
 
     period_us: int
     blanking_us: int
@@ -50,7 +51,8 @@ class Timeline:
 
     @property
     def mid_sample_us(self) -> int:
-        """Middle of the sample, which its stamp names; of an odd length the odd microsecond comes after it."""
+        """Middle of the sample, which its stamp names; of an odd length the odd microsecond comes after
+        it."""
         return self.blanking_us + self.sample_us // 2
 
     @property
@@ -79,5 +81,6 @@ class Timeline:
         return self.age_at_next_sample_us(0) // self.tick_us
 
     def age_at_next_sample_us(self, ticks: int) -> int:
-        """Age, at the start of the next sample, of a pulse switched off `ticks` after the drive window opened."""
+        """Age, at the start of the next sample, of a pulse switched off `ticks` after the drive window
+        opened."""
         return self.period_us + self.sample_start_us - self.drive_start_us - ticks * self.tick_us

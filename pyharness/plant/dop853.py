@@ -1,8 +1,9 @@
 """Coefficients of the explicit Runge–Kutta method DOP853, order 8, twelve stages.
 
-Source: E. Hairer, S. P. Nørsett, G. Wanner, *Solving Ordinary Differential Equations I*, 2nd ed., Springer 1993,
-section II.5 (the method of Dormand and Prince; the digits are those of its published code). Stage i is evaluated at
-`NODES[i]` of the step with the state y + h Σ_j `STAGES[i, j]` k_j; the step ends at y + h Σ_j `WEIGHTS[j]` k_j.
+Source: E. Hairer, S. P. Nørsett, G. Wanner, *Solving Ordinary Differential Equations I*, 2nd ed., Springer
+1993, section II.5 (the method of Dormand and Prince; the digits are those of its published code). Stage i is
+evaluated at `NODES[i]` of the step with the state y + h Σ_j `STAGES[i, j]` k_j; the step ends at y + h Σ_j
+`WEIGHTS[j]` k_j.
 """
 
 from __future__ import annotations

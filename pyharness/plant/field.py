@@ -1,9 +1,10 @@
-"""What the orbit does to the spacecraft: geomagnetic field, direction of flight, gradient of gravity, in TEME axes.
+"""What the orbit does to the spacecraft: geomagnetic field, direction of flight, gradient of gravity, in TEME
+axes.
 
-All three are tabulated once along the orbit at knots about 30 s apart, rounded to a grid so that the table has the same
-bits on every machine, and interpolated by cubic Hermite polynomials, whose slopes are sixth-order differences of the
-rounded knots. Within a cycle they are quadratics through its start, middle and end. A cycle here runs from one mid-sample
-to the next, and knots fall on its ends.
+All three are tabulated once along the orbit at knots about 30 s apart, rounded to a grid so that the table
+has the same bits on every machine, and interpolated by cubic Hermite polynomials, whose slopes are
+sixth-order differences of the rounded knots. Within a cycle they are quadratics through its start, middle and
+end. A cycle here runs from one mid-sample to the next, and knots fall on its ends.
 """
 
 from __future__ import annotations
@@ -22,7 +23,8 @@ from pyharness.plant.cycle import Timeline
 from pyharness.plant.orbit import EARTH_MU, Trajectory
 
 FIELD, FLIGHT, GRADIENT = range(3)
-"""Vectors of an environment: field in T; unit velocity; r̂ √(3μ/r³) in 1/s, so that s × J s is the torque of gravity."""
+"""Vectors of an environment: field in T; unit velocity; r̂ √(3μ/r³) in 1/s, so that s × J s is the torque of
+gravity."""
 
 KNOT_US = 30_000_000
 """Knots are this far apart, or the next whole number of cycles below."""
@@ -43,7 +45,8 @@ class Environment(Protocol):
     """Anything that gives the three vectors over a cycle."""
 
     def quadratic(self, cycle: int) -> np.ndarray:
-        """Coefficients of x⁰, x¹, x² over the cycle, x from 0 to 1: (3, 3 components, 3 vectors, N), inertial axes."""
+        """Coefficients of x⁰, x¹, x² over the cycle, x from 0 to 1: (3, 3 components, 3 vectors, N), inertial
+        axes."""
 
 
 def geomagnetic_field(trajectory: Trajectory, seconds: np.ndarray, date: datetime) -> np.ndarray:
@@ -89,7 +92,8 @@ def _knots(trajectory: Trajectory, seconds: np.ndarray) -> np.ndarray:
 
 @lru_cache(maxsize=256)
 def _hermite(orbit: Orbit, start_us: int, spacing_us: int, intervals: int) -> np.ndarray:
-    """Cubics in u from 0 to 1 over each interval, (intervals, 4 powers, 3 components, 3 vectors), read-only."""
+    """Cubics in u from 0 to 1 over each interval, (intervals, 4 powers, 3 components, 3 vectors),
+    read-only."""
     index = np.arange(-_GUARD, intervals + 1 + _GUARD)
     f = _knots(Trajectory(orbit), (start_us + index * spacing_us) * 1e-6)
     inner = intervals + 1
@@ -102,9 +106,11 @@ def _hermite(orbit: Orbit, start_us: int, spacing_us: int, intervals: int) -> np
 
 
 class OrbitEnvironment:
-    """The environment of N spacecraft, each on its own orbit; those that share orbit and start share one table.
+    """The environment of N spacecraft, each on its own orbit; those that share orbit and start share one
+    table.
 
-    `start_s` (N,): start of the first cycle, s after each orbit's epoch. Every flight lasts at most `duration_s`.
+    `start_s` (N,): start of the first cycle, s after each orbit's epoch. Every flight lasts at most
+    `duration_s`.
     """
 
     def __init__(self, missions: Sequence[Mission], start_s: np.ndarray, duration_s: float):

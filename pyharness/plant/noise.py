@@ -1,8 +1,8 @@
 """Noise of the same bits on every machine: integer sums over the raw PCG64 stream.
 
-The sum of twelve uniform 16-bit integers less its mean is bell-shaped with the exact variance
-12 · (65536² − 1)/12 = 65536² − 1, no value beyond 6 σ, and excess kurtosis −0.1 (Irwin–Hall). Numpy promises the raw
-stream of PCG64 and its seeding, not its distributions.
+The sum of twelve uniform 16-bit integers less its mean is bell-shaped with the exact variance 12 · (65536² −
+1)/12 = 65536² − 1, no value beyond 6 σ, and excess kurtosis −0.1 (Irwin–Hall). Numpy promises the raw stream
+of PCG64 and its seeding, not its distributions.
 """
 
 from __future__ import annotations
@@ -25,7 +25,8 @@ def bell(raw: np.ndarray) -> np.ndarray:
 
 
 class NoiseStream:
-    """`channels` values a cycle for each of N spacecraft, a function of seed and cycle alone (so runs can be split)."""
+    """`channels` values a cycle for each of N spacecraft, a function of seed and cycle alone (so runs can be
+    split)."""
 
     _BLOCK = 256
 

@@ -1,7 +1,7 @@
 """Orbits by SGP4, from two-line elements or as a circular orbit.
 
-Positions and velocities are in TEME, the frame of SGP4 (true equator, mean equinox of date). Over the hours of a detumble
-it is taken as inertial: precession and nutation turn it by about 0.01″ an hour.
+Positions and velocities are in TEME, the frame of SGP4 (true equator, mean equinox of date). Over the hours
+of a detumble it is taken as inertial: precession and nutation turn it by about 0.01″ an hour.
 """
 
 from __future__ import annotations
@@ -38,6 +38,17 @@ def orbital_rate(orbit: Orbit) -> float:
     return _satellite(orbit).no_kozai / 60.0
 
 
+def semi_major_axis_m(orbit: Orbit) -> float:
+    """Semi-major axis of an orbit by Kepler's third law, m."""
+    rate = orbital_rate(orbit)
+    return (EARTH_MU / (rate * rate)) ** (1.0 / 3.0)
+
+
+def inclination_rad(orbit: Orbit) -> float:
+    """Inclination of an orbit, rad."""
+    return _satellite(orbit).inclo
+
+
 def orbital_period(orbit: Orbit) -> float:
     """Period of an orbit, s."""
     return 2.0 * math.pi / orbital_rate(orbit)
@@ -46,8 +57,8 @@ def orbital_period(orbit: Orbit) -> float:
 def _satellite(orbit: Orbit) -> Satrec:
     """SGP4 with WGS-72 constants, the ones two-line elements are made for.
 
-    A circular orbit's altitude means a − 6378.137 km for the a of its mean motion n = √(μ/a³), μ = 398600.4418 km³/s²;
-    it has no drag term, so B* = 0.
+    A circular orbit's altitude means a − 6378.137 km for the a of its mean motion n = √(μ/a³), μ =
+    398600.4418 km³/s²; it has no drag term, so B* = 0.
     """
     if orbit.two_line_elements is not None:
         return Satrec.twoline2rv(*orbit.two_line_elements, WGS72)
@@ -93,6 +104,7 @@ class Trajectory:
         return position.T * 1e3, velocity.T * 1e3
 
     def sidereal_angle(self, seconds: np.ndarray) -> np.ndarray:
-        """Greenwich mean sidereal time, rad in [0, 2π), IAU 1982, taking UT1 as UTC (they differ by < 0.9 s)."""
+        """Greenwich mean sidereal time, rad in [0, 2π), IAU 1982, taking UT1 as UTC (they differ by < 0.9
+        s)."""
         day, fraction = self.julian_date(seconds)
         return np.array([gstime(d + f) for d, f in zip(day, fraction, strict=True)])

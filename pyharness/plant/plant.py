@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from pyharness.mission.model import Mission
-from pyharness.plant.batch import norm, spacecraft_last
+from pyharness.plant.batch import cross, norm, spacecraft_last
 from pyharness.plant.body import RigidBody, to_body, to_inertial
 from pyharness.plant.coils import Coils, CoilState
 from pyharness.plant.cycle import Timeline
@@ -44,10 +44,11 @@ def attitude_from_seed(seed: int) -> np.ndarray:
 
 
 class Plant:
-    """N spacecraft in lockstep. Arrays have the spacecraft as their last axis; no result depends on the others.
+    """N spacecraft in lockstep. Arrays have the spacecraft as their last axis; no result depends on the
+    others.
 
-    Between calls the plant stands at mid-sample of the current cycle: `sample` reads the sensors there, and `drive`
-    flies on to the next mid-sample under that cycle's pulses.
+    Between calls the plant stands at mid-sample of the current cycle: `sample` reads the sensors there, and
+    `drive` flies on to the next mid-sample under that cycle's pulses.
 
     missions    all with the same period
     seeds       one integer ≥ 0 each: sensor noise and, unless given, attitude
@@ -155,22 +156,31 @@ class Plant:
     def _momentum_body(self) -> np.ndarray:
         return np.add.reduce(self._body.inertia * self._state[4:][:, None], axis=0)
 
-    def sample(self) -> Sample:
-        """Read the sensors at the current mid-sample. Reading twice gives the same counts."""
+    def sample(self, offset_s: np.ndarray | None = None) -> Sample:
+        """Read the sensors at the current mid-sample. Reading twice gives the same counts.
+
+        `offset_s` (N,): how much later the field is really sampled, a small part of the period; the body
+        turns on at its present rate meanwhile, so B changes by −ω × B δ + ω × (ω × B) δ²/2.
+        """
         noise = self._noise.at(self._cycle)
         dipole = self._coil_state.remaining + self._coil_state.remanence
+        field, rate = self.field_body, self._state[4:]
+        if offset_s is not None and np.any(offset_s):
+            turn = cross(field, rate)
+            field = field + offset_s * (turn + 0.5 * offset_s * cross(turn, rate))
         return Sample(
-            mag_counts=self._magnetometer.counts(self.field_body, self._state[4:], dipole, noise[:3]),
-            gyro_counts=self._gyro.counts(self._state[4:], noise[3:]),
+            mag_counts=self._magnetometer.counts(field, rate, dipole, noise[:3]),
+            gyro_counts=self._gyro.counts(rate, noise[3:]),
         )
 
     def drive(self, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> np.ndarray:
         """Drive the coils by signed `ticks` (3, N) and fly on to the next mid-sample.
 
-        The sign of the ticks is that of the current; a coil of polarity −1 then makes a dipole along its negative axis.
-        `late_ticks` (3, N): how much later than commanded a pulse is switched off. Returns the actual switch-off of each
-        coil, µs after the start of the drive window, (3, N) int64, 0 for a coil not driven. Raises ValueError for a pulse
-        longer than the drive window, one that is on into the next sample, or a flight beyond `duration_s`.
+        The sign of the ticks is that of the current; a coil of polarity −1 then makes a dipole along its
+        negative axis. `late_ticks` (3, N): how much later than commanded a pulse is switched off. Returns the
+        actual switch-off of each coil, µs after the start of the drive window, (3, N) int64, 0 for a coil not
+        driven. Raises ValueError for a pulse longer than the drive window, one that is on into the next
+        sample, or a flight beyond `duration_s`.
         """
         drive = self.coils.drive(self._coil_state, np.asarray(ticks, dtype=np.int64), late_ticks)
         environment = self._environment.quadratic(self._cycle)

@@ -1,7 +1,7 @@
 """Magnetometer and gyro: from truth to counts, as the parts do it.
 
-A misalignment is the rotation vector that turns body axes into sensor axes, so a sensor reads v_sensor = Rᵀ v_body. The
-error turns the known sensor axes on: R = R(known) R(error).
+A misalignment is the rotation vector that turns body axes into sensor axes, so a sensor reads v_sensor = Rᵀ
+v_body. The error turns the known sensor axes on: R = R(known) R(error).
 """
 
 from __future__ import annotations
@@ -74,9 +74,9 @@ class MagnetometerModel:
     def counts(self, field: np.ndarray, rate: np.ndarray, dipole: np.ndarray, noise: np.ndarray) -> np.ndarray:
         """Counts (3, N) int16 of a sample centred on now.
 
-        `field` true, body axes, T; `rate` rad/s; `dipole` of each coil left during the sample, A m²; `noise` of standard
-        deviation `SIGMA`. The mean over a sample of length s is B + s²/24 d²B/dt² + O(s⁴), and of a field fixed in
-        inertial axes d²B/dt² = ω × (ω × B) in body axes: the first term of sin(ωs/2)/(ωs/2).
+        `field` true, body axes, T; `rate` rad/s; `dipole` of each coil left during the sample, A m²; `noise`
+        of standard deviation `SIGMA`. The mean over a sample of length s is B + s²/24 d²B/dt² + O(s⁴), and of
+        a field fixed in inertial axes d²B/dt² = ω × (ω × B) in body axes: the first term of sin(ωs/2)/(ωs/2).
         """
         mean = field + self._sample_s2_24 * cross(rate, cross(rate, field))
         return self._triad.counts(mean + np.add.reduce(self._stray * dipole[:, None], axis=0), noise)

@@ -1,0 +1,253 @@
+"""Every named value of the arithmetic with its declared range, in one table.
+
+Fields carry their name in mrd.h: `config.…`, `inputs.…`, `state.…`, `outputs.…`, and the parts of the trace by themselves
+(`derivative.factor`). The other names are the intermediate values of the arithmetic document. The range of a value is the one
+it has where its stage is reached; a trace value that is not reached is 0. The range of a configuration field is the legal one,
+of an input the width of its type, and of a state field the invariant that a step keeps.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+from pyharness.exact.num import INT16_MAX, UINT16_MAX, Vector
+
+UINT32_MAX = 2**32 - 1
+NORM_MAX = 3 * INT16_MAX**2
+FILTER_MAX = 256 * INT16_MAX
+CROSS_MAX = 2 * INT16_MAX**2
+
+
+class Range(NamedTuple):
+    """A closed range lo:hi, with the unit or format of the value and what it is."""
+
+    lo: int
+    hi: int
+    unit: str
+    meaning: str
+
+
+class RangeError(ValueError):
+    """A named value has left its declared range."""
+
+    def __init__(self, name: str, value: int | Vector) -> None:
+        self.name, self.value, self.range = name, value, RANGES[name]
+        lo, hi, unit, meaning = self.range
+        super().__init__(f"{name}: {value} {unit} ({meaning}), must be in {lo}:{hi}")
+
+
+def _sym(n: int, unit: str, meaning: str) -> Range:
+    return Range(-n, n, unit, meaning)
+
+
+def _flag(meaning: str) -> Range:
+    return Range(0, 1, "flag", meaning)
+
+
+def _u16(unit: str, meaning: str) -> Range:
+    return Range(0, UINT16_MAX, unit, meaning)
+
+
+def _u32(unit: str, meaning: str) -> Range:
+    return Range(0, UINT32_MAX, unit, meaning)
+
+
+def _i16(unit: str, meaning: str) -> Range:
+    return Range(-INT16_MAX - 1, INT16_MAX, unit, meaning)
+
+
+def _sensor(path: str, what: str) -> dict[str, Range]:
+    return {
+        f"{path}.matrix": _sym(INT16_MAX, "Q(shift)", f"{what} calibration matrix"),
+        f"{path}.offset": _sym(INT16_MAX, f"{what} count", f"{what} offset"),
+        f"{path}.shift": Range(1, 16, "bits", f"{what} matrix format"),
+        f"{path}.limit": Range(1, INT16_MAX, "raw count", f"{what} clipped value"),
+    }
+
+
+def _gain(path: str, what: str) -> dict[str, Range]:
+    return {
+        f"{path}.mantissa": Range(32768, UINT16_MAX, "mantissa", f"gain of the {what} law"),
+        f"{path}.shift": Range(-30, 31, "bits", f"gain of the {what} law"),
+    }
+
+
+def _counters(path: str) -> dict[str, Range]:
+    return {
+        f"{path}.trusted": _u16("cycles", "with a trusted sample"),
+        f"{path}.rejected": _u16("cycles", "without a trusted sample"),
+        f"{path}.blanked": _u16("cycles", "with a sample inside a blanking time"),
+        f"{path}.fell_back": _u16("cycles", "in which the law fell back"),
+        f"{path}.refused": _u16("commands", "refused"),
+        f"{path}.restarts": _u16("restarts", "after a failed integrity check"),
+    }
+
+
+_CONFIG = {
+    **_sensor("config.path.mag", "field"),
+    **_sensor("config.path.gyro", "rate"),
+    "config.path.gyro_fitted": _flag("gyro fitted"),
+    "config.path.law": Range(1, 2, "MRD_LAW", "law"),
+    "config.path.gain_scaling": Range(1, 2, "MRD_GAIN", "gain scaling"),
+    "config.path.saturation": Range(1, 2, "MRD_SATURATE", "saturation policy"),
+    "config.path.norm_min_sq": Range(32768, NORM_MAX, "field count^2", "least plausible norm squared"),
+    "config.path.norm_max_sq": Range(32768, NORM_MAX, "field count^2", "greatest plausible norm squared"),
+    "config.path.period_us": Range(2**14, 10_000_000, "us", "nominal cycle"),
+    "config.path.phase_us": Range(0, 9_999_999, "us", "mid-sample after the start of the cycle"),
+    "config.path.tolerance_us": Range(0, 2_499_999, "us", "largest departure of mid-sample from its place"),
+    "config.path.half_sample_us": Range(0, 9_999_999, "us", "half the sample length"),
+    "config.path.delay_us": Range(0, 9_999_999, "us", "mid-sample to the start of the drive window"),
+    "config.path.blanking_us": Range(0, 9_999_999, "us", "least age of a switch-off at the start of a sample"),
+    "config.path.tick_us": Range(1, UINT16_MAX, "us", "pulse timer tick"),
+    "config.path.window_ticks": Range(1, 2**14, "ticks", "drive window"),
+    "config.path.shortest_ticks": Range(1, 2**14, "ticks", "shortest pulse"),
+    "config.path.polarity": _sym(1, "sign", "coil polarity"),
+    "config.path.filter_gain": Range(1, 2**15, "Q15", "1 - pole of the low-pass"),
+    **_gain("config.path.derivative_gain", "derivative"),
+    **_gain("config.path.rate_gain", "rate"),
+    "config.supervisor.settle_dwell": Range(1, UINT32_MAX, "cycles", "slow until SETTLED"),
+    "config.supervisor.wake_dwell": Range(1, UINT32_MAX, "cycles", "fast until DAMPING again"),
+    "config.supervisor.hold_off_s": _u32("s", "separation to first pulse"),
+    "config.supervisor.settle_by": Range(1, 2, "MRD_SETTLE_BY", "source of the rate estimate"),
+    "config.supervisor.settled_rate": _u16("rate count", "slow: at or below"),
+    "config.supervisor.wake_rate": _u16("rate count", "fast: above"),
+    "config.supervisor.estimate_mantissa": Range(32768, UINT16_MAX, "mantissa", "rate count per 2^-15 rad a period"),
+    "config.supervisor.estimate_shift": Range(1, 31, "bits", "rate count per 2^-15 rad a period"),
+    "config.supervisor.bench_key": Range(1, UINT16_MAX, "key", "carried by the arm command"),
+    "config.supervisor.bench_limit_ticks": Range(1, 2**14, "ticks", "longest bench pulse"),
+    "config.digest": _u32("digest", "of the configuration"),
+}
+
+_INPUTS = {
+    "inputs.path.cycle_start_us": _u32("us", "start of the cycle, wraps"),
+    "inputs.path.sample_us": _u32("us", "mid-sample, wraps"),
+    "inputs.path.switch_off_us": _u32("us", "last switch-off of each coil, wraps"),
+    "inputs.path.mag_raw": _i16("raw count", "magnetometer"),
+    "inputs.path.gyro_raw": _i16("raw count", "gyro"),
+    "inputs.path.mag_valid": _u16("flag", "magnetometer sampled"),
+    "inputs.path.gyro_valid": _u16("flag", "gyro sampled"),
+    "inputs.separation_s": _u32("s", "since separation"),
+    "inputs.low_power": _u16("flag", "coils are to stay off"),
+    "inputs.command": _u16("MRD_COMMAND", "command"),
+    "inputs.command_key": _u16("key", "with arm"),
+    "inputs.command_coil": _u16("axis", "with bench"),
+    "inputs.command_ticks": _i16("ticks", "with bench"),
+}
+
+_STATE = {
+    "state.path.filter": _sym(FILTER_MAX, "Q8 field count a period", "low-pass"),
+    "state.path.sample_us": _u32("us", "of the last trusted sample"),
+    "state.path.switch_off_us": _u32("us", "stamps of the last step"),
+    "state.path.field": _sym(INT16_MAX, "field count", "last trusted sample"),
+    "state.path.ticks": _i16("ticks", "pulses made in the last step, whoever commits them"),
+    "state.path.field_valid": _flag("field holds a trusted sample of the last step"),
+    "state.path.filter_valid": _flag("filter has begun"),
+    "state.path.off_known": _flag("switch_off_us holds stamps"),
+    "state.path.off_clear": _flag("this switch-off was once old enough"),
+    "state.dwell": _u32("cycles", "towards settled, or towards waking"),
+    "state.mode": Range(3, 12, "MRD_MODE", "mode"),
+    "state.inhibit_commanded": _flag("inhibit stays until resume"),
+    **_counters("state.counters"),
+    "state.digest": _u32("digest", "of the state"),
+}
+
+_TRACE = {
+    # stage 1
+    "calibration.sum": _sym(65535 * 32766, "Q(shift) count", "matrix times raw counts"),
+    "calibration.value": _sym(2**30 + INT16_MAX, "count", "calibrated, before the clamp"),
+    "calibration.field": _sym(INT16_MAX, "field count", "field"),
+    "calibration.rate": _sym(INT16_MAX, "rate count", "rate"),
+    "calibration.rate_valid": _flag("rate can be used"),
+    # stage 2
+    "plausibility.norm_sq": Range(0, NORM_MAX, "field count^2", "norm of the field, squared"),
+    # stage 3
+    "gate.departure": _u32("us", "mid-sample against its place in the cycle, mod 2^32"),
+    "gate.age_us": _u32("us", "switch-off to the start of the sample, mod 2^32"),
+    "gate.trusted": _flag("sample is used"),
+    # stage 4
+    "derivative.interval_us": _u32("us", "between the two samples, mod 2^32"),
+    "derivative.period": Range(2**14, 2**15 - 1, "us >> k", "P: period in 15 bits"),
+    "derivative.interval": Range(2**13, 49151, "us >> k", "I: interval in the unit of the period"),
+    "derivative.quotient": Range(10922, 32770, "Q14", "period / interval, before the limit"),
+    "derivative.factor": Range(10922, 2**15, "Q14", "period / interval"),
+    "derivative.difference": _sym(2 * INT16_MAX, "field count", "between the two samples"),
+    "derivative.product": _sym(2 * INT16_MAX * 2**15, "Q14 field count a period", "difference times factor"),
+    "derivative.unclamped": _sym(4 * INT16_MAX, "field count a period", "derivative before the clamp"),
+    "derivative.derivative": _sym(INT16_MAX, "field count a period", "derivative of the field"),
+    "derivative.valid": _flag("there is a derivative"),
+    # stage 5
+    "low_pass.target": _sym(FILTER_MAX, "Q8 field count a period", "derivative in the filter's format"),
+    "low_pass.error": _sym(2 * FILTER_MAX, "Q8 field count a period", "target minus filter"),
+    "low_pass.product": _sym(2 * FILTER_MAX * 2**15, "Q23 field count a period", "error times gain; 40 bits"),
+    "low_pass.filter": _sym(FILTER_MAX, "Q8 field count a period", "new filter"),
+    "low_pass.filtered": _sym(INT16_MAX, "field count a period", "filtered derivative"),
+    # stage 6
+    "law.active": Range(0, 2, "MRD_LAW", "law that acted"),
+    "law.norm": Range(32768, NORM_MAX, "field count^2", "norm limited to its plausible range"),
+    "law.exponent": Range(0, 16, "bits", "norm brought to 16 bits"),
+    "law.reciprocal": Range(32768, 65535, "2^31 / norm", "of the norm in 16 bits"),
+    "law.scaled": Range(2**30, 2**32 - 131071, "product", "gain mantissa times reciprocal"),
+    "law.mantissa": Range(32768, UINT16_MAX, "mantissa", "gain used"),
+    "law.shift": Range(1, 31, "bits", "gain used"),
+    "law.cross": _sym(CROSS_MAX, "rate count x field count", "w x B"),
+    "law.product": _sym(INT16_MAX * UINT16_MAX, "Q(shift) command", "filtered derivative times gain"),
+    "law.cross_product": _sym(CROSS_MAX * UINT16_MAX, "Q(shift + 16) command", "w x B times gain; 48 bits"),
+    "law.demand": _sym(2**30, "Q15 of the dipole limit", "unsaturated command"),
+    # stage 7
+    "saturation.largest": Range(0, 2**30, "Q15 of the dipole limit", "largest demand of the three axes"),
+    "saturation.exponent": Range(0, 15, "bits", "largest demand brought to 16 bits"),
+    "saturation.divisor": Range(32768, 65535, "demand >> exponent", "largest demand in 16 bits"),
+    "saturation.reciprocal": Range(32767, 65534, "Q16", "limit / divisor"),
+    "saturation.product": Range(0, INT16_MAX * 2**16 + 32767, "Q16 command", "demand in 16 bits times reciprocal"),
+    "saturation.command": _sym(INT16_MAX, "Q15 of the dipole limit", "command"),
+    # stage 8
+    "pulses.product": Range(0, INT16_MAX * 2**14, "Q15 ticks", "magnitude of the command times the window"),
+    "pulses.width": Range(0, 2**14, "ticks", "width before the shortest pulse"),
+    "pulses.ticks": _sym(2**14, "ticks", "signed pulse"),
+}
+
+_ESTIMATE = {
+    "estimate.sum_sq": Range(0, NORM_MAX, "count^2", "squares of the rate, or of the filtered derivative"),
+    "estimate.turn": Range(0, 56754, "field count a period", "a: norm of the filtered derivative"),
+    "estimate.norm": Range(1, 56754, "field count", "b: norm of the field"),
+    "estimate.chord": _u16("Q15 rad a period", "chord of the field's turn"),
+    "estimate.product": Range(0, UINT16_MAX**2, "Q(shift) rate count", "chord times mantissa"),
+}
+
+_OUTPUTS = {
+    "outputs.ticks": _sym(2**14, "ticks", "signed pulses of this cycle"),
+    "outputs.mode": Range(3, 12, "MRD_MODE", "mode"),
+    "outputs.status": Range(0, 2**23 - 1, "bits", "status word"),
+    "outputs.rate": _u16("rate count", "rate estimate; 65535: that or more"),
+    "outputs.rate_valid": _flag("there is a rate estimate"),
+    "outputs.handover": _flag("settled"),
+    "outputs.digest": _u32("digest", "of the configuration in use"),
+    **_counters("outputs.counters"),
+}
+
+RANGES: dict[str, Range] = {**_CONFIG, **_INPUTS, **_STATE, **_TRACE, **_ESTIMATE, **_OUTPUTS}
+
+_BOUNDS = {name: (entry.lo, entry.hi) for name, entry in RANGES.items()}
+
+
+def inside(name: str, values: int | tuple[int, ...]) -> bool:
+    """Whether a value, or every element of an array, is in the declared range."""
+    lo, hi = _BOUNDS[name]
+    return all(lo <= value <= hi for value in (values if isinstance(values, tuple) else (values,)))
+
+
+def check(name: str, value: int) -> int:
+    """The value itself. Raises RangeError if it has left the declared range."""
+    lo, hi = _BOUNDS[name]
+    if lo <= value <= hi:
+        return value
+    raise RangeError(name, value)
+
+
+def check3(name: str, values: Vector) -> Vector:
+    """The vector itself. Raises RangeError if an element has left the declared range."""
+    lo, hi = _BOUNDS[name]
+    x, y, z = values
+    if lo <= x <= hi and lo <= y <= hi and lo <= z <= hi:
+        return values
+    raise RangeError(name, values)
