@@ -16,7 +16,7 @@ import numpy as np
 from pyharness import exact
 from pyharness.flight import Interface, Library, Sources, find_sources
 from pyharness.flight.records import to_dict, to_record, to_tuple
-from pyharness.scaling import Config, Scaling
+from pyharness.scaling import Integers, Scaling
 
 NAMES = "c, exact, truth or lib:PATH"
 
@@ -32,8 +32,11 @@ class Controller(ABC):
     interface: Interface
 
     @abstractmethod
-    def configure(self, scalings: Sequence[Scaling]) -> None:
-        """Take N configurations and reset. Raises ControllerError, with the text of mrd.h, for one that is refused."""
+    def configure(self, configs: Sequence[Scaling | Integers]) -> None:
+        """Take N configurations and reset. Raises ControllerError, with the text of mrd.h, for one that is refused.
+
+        Only the truth needs to know the physical sizes, so only it insists on `Scaling`.
+        """
 
     @abstractmethod
     def reset(self) -> None:
@@ -68,14 +71,10 @@ class CController(Controller):
         self.library = library
         self.interface = library.interface
 
-    def configure(self, scalings: Sequence[Scaling]) -> None:
-        self.configure_integers([s.config for s in scalings])
-
-    def configure_integers(self, configs: Sequence[Config]) -> None:
-        """As configure, from bare integers."""
+    def configure(self, configs: Sequence[Scaling | Integers]) -> None:
         self._configs = np.zeros(len(configs), self.interface.config)
-        for i, config in enumerate(configs):
-            self._configs[i] = to_record(self.interface.config, config)
+        for i, item in enumerate(configs):
+            self._configs[i] = to_record(self.interface.config, item.config)
             self._refuse(i, self.library.init(self._configs[i]))
         self._states = np.zeros(len(configs), self.interface.state)
         self.reset()
@@ -109,12 +108,8 @@ class ExactController(Controller):
     def __init__(self, interface: Interface):
         self.interface = interface
 
-    def configure(self, scalings: Sequence[Scaling]) -> None:
-        self.configure_integers([s.config for s in scalings])
-
-    def configure_integers(self, configs: Sequence[Config]) -> None:
-        """As configure, from bare integers."""
-        self._configs = list(configs)
+    def configure(self, configs: Sequence[Scaling | Integers]) -> None:
+        self._configs = [item.config for item in configs]
         for i, config in enumerate(self._configs):
             self._refuse(i, exact.init(config))
         self.reset()

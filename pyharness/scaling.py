@@ -27,6 +27,13 @@ Config = dict[str, Any]
 
 
 @dataclass(frozen=True)
+class Integers:
+    """A bare integer configuration, for what needs no physical units."""
+
+    config: Config
+
+
+@dataclass(frozen=True)
 class Size:
     """What one count of an integer stands for: `value = count × step` in `unit`."""
 

@@ -16,13 +16,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from pyharness import exact
-from pyharness.controllers import Controller
+from pyharness.controllers import Controller, ControllerError
 from pyharness.exact import constants as mrd
 from pyharness.flight import Interface
 from pyharness.flight.records import to_dict, to_tuple
 from pyharness.plant.batch import cross
 from pyharness.plant.sensors import rotation_matrix
-from pyharness.scaling import FULL_SCALE, Q15, Scaling
+from pyharness.scaling import FULL_SCALE, Q15, Integers, Scaling
 
 LIMIT = FULL_SCALE / Q15
 """Saturated command as a share of the dipole limit: the greatest Q15 number."""
@@ -239,9 +239,11 @@ class TruthController(Controller):
     def __init__(self, interface: Interface):
         self.interface = interface
 
-    def configure(self, scalings: Sequence[Scaling]) -> None:
-        self._scalings = list(scalings)
-        for i, scaling in enumerate(scalings):
+    def configure(self, configs: Sequence[Scaling | Integers]) -> None:
+        self._scalings = [item for item in configs if isinstance(item, Scaling)]
+        if len(self._scalings) != len(configs):
+            raise ControllerError("truth: needs the mission, not its integers alone")
+        for i, scaling in enumerate(self._scalings):
             self._refuse(i, exact.init(scaling.config))
         self.reset()
 

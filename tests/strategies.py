@@ -1,8 +1,9 @@
 """Hypothesis strategies for the controller: any legal configuration, and sequences of inputs that reach its deep stages.
 
-The generators draw integers from a source: from hypothesis (which shrinks what fails) or from a seeded `random.Random` (for
-many thousand rows). Ranges are followed constructively, nothing is filtered away. Sequences follow a plausible timeline and
-a plausible field, disturbed now and then by corner values, so that most cycles have a derivative and a law.
+The generators draw integers from a source: from hypothesis (which shrinks what fails) or from a seeded
+`random.Random` (for many thousand rows). Ranges are followed constructively, nothing is filtered away.
+Sequences follow a plausible timeline and a plausible field, disturbed now and then by corner values, so
+that most cycles have a derivative and a law.
 """
 
 from __future__ import annotations
@@ -17,7 +18,8 @@ from hypothesis import strategies as st
 from pyharness.exact import config_digest
 from pyharness.exact.calibration import calibrate_sensor
 from pyharness.exact.constants import (
-    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_NONE, MRD_COMMAND_RESUME, MRD_COMMAND_SAFE, MRD_GAIN_CONSTANT,
+    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_NONE, MRD_COMMAND_RESUME, MRD_COMMAND_SAFE,
+    MRD_GAIN_CONSTANT,
 )
 
 Record = dict[str, Any]
@@ -66,9 +68,9 @@ def once_in(source: Source, n: int) -> bool:
 
 
 def span(source: Source, lo: int, hi: int) -> int:
-    """lo:hi, with its ends more often than their share."""
-    kind = source.integer(0, 9)
-    return lo if kind == 8 else hi if kind == 9 else source.integer(lo, hi)
+    """lo:hi, each end once in ten times."""
+    beyond = (hi - lo) // 8
+    return max(lo, min(hi, source.integer(lo - beyond, hi + beyond)))
 
 
 def spread(source: Source, lo: int, hi: int) -> int:
@@ -265,19 +267,22 @@ def _command(source: Source, config: Record) -> Record:
     likely = MRD_COMMAND_SAFE, MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_BENCH, MRD_COMMAND_RESUME
     return {
         "command": pick(source, (*likely, source.integer(0, 6), span(source, 0, 65535))),
-        "command_key": pick(source, (supervisor["bench_key"], supervisor["bench_key"], span(source, 0, 65535))),
+        "command_key": pick(source, (supervisor["bench_key"], supervisor["bench_key"],
+            span(source, 0, 65535))),
         "command_coil": pick(source, (0, 1, 2, 0, 1, 2, span(source, 0, 65535))),
         "command_ticks": pick(source, (span(source, -limit, limit), span(source, -limit, limit),
                                        span(source, -32768, 32767), limit + 1)),
     }
 
 
-def _path_inputs(source: Source, path: Record, cycle_start: int, before: Record | None, pool: list, calm: int) -> Record:
+def _path_inputs(source: Source, path: Record, cycle_start: int, before: Record | None, pool: list,
+    calm: int) -> Record:
     """One cycle's inputs of a path; `calm` is how rarely something is disturbed."""
     tolerance = path["tolerance_us"]
     sample = (cycle_start + path["phase_us"] + span(source, -min(tolerance, 50), min(tolerance, 50))) % WRAP
     if once_in(source, 4 * calm):
-        sample = (cycle_start + path["phase_us"] + pick(source, (1, -1)) * (tolerance + source.integer(0, 1))) % WRAP
+        sample = (cycle_start + path["phase_us"] + pick(source,
+            (1, -1)) * (tolerance + source.integer(0, 1))) % WRAP
     if once_in(source, 8 * calm):
         sample = span(source, 0, WRAP - 1)
     start = (sample - path["half_sample_us"]) % WRAP
@@ -287,7 +292,8 @@ def _path_inputs(source: Source, path: Record, cycle_start: int, before: Record 
             for i in range(3)
         )
     else:
-        switch_off = tuple((start - path["blanking_us"][i] - source.integer(0, 9999)) % WRAP for i in range(3))
+        switch_off = tuple((start - path["blanking_us"][i] - source.integer(0, 9999)) % WRAP
+            for i in range(3))
     mag_raw = _near(source, pick(source, pool), pick(source, (0, 3, 30)))
     gyro_raw = _gyro_raw(source, path)
     if once_in(source, 4 * calm):
@@ -310,7 +316,8 @@ def any_inputs(source: Source, config: Record, n: int) -> list[Record]:
     path, supervisor = config["path"], config["supervisor"]
     calm = pick(source, (1000, 16, 4))
     pool = [_plausible_raw(source, path) for _ in range(3)]
-    cycle_start = pick(source, (0, WRAP - path["period_us"] * source.integer(1, max(1, n)), span(source, 0, WRAP - 1)))
+    cycle_start = pick(source, (0, WRAP - path["period_us"] * source.integer(1, max(1, n)),
+        span(source, 0, WRAP - 1)))
     sequence: list[Record] = []
     for _ in range(n):
         cycle_start %= WRAP
@@ -319,13 +326,15 @@ def any_inputs(source: Source, config: Record, n: int) -> list[Record]:
         hold_off_s = supervisor["hold_off_s"]
         sequence.append({
             "path": _path_inputs(source, path, cycle_start, before, pool, calm),
-            "separation_s": max(0, hold_off_s - 1) if once_in(source, calm) else span(source, hold_off_s, WRAP - 1),
+            "separation_s": max(0, hold_off_s - 1) if once_in(source, calm) else span(source, hold_off_s,
+                WRAP - 1),
             "low_power": pick(source, (1, 65535)) if once_in(source, calm) else 0,
             **(_command(source, config) if commanded else {
                 "command": MRD_COMMAND_NONE, "command_key": 0, "command_coil": 0, "command_ticks": 0}),
         })
         period = path["period_us"]
-        cycle_start += pick(source, (period // 2, period + period // 2, 2 * period)) if once_in(source, calm) else period
+        cycle_start += pick(source, (period // 2, period + period // 2, 2 * period)) if once_in(source,
+            calm) else period
     return sequence
 
 
@@ -343,7 +352,9 @@ def configs(draw: st.DrawFn) -> Record:
 
 @st.composite
 def inputs_sequences(draw: st.DrawFn, config: Record, n: int) -> list[Record]:
-    """The inputs of n cycles in a row for this configuration; n up to about 20 keeps within hypothesis' entropy."""
+    """The inputs of n cycles in a row for this configuration; n up to about 20 keeps within hypothesis'
+    entropy.
+    """
     return any_inputs(Drawn(draw), config, n)
 
 

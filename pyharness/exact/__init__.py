@@ -1,7 +1,7 @@
 """The exact model: the controller in unbounded Python integers, written from the arithmetic document alone.
 
-Records are plain dicts with the field names of mrd.h, arrays are tuples of ints; nothing is changed in place. Every named
-value passes through its declared range (`ranges`), and leaving it raises `RangeError`.
+Records are plain dicts with the field names of mrd.h, arrays are tuples of ints; nothing is changed in
+place. Every named value passes through its declared range (`ranges`), and leaving it raises `RangeError`.
 """
 
 from pyharness.exact.fields import FIELDS, Field

@@ -12,7 +12,10 @@ ZERO = (0, 0, 0)
 
 
 def calibrate_sensor(sensor: Record, raw: Vector) -> tuple[Vector, bool]:
-    """Matrix and offset on the raw counts of one sensor. Returns the clamped counts and whether out of range."""
+    """Matrix and offset on the raw counts of one sensor.
+
+    Returns the clamped counts and whether out of range.
+    """
     greatest = sensor["limit"] - 1
     if exceeds(raw, greatest):
         return ZERO, True

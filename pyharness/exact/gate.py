@@ -17,13 +17,18 @@ _REJECTED = _MISSING | 1 << MRD_S_MAG_RANGE | 1 << MRD_S_SAMPLE_OFF_TIME | 1 << 
 
 def off_time(config: Record, inputs: Record) -> bool:
     """Whether mid-sample departs from its place in the cycle by more than the tolerance."""
-    departure = check("gate.departure", (inputs["sample_us"] - inputs["cycle_start_us"] - config["phase_us"]) % WRAP)
+    departure = check("gate.departure",
+        (inputs["sample_us"] - inputs["cycle_start_us"] - config["phase_us"]) % WRAP)
     tolerance = config["tolerance_us"]
     return not (departure <= tolerance or departure >= WRAP - tolerance)
 
 
-def blanking(state: Record, config: Record, switch_off_us: Vector, start: int, i: int) -> tuple[int, int, bool]:
-    """Coil i at the start of the sample. Returns the age of its switch-off, the flag clear, and whether it is unstamped."""
+def blanking(state: Record, config: Record, switch_off_us: Vector, start: int, i: int) -> tuple[int, int,
+    bool]:
+    """Coil i at the start of the sample.
+
+    Returns the age of its switch-off, the flag clear, and whether it is unstamped.
+    """
     age = (start - switch_off_us[i]) % WRAP
     if state["off_known"] and switch_off_us[i] == state["switch_off_us"][i]:
         if state["ticks"][i] != 0:
@@ -34,8 +39,12 @@ def blanking(state: Record, config: Record, switch_off_us: Vector, start: int, i
     return age, flag(config["blanking_us"][i] <= age <= OLD), False
 
 
-def admit(state: Record, config: Record, inputs: Record, status: int, waive_norm: int) -> tuple[Record, Vector, int]:
-    """Whether the sample is used. Returns the trace's part, the state's off_clear, and the status bits of this stage."""
+def admit(state: Record, config: Record, inputs: Record, status: int, waive_norm: int) -> tuple[Record,
+    Vector, int]:
+    """Whether the sample is used.
+
+    Returns the trace's part, the state's off_clear, and the status bits of this stage.
+    """
     raised = 0
     if status & _MISSING:
         start = inputs["cycle_start_us"]

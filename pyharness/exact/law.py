@@ -34,8 +34,8 @@ def normalise(mantissa: int, shift: int, reciprocal: int, exponent: int) -> tupl
 def gain_used(config: Record, gain: Record, norm_sq: int) -> Gain:
     """The gain of each axis, divided by the squared norm if the configuration says so.
 
-    Relative error of the division: above -2^-14, since the reciprocal and the mantissa are each rounded down by less than
-    2^-15, and below 2^-15, since the norm is cut to 16 bits.
+    Relative error of the division: above -2^-14, since the reciprocal and the mantissa are each rounded
+    down by less than 2^-15, and below 2^-15, since the norm is cut to 16 bits.
     """
     mantissa, shift = gain["mantissa"], gain["shift"]
     if config["gain_scaling"] != MRD_GAIN_CONSTANT:
@@ -74,11 +74,15 @@ def rate_law(cross: Vector, gain: Gain) -> Vector:
 
 
 def command_demand(config: Record, trace: Record) -> tuple[Record, int]:
-    """The demand of the law that acts. Returns the trace's part and the status bits. Cannot overflow: every shift is ≥ 1."""
+    """The demand of the law that acts.
+
+    Returns the trace's part and the status bits. Cannot overflow: every shift is ≥ 1.
+    """
     active, status = choose(config, trace)
     nothing = (0, 0, 0)
     if active == MRD_LAW_NONE:
-        return {"active": active, "cross": nothing, "mantissa": nothing, "shift": nothing, "demand": nothing}, status
+        return {"active": active, "cross": nothing, "mantissa": nothing, "shift": nothing,
+            "demand": nothing}, status
     norm_sq = trace["plausibility"]["norm_sq"]
     if active == MRD_LAW_RATE:
         gain = gain_used(config, config["rate_gain"], norm_sq)

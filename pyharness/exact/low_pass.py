@@ -1,4 +1,6 @@
-"""Stage 5: first-order low-pass of the derivative. The filter carries eight fraction bits so that it does not stick."""
+"""Stage 5: first-order low-pass of the derivative. The filter carries eight fraction bits so that it does
+not stick.
+"""
 
 from __future__ import annotations
 
@@ -7,7 +9,10 @@ from pyharness.exact.ranges import check3
 
 
 def follow(old: Vector, target: Vector, gain: int) -> Vector:
-    """The filter, drawn towards its target by gain / 2^15. Cannot overflow: the result lies between the two."""
+    """The filter, drawn towards its target by gain / 2^15.
+
+    Cannot overflow: the result lies between the two.
+    """
     ox, oy, oz = old
     tx, ty, tz = target
     ex, ey, ez = check3("low_pass.error", (tx - ox, ty - oy, tz - oz))

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_INHIBIT, MRD_COMMAND_NONE, MRD_COMMAND_RESUME, MRD_COMMAND_SAFE,
-    MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_INHIBIT, MRD_MODE_SAFE, MRD_MODE_SETTLED,
-    MRD_S_COMMAND_REFUSED,
+    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_INHIBIT, MRD_COMMAND_NONE, MRD_COMMAND_RESUME,
+    MRD_COMMAND_SAFE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_INHIBIT, MRD_MODE_SAFE,
+    MRD_MODE_SETTLED, MRD_S_COMMAND_REFUSED,
 )
 from pyharness.exact.num import Record, Vector, count
 from pyharness.exact.ranges import UINT32_MAX
@@ -23,7 +23,8 @@ _ACCEPTED_IN = {
     MRD_COMMAND_ARM: (MRD_MODE_SAFE,),
     MRD_COMMAND_BENCH: (MRD_MODE_BENCH,),
 }
-# The mode that follows and inhibit_commanded. ARM leaves the latter: SAFE, where alone it is accepted, has cleared it.
+# The mode that follows and inhibit_commanded. ARM leaves the latter: SAFE, where alone it is accepted, has
+# cleared it.
 _LEADS_TO = {
     MRD_COMMAND_SAFE: (MRD_MODE_SAFE, 0),
     MRD_COMMAND_INHIBIT: (MRD_MODE_INHIBIT, 1),
@@ -44,7 +45,8 @@ def accepted(mode: int, supervisor: Record, inputs: Record) -> bool:
     return True
 
 
-def obey(mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record) -> tuple[int, int, Vector, int]:
+def obey(mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record) -> tuple[int, int, Vector,
+    int]:
     """Mode after the command, inhibit_commanded, the bench pulse, and the status bits."""
     command = inputs["command"]
     if not accepted(mode, supervisor, inputs):
@@ -61,7 +63,10 @@ def obey(mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record) 
 def advance(
     mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int, rate_valid: int,
 ) -> tuple[int, int]:
-    """One transition by itself. Returns mode and dwell; whoever calls resets the dwell where the mode has changed."""
+    """One transition by itself.
+
+    Returns mode and dwell; whoever calls resets the dwell where the mode has changed.
+    """
     low_power = inputs["low_power"]
     if mode == MRD_MODE_INHIBIT and not low_power and not inhibit_commanded:
         mode = MRD_MODE_HOLD_OFF  # whose own rows follow in the same step
@@ -80,12 +85,15 @@ def advance(
         if low_power:
             return MRD_MODE_INHIBIT, dwell
         if rate_valid:
-            return dwelling(rate > supervisor["wake_rate"], dwell, supervisor["wake_dwell"], mode, MRD_MODE_DAMPING)
+            return dwelling(rate > supervisor["wake_rate"], dwell, supervisor["wake_dwell"], mode,
+                MRD_MODE_DAMPING)
     return mode, dwell
 
 
 def dwelling(towards: bool, dwell: int, needed: int, mode: int, following: int) -> tuple[int, int]:
-    """Mode and dwell after one more cycle towards the mode that follows, or one that begins the dwell again."""
+    """Mode and dwell after one more cycle towards the mode that follows, or one that begins the dwell
+    again.
+    """
     if not towards:
         return mode, 0
     dwell = count(dwell, UINT32_MAX)
@@ -95,7 +103,10 @@ def dwelling(towards: bool, dwell: int, needed: int, mode: int, following: int) 
 def change_mode(
     state: Record, supervisor: Record, inputs: Record, rate: int, rate_valid: int,
 ) -> tuple[int, int, int, Vector, int]:
-    """Mode, inhibit_commanded, dwell, the bench pulse and the status bits. A value that is no mode counts as SAFE."""
+    """Mode, inhibit_commanded, dwell, the bench pulse and the status bits.
+
+    A value that is no mode counts as SAFE.
+    """
     begun = state["mode"]
     mode = begun if begun in MODES else MRD_MODE_SAFE
     mode, inhibit_commanded, pulse, status = obey(mode, state["inhibit_commanded"], supervisor, inputs)

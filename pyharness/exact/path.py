@@ -37,8 +37,8 @@ def _check_inputs(inputs: Record) -> None:
 def path_sense(state: Record, config: Record, inputs: Record, waive_norm: int) -> tuple[Record, Record, int]:
     """Stages 1 to 5. Returns the new state, the trace with its first five parts, and the status bits.
 
-    The arguments are the structs of the path alone. Raises RangeError where an input does not fit its type, or a value leaves
-    its declared range, which no legal configuration allows.
+    The arguments are the structs of the path alone. Raises RangeError where an input does not fit its type,
+    or a value leaves its declared range, which no legal configuration allows.
     """
     _check_inputs(inputs)
     calibration, status = calibrate(config, inputs)

@@ -8,7 +8,10 @@ from pyharness.exact.ranges import check, check3
 
 
 def width(config: Record, command: int) -> tuple[int, bool]:
-    """Width of one axis's pulse in ticks, and whether it was too short and dropped. At most the window, met at the limit."""
+    """Width of one axis's pulse in ticks, and whether it was too short and dropped.
+
+    At most the window, met at the limit.
+    """
     product = check("pulses.product", abs(command) * config["window_ticks"])
     ticks = check("pulses.width", (product + 2**14) >> 15)
     short = 0 < ticks < config["shortest_ticks"]
@@ -23,5 +26,6 @@ def make_pulses(config: Record, command: Vector) -> tuple[Record, int]:
     ny, short_y = width(config, y)
     nz, short_z = width(config, z)
     ticks = (with_sign(nx, x) * px, with_sign(ny, y) * py, with_sign(nz, z) * pz)
-    status = bit(short_x, MRD_S_SHORT_PULSE_X) | bit(short_y, MRD_S_SHORT_PULSE_Y) | bit(short_z, MRD_S_SHORT_PULSE_Z)
+    status = bit(short_x, MRD_S_SHORT_PULSE_X) | bit(short_y, MRD_S_SHORT_PULSE_Y) | bit(short_z,
+        MRD_S_SHORT_PULSE_Z)
     return {"ticks": check3("pulses.ticks", ticks)}, status

@@ -1,9 +1,10 @@
 """Every named value of the arithmetic with its declared range, in one table.
 
-Fields carry their name in mrd.h: `config.…`, `inputs.…`, `state.…`, `outputs.…`, and the parts of the trace by themselves
-(`derivative.factor`). The other names are the intermediate values of the arithmetic document. The range of a value is the one
-it has where its stage is reached; a trace value that is not reached is 0. The range of a configuration field is the legal one,
-of an input the width of its type, and of a state field the invariant that a step keeps.
+Fields carry their name in mrd.h: `config.…`, `inputs.…`, `state.…`, `outputs.…`, and the parts of the trace
+by themselves (`derivative.factor`). The other names are the intermediate values of the arithmetic document.
+The range of a value is the one it has where its stage is reached; a trace value that is not reached is 0.
+The range of a configuration field is the legal one, of an input the width of its type, and of a state field
+the invariant that a step keeps.
 """
 
 from __future__ import annotations
@@ -97,7 +98,8 @@ _CONFIG = {
     "config.path.tolerance_us": Range(0, 2_499_999, "us", "largest departure of mid-sample from its place"),
     "config.path.half_sample_us": Range(0, 9_999_999, "us", "half the sample length"),
     "config.path.delay_us": Range(0, 9_999_999, "us", "mid-sample to the start of the drive window"),
-    "config.path.blanking_us": Range(0, 9_999_999, "us", "least age of a switch-off at the start of a sample"),
+    "config.path.blanking_us": Range(0, 9_999_999, "us",
+        "least age of a switch-off at the start of a sample"),
     "config.path.tick_us": Range(1, UINT16_MAX, "us", "pulse timer tick"),
     "config.path.window_ticks": Range(1, 2**14, "ticks", "drive window"),
     "config.path.shortest_ticks": Range(1, 2**14, "ticks", "shortest pulse"),
@@ -111,7 +113,8 @@ _CONFIG = {
     "config.supervisor.settle_by": Range(1, 2, "MRD_SETTLE_BY", "source of the rate estimate"),
     "config.supervisor.settled_rate": _u16("rate count", "slow: at or below"),
     "config.supervisor.wake_rate": _u16("rate count", "fast: above"),
-    "config.supervisor.estimate_mantissa": Range(32768, UINT16_MAX, "mantissa", "rate count per 2^-15 rad a period"),
+    "config.supervisor.estimate_mantissa": Range(32768, UINT16_MAX, "mantissa",
+        "rate count per 2^-15 rad a period"),
     "config.supervisor.estimate_shift": Range(1, 31, "bits", "rate count per 2^-15 rad a period"),
     "config.supervisor.bench_key": Range(1, UINT16_MAX, "key", "carried by the arm command"),
     "config.supervisor.bench_limit_ticks": Range(1, 2**14, "ticks", "longest bench pulse"),
@@ -198,7 +201,8 @@ _TRACE = {
     "saturation.exponent": Range(0, 15, "bits", "largest demand brought to 16 bits"),
     "saturation.divisor": Range(32768, 65535, "demand >> exponent", "largest demand in 16 bits"),
     "saturation.reciprocal": Range(32767, 65534, "Q16", "limit / divisor"),
-    "saturation.product": Range(0, INT16_MAX * 2**16 + 32767, "Q16 command", "demand in 16 bits times reciprocal"),
+    "saturation.product": Range(0, INT16_MAX * 2**16 + 32767, "Q16 command",
+        "demand in 16 bits times reciprocal"),
     "saturation.command": _sym(INT16_MAX, "Q15 of the dipole limit", "command"),
     # stage 8
     "pulses.product": Range(0, INT16_MAX * 2**14, "Q15 ticks", "magnitude of the command times the window"),

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from pyharness.exact.constants import MRD_S_SATURATED_X, MRD_S_SATURATED_Y, MRD_S_SATURATED_Z, MRD_SATURATE_PER_AXIS
+from pyharness.exact.constants import (
+    MRD_S_SATURATED_X, MRD_S_SATURATED_Y, MRD_S_SATURATED_Z, MRD_SATURATE_PER_AXIS,
+)
 from pyharness.exact.num import (
     INT16_MAX, Record, Vector, bit, clamp, exceeds, largest, norm_shift, round_div, vmin, with_sign,
 )
@@ -25,7 +27,10 @@ def keep_direction(demand: Vector, greatest: int) -> Vector:
 
 
 def saturate(config: Record, demand: Vector) -> tuple[Record, int]:
-    """The command. Returns the trace's part and the status bits. Saturates and says so; no axis changes its sign."""
+    """The command.
+
+    Returns the trace's part and the status bits. Saturates and says so; no axis changes its sign.
+    """
     x, y, z = demand
     if not exceeds(demand, INT16_MAX):
         return {"command": check3("saturation.command", clamp3(demand))}, 0

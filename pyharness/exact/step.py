@@ -81,8 +81,9 @@ def _check_inputs(inputs: Record) -> None:
 def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]:
     """One cycle. Returns the new state and the outputs; the arguments stay as they are.
 
-    Records are dicts with the names of mrd.h, of plain ints and tuples of ints. Raises RangeError where an input does not fit
-    its type, or a value leaves its declared range, which no configuration that passed `init` allows.
+    Records are dicts with the names of mrd.h, of plain ints and tuples of ints. Raises RangeError where an
+    input does not fit its type, or a value leaves its declared range, which no configuration that passed
+    `init` allows.
     """
     _check_inputs(inputs)
     if config["digest"] != config_digest(config):
@@ -99,7 +100,8 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     status |= raised
     trace, raised = path_drive(path_config, trace)
     status |= raised
-    mode, inhibit_commanded, dwell, bench_pulse, raised = change_mode(state, supervisor, inputs, rate, rate_valid)
+    mode, inhibit_commanded, dwell, bench_pulse, raised = change_mode(state, supervisor, inputs, rate,
+        rate_valid)
     status |= raised
     ticks = NO_PULSE
     if mode == MRD_MODE_DAMPING:

@@ -59,7 +59,8 @@ def inverse(j: np.ndarray) -> np.ndarray:
     (xx, xy, xz), (_, yy, yz), (_, _, zz) = j
     a, b, c = yy * zz - yz * yz, xz * yz - xy * zz, xy * yz - xz * yy
     d, e, f = xx * zz - xz * xz, xy * xz - xx * yz, xx * yy - xy * xy
-    return np.stack((np.stack((a, b, c)), np.stack((b, d, e)), np.stack((c, e, f)))) / (xx * a + xy * b + xz * c)
+    adjugate = np.stack((a, b, c, b, d, e, c, e, f)).reshape(j.shape)
+    return adjugate / (xx * a + xy * b + xz * c)
 
 
 class RigidBody:
@@ -74,7 +75,8 @@ class RigidBody:
             self.inertia.reshape(9, -1), inverse(self.inertia).reshape(9, -1), self._drag_arm,
         ))
 
-    def propagate(self, state: np.ndarray, environment: np.ndarray, dipole: np.ndarray, period_s: float) -> np.ndarray:
+    def propagate(self, state: np.ndarray, environment: np.ndarray, dipole: np.ndarray,
+                  period_s: float) -> np.ndarray:
         """State (7, N) one period later.
 
         `environment` (3, 3, 3, N): quadratics of `field.Environment`; `dipole` (4, 3, N): the coils' cubic, A
@@ -104,6 +106,7 @@ def _step(state: np.ndarray, step: int, period_s: float, parameters: np.ndarray,
     # Overwritten by every stage: factors of four cross products, x and y repeated below z; (q, −q); and the
     # slopes.
     left, right, both, k = np.empty((4, 5, n)), np.empty((4, 5, n)), np.empty((8, n)), np.empty((12, 7, n))
+    work = left, right, both
     inertia, inverse_inertia = parameters[:9].reshape(3, 3, n), parameters[9:18].reshape(3, 3, n)
     left[1, :3] = parameters[18:]
 
@@ -118,24 +121,25 @@ def _step(state: np.ndarray, step: int, period_s: float, parameters: np.ndarray,
         y = state
         if stage:
             y = state + h * np.add.reduce(STAGES[stage, :stage, None, None] * k[:stage], axis=0)
-        _derivative(y, environments[stage], dipoles[stage], inertia, inverse_inertia, left, right, both, k[stage])
+        _derivative(y, environments[stage], dipoles[stage], inertia, inverse_inertia, work, k[stage])
     return state + h * np.add.reduce(WEIGHTS[:, None, None] * k, axis=0)
 
 
 def _derivative(y: np.ndarray, environment: np.ndarray, dipole: np.ndarray, inertia: np.ndarray,
-                inverse_inertia: np.ndarray, left: np.ndarray, right: np.ndarray, both: np.ndarray,
-                out: np.ndarray) -> None:
+                inverse_inertia: np.ndarray, work: tuple[np.ndarray, ...], out: np.ndarray) -> None:
     """dy/dt of the state (7, N) into `out`.
 
     Four cross products at once: dipole × field, drag arm × flight, (−J s) × s of gravity's gradient, and (J
     ω) × ω.
     """
     q, rate = y[:4], y[4:]
+    left, right, both = work
     both[:4] = q
     np.negative(q, out=both[4:])
     np.add.reduce(both.take(_TURN, axis=0) * (0.5 * rate[:, None]), axis=0, out=out[:4])
 
-    body = np.add.reduce(_rotation(both)[:, :, None] * environment[:, None], axis=0)  # (3 components, 3 vectors, N)
+    # (3 components, 3 vectors, N)
+    body = np.add.reduce(_rotation(both)[:, :, None] * environment[:, None], axis=0)
     turning = right[2:, :3]
     right[0, :3] = body[:, FIELD]
     right[1, :3] = body[:, FLIGHT]

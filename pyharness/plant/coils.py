@@ -121,14 +121,13 @@ class Coils:
         self._window_ticks = np.array([t.window_ticks for t in timelines])
         self._last_tick = np.array([t.ticks_to_next_sample for t in timelines])
 
-        lags = [(t, [coil.time_constant_ms for coil in m.coil]) for t, m in zip(timelines, missions, strict=True)]
+        lags = [(Timeline.of(m), [coil.time_constant_ms for coil in m.coil]) for m in missions]
         # Both (4 powers of ticks, 4 powers of x, 3, N); without L/R for the time a core's remanence is
         # overridden.
         pulse = spacecraft_last([_pulse_cubic(t, tau) for tau in taus] for t, taus in lags)
         rectangle = spacecraft_last([_pulse_cubic(t, 0.0) for _ in taus] for t, taus in lags)
         self._by_ticks = np.ascontiguousarray(np.stack((pulse, rectangle)).transpose(3, 0, 2, 1, 4))
-        before = spacecraft_last([_before_window_cubic(t) for _ in range(3)] for t in timelines).swapaxes(0, 1)
-        self._before = np.ascontiguousarray(before)
+        self._before = spacecraft_last(_before_window_cubic(t) for t in timelines)[:, None]
         self._after = -self._before
         self._after[0] += 1.0
         self._tabulate(lags)
@@ -181,7 +180,8 @@ class Coils:
         remaining = strength * self._left.take(entry)
         return Drive(CoilState(remaining, remanence), cubic, width * self._tick_us)
 
-    def waveform(self, ticks: np.ndarray, seconds: np.ndarray, late_ticks: np.ndarray | None = None) -> np.ndarray:
+    def waveform(self, ticks: np.ndarray, seconds: np.ndarray,
+                 late_ticks: np.ndarray | None = None) -> np.ndarray:
         """Exact pulse dipole (K, 3, N), A m², at K times in s after the start of the drive window. For
         figures."""
         width_s = self._widths(ticks, late_ticks) * self._tick_us * 1e-6

@@ -55,7 +55,7 @@ def geomagnetic_field(trajectory: Trajectory, seconds: np.ndarray, date: datetim
     Polar motion is neglected. Raises ValueError for a date that IGRF-14 does not cover.
     """
     if not _IGRF_FROM <= date <= _IGRF_TO:
-        raise ValueError(f"orbit: epoch {date:%Y-%m-%d} UTC, must be within 1900 to 2029, which IGRF-14 covers")
+        raise ValueError(f"orbit: epoch {date:%Y-%m-%d} UTC, must be in [1900, 2030], which IGRF-14 covers")
     position, _ = trajectory.state(seconds)
     x, y, z = position
     rho, r = norm(position[:2]), norm(position)

@@ -37,8 +37,8 @@ def _product(a: np.ndarray, b: np.ndarray) -> np.ndarray:
 class _Triad:
     """Three sensing axes: misalignment, scale, bias, noise, rounding half to even, clipping."""
 
-    def __init__(self, parts: Sequence[Magnetometer | Gyro], scale: Sequence[float], bias: Sequence[Vector],
-                 noise: Sequence[float], full_scale: Sequence[float]):
+    def __init__(self, parts: Sequence[Magnetometer | Gyro], scale: Sequence[float],
+                 bias: Sequence[np.ndarray], noise: Sequence[float], full_scale: Sequence[float]):
         """Scale in counts per SI unit; bias, noise and full scale in counts."""
         self._to_counts = spacecraft_last(
             s * _product(rotation_matrix(p.misalignment_deg), rotation_matrix(p.misalignment_error_deg))
@@ -62,16 +62,17 @@ class MagnetometerModel:
         self._triad = _Triad(
             parts,
             scale=[p.counts_per_ut * 1e6 for p in parts],
-            bias=[[p.counts_per_ut * (b + e) for b, e in zip(p.bias_ut, p.bias_error_ut, strict=True)] for p in parts],
+            bias=[p.counts_per_ut * (np.array(p.bias_ut) + p.bias_error_ut) for p in parts],
             noise=[p.counts_per_ut * p.noise_nt * 1e-3 for p in parts],
             full_scale=[p.counts_per_ut * p.range_ut for p in parts],
         )
         # (3 coils, 3 body axes, N), T per A m²
-        self._stray = np.ascontiguousarray(spacecraft_last(p.stray_ut_per_a_m2 for p in parts).swapaxes(0, 1)) * 1e-6
+        self._stray = spacecraft_last(np.transpose(p.stray_ut_per_a_m2) for p in parts) * 1e-6
         sample_s = spacecraft_last(Timeline.of(m).sample_us for m in missions) * 1e-6
         self._sample_s2_24 = sample_s * sample_s / 24.0
 
-    def counts(self, field: np.ndarray, rate: np.ndarray, dipole: np.ndarray, noise: np.ndarray) -> np.ndarray:
+    def counts(self, field: np.ndarray, rate: np.ndarray, dipole: np.ndarray,
+               noise: np.ndarray) -> np.ndarray:
         """Counts (3, N) int16 of a sample centred on now.
 
         `field` true, body axes, T; `rate` rad/s; `dipole` of each coil left during the sample, A m²; `noise`
@@ -94,8 +95,7 @@ class GyroModel:
         self._triad = _Triad(
             parts,
             scale=[p.counts_per_deg_s * (180.0 / math.pi) for p in parts],
-            bias=[[p.counts_per_deg_s * (b + e) for b, e in zip(p.bias_deg_s, p.bias_error_deg_s, strict=True)]
-                  for p in parts],
+            bias=[p.counts_per_deg_s * (np.array(p.bias_deg_s) + p.bias_error_deg_s) for p in parts],
             noise=[p.counts_per_deg_s * p.noise_deg_s for p in parts],
             full_scale=[p.counts_per_deg_s * p.range_deg_s for p in parts],
         )

@@ -1,6 +1,7 @@
 """A small configuration whose numbers can be followed by hand, and inputs for it.
 
-Counts pass calibration unchanged, gains are 1, period 100 ms, sample 38 to 42 ms into the cycle, window of 5000 ticks of 10 us.
+Counts pass calibration unchanged, gains are 1, period 100 ms, sample 38 to 42 ms into the cycle, window of
+5000 ticks of 10 us.
 """
 
 from __future__ import annotations

@@ -1,4 +1,6 @@
-"""Stages 1 to 5 on numbers worked out by hand from the arithmetic document, and on either side of every comparison."""
+"""Stages 1 to 5 on numbers worked out by hand from the arithmetic document, and on either side of every
+comparison.
+"""
 
 import pytest
 
@@ -45,7 +47,8 @@ def test_the_least_count_is_always_out_of_range():
     assert calibrate_sensor(SENSOR, (-32768, 0, 0)) == ((0, 0, 0), True)
 
 
-@pytest.mark.parametrize(("offset", "expected"), [(0, (32767, False)), (-1, (32767, True)), (1, (32766, False))])
+@pytest.mark.parametrize(("offset", "expected"),
+    [(0, (32767, False)), (-1, (32767, True)), (1, (32766, False))])
 def test_a_value_beyond_its_range_is_clamped_and_said(offset, expected):
     sensor = {**SENSOR, "matrix": (32767, 0, 0, 0, 2, 0, 0, 0, 2), "offset": (offset, 0, 0)}
     (x, _, _), out_of_range = calibrate_sensor(sensor, (2, 0, 0))
@@ -53,13 +56,14 @@ def test_a_value_beyond_its_range_is_clamped_and_said(offset, expected):
 
 
 def test_missing_and_out_of_range_samples():
-    _, trace, status = sense(inputs=path_inputs(mag_valid=0, gyro_valid=0))
+    _, trace, status = sense(inputs=path_inputs(mag_valid=0, gyro_valid=0, switch_off_us=(1_000_000,) * 3))
     assert raised(status, MRD_S_SAMPLE_MISSING, MRD_S_GYRO_MISSING)
     assert trace["calibration"] == {"field": (0, 0, 0), "rate": (0, 0, 0), "rate_valid": 0}
     _, trace, status = sense(inputs=path_inputs(mag_raw=(32767, 0, 0), gyro_raw=(0, 0, -32767)))
     assert raised(status, MRD_S_MAG_RANGE, MRD_S_GYRO_RANGE)  # without a norm there is none to be implausible
     assert (trace["plausibility"]["norm_sq"], trace["gate"]["trusted"]) == (0, 0)
-    _, trace, status = sense(config=path_config(gyro_fitted=0), inputs=path_inputs(gyro_raw=(1, 2, 3), gyro_valid=1))
+    _, trace, status = sense(config=path_config(gyro_fitted=0),
+        inputs=path_inputs(gyro_raw=(1, 2, 3), gyro_valid=1))
     assert raised(status, MRD_S_NO_PREVIOUS) and trace["calibration"]["rate"] == (0, 0, 0)
     _, trace, _ = sense(inputs=path_inputs(gyro_raw=(1, 2, 3), gyro_valid=65535))
     assert trace["calibration"] == {"field": FIELD, "rate": (1, 2, 3), "rate_valid": 1}
@@ -71,7 +75,8 @@ NORM_SQ = 129_000_000  # 10000² + 5000² + 2000²
 
 
 @pytest.mark.parametrize(("limits", "plausible"), [
-    ((NORM_SQ, NORM_SQ), True), ((NORM_SQ + 1, NORM_SQ + 1), False), ((32768, NORM_SQ - 1), False), ((32768, NORM_SQ), True),
+    ((NORM_SQ, NORM_SQ), True), ((NORM_SQ + 1, NORM_SQ + 1), False), ((32768, NORM_SQ - 1),
+        False), ((32768, NORM_SQ), True),
 ])
 def test_norm_against_its_plausible_range(limits, plausible):
     config = path_config(norm_min_sq=limits[0], norm_max_sq=limits[1])
@@ -89,7 +94,8 @@ def test_a_waived_norm_is_reported_but_does_not_reject():
 # ---- stage 3 ----
 
 @pytest.mark.parametrize(("tolerance", "departure", "at_place"), [
-    (500, 500, True), (500, 501, False), (500, -500, True), (500, -501, False), (0, 0, True), (0, 1, False), (0, -1, False),
+    (500, 500, True), (500, 501, False), (500, -500, True), (500, -501, False), (0, 0, True), (0, 1,
+        False), (0, -1, False),
 ])
 @pytest.mark.parametrize("cycle_start", [5_000_000, 2**32 - 40_000, 2**32 - 39_600])
 def test_place_in_the_cycle(tolerance, departure, at_place, cycle_start):
@@ -189,7 +195,9 @@ def test_factor_by_hand(period, interval, factor):
 
 
 def test_factor_over_all_periods_at_both_ends_of_the_interval():
-    """The checks of the named values hold for every leading part of a period, with the bits below it 0 or 1."""
+    """The checks of the named values hold for every leading part of a period, with the bits below it 0 or
+    1.
+    """
     for k in (0, 1, 9):
         for leading in range(2**14, 2**15):
             for period in {leading << k, (leading + 1 << k) - 1}:
@@ -222,12 +230,14 @@ def test_interval_limits(period, interval, bit):
 def test_derivative_by_hand():
     x, y, z = FIELD
     _, trace, _ = flown(120_000, (x + 300, y - 300, z + 1))
-    assert trace["derivative"] == {"interval_us": 120_000, "factor": 13653, "derivative": (250, -250, 1), "valid": 1}
+    assert trace["derivative"] == {"interval_us": 120_000, "factor": 13653, "derivative": (250, -250, 1),
+        "valid": 1}
     _, trace, _ = flown(100_000, (x + 300, y - 300, z))
     assert trace["derivative"]["derivative"] == (300, -300, 0)
 
 
-@pytest.mark.parametrize(("change", "derivative", "clamped"), [(32767, 32767, 0), (32768, 32767, 1), (40_000, 32767, 1)])
+@pytest.mark.parametrize(("change", "derivative", "clamped"),
+    [(32767, 32767, 0), (32768, 32767, 1), (40_000, 32767, 1)])
 @pytest.mark.parametrize("sign", [1, -1])
 def test_derivative_saturates_and_says_so(change, derivative, clamped, sign):
     _, trace, status = flown(100_000, (sign * (change - 16_000), 0, 0), (-16_000 * sign, 0, 0))
@@ -241,7 +251,8 @@ def test_interval_is_taken_across_the_wrap_of_the_stamp():
         cycle_start_us=early - 40_000, sample_us=early, switch_off_us=(early - 60_000,) * 3))
     _, trace, _ = sense(state, inputs=path_inputs(
         cycle_start_us=30_000, sample_us=late, switch_off_us=(20_000,) * 3, mag_raw=(10_100, -5_000, 2_000)))
-    assert trace["derivative"] == {"interval_us": 100_000, "factor": 16384, "derivative": (100, 0, 0), "valid": 1}
+    assert trace["derivative"] == {"interval_us": 100_000, "factor": 16384, "derivative": (100, 0, 0),
+        "valid": 1}
 
 
 def test_a_rejected_sample_breaks_the_chain():

@@ -1,28 +1,31 @@
-"""What all tests of the mission file share: the demo's tree, and the problems that a change to it brings."""
+"""What the tests of the mission file share: a file that loads, and the problems that changes to it bring."""
 
 from __future__ import annotations
 
 import tomllib
 from collections.abc import Callable
+from pathlib import Path
 
 import pytest
 
-from pyharness.mission import MissionError, demo_path, load_mission
+from pyharness.mission import MissionError, load_mission
+
+BASE = Path(__file__).with_name("base.toml")
 
 
 @pytest.fixture
-def demo_tree() -> dict[str, object]:
-    """A fresh copy of what the demo file says."""
-    return tomllib.loads(demo_path().read_text(encoding="utf-8"))
+def base_tree() -> dict[str, object]:
+    """A fresh copy of what the file says."""
+    return tomllib.loads(BASE.read_text(encoding="utf-8"))
 
 
 @pytest.fixture
 def problems() -> Callable[[dict[str, object]], list[str]]:
-    """The problems of the demo with these overrides; none if it loads."""
+    """The problems of the file with these overrides; none if it loads."""
 
     def listed(overrides: dict[str, object]) -> list[str]:
         try:
-            load_mission(demo_path(), overrides)
+            load_mission(BASE, overrides)
         except MissionError as error:
             return error.problems
         return []

@@ -5,16 +5,18 @@ from __future__ import annotations
 import copy
 import tomllib
 from datetime import date, datetime, time, timedelta, timezone
+from pathlib import Path
 
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
-from pyharness.mission import Mission, MissionError, demo_path, load_mission
+from pyharness.mission import Mission, MissionError, load_mission
 from pyharness.mission.schema import BY_PATH
 
-RAW = demo_path().read_bytes()
-DEMO = tomllib.loads(RAW.decode())
+BASE = Path(__file__).with_name("base.toml")
+RAW = BASE.read_bytes()
+BASE_TREE = tomllib.loads(RAW.decode())
 QUICK = settings(
     max_examples=300,
     deadline=None,
@@ -32,7 +34,7 @@ def positions(tree: object, path: tuple[object, ...] = ()) -> list[tuple[object,
     return found
 
 
-POSITIONS = positions(DEMO)
+POSITIONS = positions(BASE_TREE)
 KEYS_IN_TABLES = [position for position in POSITIONS if len(position) == 2]
 ENDS = [
     value
@@ -109,7 +111,7 @@ def empty(tmp_path_factory):
 @QUICK
 @given(st.lists(CHANGES, min_size=1, max_size=6))
 def test_changed_trees(empty, changes):
-    tree = copy.deepcopy(DEMO)
+    tree = copy.deepcopy(BASE_TREE)
     for change in changes:
         apply(tree, change)
     check(load(empty, tree))
@@ -118,7 +120,7 @@ def test_changed_trees(empty, changes):
 @QUICK
 @given(st.dictionaries(st.sampled_from(KEYS_IN_TABLES), st.sampled_from(ENDS), max_size=40))
 def test_ends_of_ranges_everywhere(empty, replaced):
-    tree = copy.deepcopy(DEMO)
+    tree = copy.deepcopy(BASE_TREE)
     for (table, name), value in replaced.items():
         tree[table][name] = value
     check(load(empty, tree))

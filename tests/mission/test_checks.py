@@ -106,11 +106,11 @@ REFUSED = {
         "body.inertia_kg_m2: principal moments 0, 1.5 and 2 kg m², must each be in [1e-05, 1000] (from xx "
         "1, yy 1, zz 1.5, xy 1, xz 0, yz 0 kg m²)",
     ),
-    # ½ (3 ± 1) from the x, y block, and 3.1 > 1 + 2.
+    # ½ (3 ± 1) from the x, y block, and 3.001 > 1 + 2.
     "triangle": (
-        inertia(1.5, 1.5, 3.1, xy=0.5),
-        "body.inertia_kg_m2: principal moments 1, 2 and 3.1 kg m² violate the triangle inequality, the "
-        "greatest must be at most the sum of the others, 3 kg m² (from xx 1.5, yy 1.5, zz 3.1, xy 0.5, xz "
+        inertia(1.5, 1.5, 3.001, xy=0.5),
+        "body.inertia_kg_m2: principal moments 1, 2 and 3.001 kg m² violate the triangle inequality, the "
+        "greatest must be at most the sum of the others, 3 kg m² (from xx 1.5, yy 1.5, zz 3.001, xy 0.5, xz "
         "0, yz 0 kg m²)",
     ),
     "supply": (
@@ -213,12 +213,21 @@ ACCEPTED = {
     },
     "a fast coil": {"coil": {"z": {"blanking_ms": 4}}},
     "a bench pulse as long as the window": {"control": {"bench_limit_ms": 400}},
+    "a bench pulse as short as the shortest": {"control": {"bench_limit_ms": 0.8}},
     "most ticks": {"cycle": {"pulse_tick_us": 20, "drive_window_ms": 327.68}},
     "fewest ticks": {"cycle": {"drive_window_ms": 1.6}, "control": {"bench_limit_ms": 1.0}},
     "decimal fractions of a millisecond": {"cycle": {"period_ms": 500.003, "sample_ms": 20.002}},
+    # In binary 64.4 × 1000 is a little more than 64400.
+    "a fraction that is not binary": {"cycle": {"drive_window_ms": 64.4}, "control": {"bench_limit_ms": 50}},
     "all of the tolerance": {"cycle": {"timing_tolerance_ms": 5}},
+    "more tolerance with fast coils": {
+        "coil": {axis: {"blanking_ms": 4} for axis in "xyz"},
+        "cycle": {"compute_delay_ms": 20, "drive_window_ms": 390, "timing_tolerance_ms": 10},
+    },
     "all counts": {"magnetometer": {"counts_per_ut": 163.835}},
     "a flat plate": inertia(1.5, 1.5, 3.0, xy=0.5),
+    "the smallest body": inertia(1e-5, 1e-5, 1e-5, xy=0),
+    "the largest body": inertia(1e3, 1e3, 1e3, xy=0),
     "one supply voltage": {"supply": {"min_v": 7.4, "max_v": 7.4}},
     "the rate law": {"control": {"law": "rate"}},
     "no gyro": {"gyro": None, "control": FIELD},

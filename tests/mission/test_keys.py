@@ -50,7 +50,7 @@ def beside(key: Key, end: object, outwards: int) -> object:
 
 @pytest.mark.parametrize("side", ["low", "high"])
 @pytest.mark.parametrize("path", LIMITED)
-def test_both_sides_of_each_end(demo_tree, path, side):
+def test_both_sides_of_each_end(base_tree, path, side):
     key = BY_PATH[path]
     outwards = -1 if side == "low" else 1
     end = getattr(key.limits, side)
@@ -62,32 +62,32 @@ def test_both_sides_of_each_end(demo_tree, path, side):
         inside, outside = "x" * inside, "x" * outside
 
     value, _ = filled(key, inside)
-    put(demo_tree, path, value)
-    assert read_tree(demo_tree).problems == []
+    put(base_tree, path, value)
+    assert read_tree(base_tree).problems == []
 
     value, index = filled(key, outside)
-    put(demo_tree, path, value)
-    (problem,) = read_tree(demo_tree).problems
+    put(base_tree, path, value)
+    (problem,) = read_tree(base_tree).problems
     assert problem.startswith(f"{path}{index}: ")
     assert problem.endswith(f"must be in {key.limits}")
     assert key.unit in problem
 
 
 @pytest.mark.parametrize("path", CHOSEN)
-def test_choices_and_nothing_else(demo_tree, path):
+def test_choices_and_nothing_else(base_tree, path):
     key = BY_PATH[path]
     for choice in key.choices:
-        put(demo_tree, path, choice)
-        assert read_tree(demo_tree).problems == []
+        put(base_tree, path, choice)
+        assert read_tree(base_tree).problems == []
     for other in ("iron", "") if key.kind == "text" else (0, 2, -2):
-        put(demo_tree, path, other)
-        (problem,) = read_tree(demo_tree).problems
+        put(base_tree, path, other)
+        (problem,) = read_tree(base_tree).problems
         assert problem.startswith(f"{path}: ")
         assert all(str(choice) in problem for choice in key.choices)
 
 
 @pytest.mark.parametrize("path", BY_PATH)
-def test_wrong_types(demo_tree, path):
+def test_wrong_types(base_tree, path):
     key = BY_PATH[path]
     wrong = {
         "number": ["1", True, {}, datetime(2027, 1, 1)],
@@ -98,36 +98,36 @@ def test_wrong_types(demo_tree, path):
     }[key.kind]
     for scalar in wrong:
         value, index = (["1", scalar], "[1]") if key.shape == (2,) else filled(key, scalar)
-        put(demo_tree, path, value)
-        (problem,) = read_tree(demo_tree).problems
+        put(base_tree, path, value)
+        (problem,) = read_tree(base_tree).problems
         assert problem.startswith(f"{path}{index}: ")
         assert f", must be {key.expected(())}" in problem
 
 
 @pytest.mark.parametrize("path", SHAPED)
-def test_wrong_shapes(demo_tree, path):
+def test_wrong_shapes(base_tree, path):
     key = BY_PATH[path]
     for value in (1.0, [], [1.0] * (key.shape[0] - 1), [1.0] * (key.shape[0] + 1)):
-        put(demo_tree, path, value)
-        (problem,) = read_tree(demo_tree).problems
+        put(base_tree, path, value)
+        (problem,) = read_tree(base_tree).problems
         assert problem.startswith(f"{path}: ")
         assert f"must be {' × '.join(map(str, key.shape))} " in problem
 
 
 @pytest.mark.parametrize("value", [math.nan, math.inf, -math.inf])
 @pytest.mark.parametrize("path", [path for path in LIMITED if BY_PATH[path].kind == "number"])
-def test_numbers_are_finite(demo_tree, path, value):
+def test_numbers_are_finite(base_tree, path, value):
     filling, index = filled(BY_PATH[path], value)
-    put(demo_tree, path, filling)
-    (problem,) = read_tree(demo_tree).problems
+    put(base_tree, path, filling)
+    (problem,) = read_tree(base_tree).problems
     assert problem.startswith(f"{path}{index}: {value} ".rstrip())
 
 
 @pytest.mark.parametrize("path", BY_PATH)
-def test_absent_keys(demo_tree, path):
+def test_absent_keys(base_tree, path):
     key = BY_PATH[path]
-    remove(demo_tree, path)
-    problems = read_tree(demo_tree).problems
+    remove(base_tree, path)
+    problems = read_tree(base_tree).problems
     assert problems == ([f"{path}: missing, must be {key.expected()}"] if key.required else [])
 
 

@@ -5,17 +5,29 @@ from __future__ import annotations
 import hashlib
 from dataclasses import fields
 from datetime import datetime, timezone
+from pathlib import Path
 
 import pytest
 
 from pyharness.mission import MissionError, demo_path, load_mission, model
 from pyharness.mission.schema import BY_PATH, KEYS, OPTIONAL_TABLES
 
+BASE = Path(__file__).with_name("base.toml")
 
-def test_demo_says_what_its_file_says():
+
+def test_the_demo_loads_and_says_that_it_is_invented():
     mission = load_mission(demo_path())
-    assert mission.name == "Tern (invented demo)"
-    assert mission.source == str(demo_path())
+    assert "invented" in mission.name
+    assert all(abs(rate) >= 10.0 for rate in mission.body.tip_off_deg_s)
+    for coil in mission.coil:
+        if coil.winding:
+            assert coil.dipole_a_m2 == coil.winding.dipole_a_m2(mission.supply.nominal_v)
+
+
+def test_a_mission_says_what_its_file_says():
+    mission = load_mission(BASE)
+    assert mission.name == "Plover (invented, for tests)"
+    assert mission.source == str(BASE)
     assert mission.body.inertia_kg_m2 == (
         (0.0108, 0.0007, -0.0005),
         (0.0007, 0.0312, 0.0004),
@@ -32,7 +44,7 @@ def test_demo_says_what_its_file_says():
 
 
 def test_defaults_are_filled_in():
-    mission = load_mission(demo_path())
+    mission = load_mission(BASE)
     # A quarter of 5738.99 s, and 0.6 × 23.12 µT to 1.35 × 46.25 µT: see test_orbit for where these come from.
     assert mission.control.dwell_s == 1434.7
     assert (mission.control.field_min_ut, mission.control.field_max_ut) == (13.9, 62.4)
@@ -45,24 +57,24 @@ def test_defaults_are_filled_in():
 def test_dipole_follows_from_the_winding():
     # Copper: 0.00393 / K at 20 °C (IEC 60028, from memory). 58 Ω at 20 °C are 58 × 1.05895 = 61.4191 Ω at
     # 35 °C; 7.4 V drive 0.1204837 A through them, around 240 × 0.0072 m² = 1.728 m².
-    coil = load_mission(demo_path()).coil[2]
+    coil = load_mission(BASE).coil[2]
     assert coil.dipole_a_m2 == pytest.approx(0.2081958, abs=5e-8)
     assert coil.winding.dipole_a_m2(2 * 7.4) == pytest.approx(2 * 0.2081958, abs=1e-7)
 
 
 def test_a_pair_doubles_what_is_derived_and_not_what_is_given():
     pair = {"coil": {axis: {"mirrored_pair": True} for axis in "xyz"}}
-    single, double = load_mission(demo_path()), load_mission(demo_path(), pair)
+    single, double = load_mission(BASE), load_mission(BASE, pair)
     assert double.coil[2].dipole_a_m2 == 2.0 * single.coil[2].dipole_a_m2
     assert double.coil[0].dipole_a_m2 == single.coil[0].dipole_a_m2
 
 
 def test_gyro_may_be_left_out():
     without = {"gyro": None, "control": {"settle_by": None}}
-    mission = load_mission(demo_path(), without)
+    mission = load_mission(BASE, without)
     assert mission.gyro is None
     assert mission.control.settle_by == "field"
-    with_gyro = load_mission(demo_path(), {"control": {"settle_by": None}})
+    with_gyro = load_mission(BASE, {"control": {"settle_by": None}})
     assert with_gyro.control.settle_by == "gyro"
 
 
@@ -81,7 +93,7 @@ def test_schema_and_model_have_the_same_keys():
 
 def test_overrides_merge_replace_and_delete():
     mission = load_mission(
-        demo_path(),
+        BASE,
         {
             "body": {"tip_off_deg_s": [1, 2, 3]},
             "control": {"K_n_m_s": None, "gain": "auto"},
@@ -94,10 +106,10 @@ def test_overrides_merge_replace_and_delete():
     assert mission.gyro.range_deg_s == 120.0, "the rest of the table stays"
 
 
-def test_a_whole_file_as_overrides_is_the_same_mission(tmp_path, demo_tree):
+def test_a_whole_file_as_overrides_is_the_same_mission(tmp_path, base_tree):
     empty = tmp_path / "empty.toml"
     empty.write_bytes(b"")
-    from_tree, from_file = load_mission(empty, demo_tree), load_mission(demo_path())
+    from_tree, from_file = load_mission(empty, base_tree), load_mission(BASE)
     for part in ("body", "orbit", "supply", "coil", "magnetometer", "gyro", "cycle", "control"):
         assert getattr(from_tree, part) == getattr(from_file, part)
 
@@ -112,12 +124,12 @@ def test_overrides_are_checked_and_left_alone(problems):
 
 
 def test_digest_is_that_of_file_and_overrides():
-    raw = demo_path().read_bytes()
-    assert load_mission(demo_path()).digest == hashlib.sha256(raw).hexdigest()[:12]
-    assert load_mission(demo_path(), {}).digest == load_mission(demo_path()).digest
+    raw = BASE.read_bytes()
+    assert load_mission(BASE).digest == hashlib.sha256(raw).hexdigest()[:12]
+    assert load_mission(BASE, {}).digest == load_mission(BASE).digest
     some = {"cycle": {"sample_ms": 18.0, "blanking_ms": 50.0}, "body": {"drag_force_n": None}}
     canonical = b'{"body":{"drag_force_n":null},"cycle":{"blanking_ms":50.0,"sample_ms":18.0}}'
-    assert load_mission(demo_path(), some).digest == hashlib.sha256(raw + canonical).hexdigest()[:12]
+    assert load_mission(BASE, some).digest == hashlib.sha256(raw + canonical).hexdigest()[:12]
 
 
 @pytest.mark.parametrize(

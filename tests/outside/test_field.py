@@ -1,7 +1,8 @@
 """Geomagnetic field against published models and points, and its path through axes and interpolation."""
 
 import math
-from datetime import datetime, timezone
+from datetime import datetime, timedelta, timezone
+from functools import partial
 
 import numpy as np
 import ppigrf
@@ -26,7 +27,8 @@ def test_igrf_14_coefficients():
     """IAGA, IGRF-14 (2024), epoch 2025.0: main field in nT, and the secular variation to 2030."""
     g, h = ppigrf.ppigrf.read_shc()
     now, later = datetime(2025, 1, 1), datetime(2030, 1, 1)
-    for table, term, value, per_year in ((g, (1, 0), -29350.0, 12.6), (g, (1, 1), -1410.3, 10.0), (h, (1, 1), 4545.5, -21.5)):
+    terms = ((g, (1, 0), -29350.0, 12.6), (g, (1, 1), -1410.3, 10.0), (h, (1, 1), 4545.5, -21.5))
+    for table, term, value, per_year in terms:
         assert table.loc[now, term] == value
         assert (table.loc[later, term] - table.loc[now, term]) / 5.0 == pytest.approx(per_year, abs=1e-9)
 
@@ -40,10 +42,10 @@ class PlaceOverEarth:
         curvature = EARTH_RADIUS_M / math.sqrt(1.0 - e2 * math.sin(lat) ** 2)
         rho = (curvature + height_km * 1e3) * math.cos(lat)
         z = (curvature * (1.0 - e2) + height_km * 1e3) * math.sin(lat)
-        self.position = np.array((rho * math.cos(right_ascension), rho * math.sin(right_ascension), z))[:, None]
+        c, s = math.cos(right_ascension), math.sin(right_ascension)
+        self.position = np.array((rho * c, rho * s, z))[:, None]
         self.sidereal = math.radians(sidereal_deg)
-        north = (-math.sin(lat) * math.cos(right_ascension), -math.sin(lat) * math.sin(right_ascension), math.cos(lat))
-        east = (-math.sin(right_ascension), math.cos(right_ascension), 0.0)
+        north, east = (-math.sin(lat) * c, -math.sin(lat) * s, math.cos(lat)), (-s, c, 0.0)
         self.north_east_down = np.array((north, east, np.cross(north, east)))
 
     def state(self, seconds):
@@ -75,16 +77,16 @@ def test_all_around_the_earth_against_the_world_magnetic_model():
     for latitude in (-75.0, -40.0, -5.0, 30.0, 65.0):
         for longitude in (-150.0, -60.0, 20.0, 110.0):
             there = PlaceOverEarth(550.0, latitude, longitude, 123.0)
-            ned = there.north_east_down @ geomagnetic_field(there, np.zeros(1), datetime(2026, 1, 1))[:, 0] * 1e9
+            field = geomagnetic_field(there, np.zeros(1), datetime(2026, 1, 1))[:, 0] * 1e9
             wmm = model.calculate(glat=latitude, glon=longitude, alt=550.0, time=2026.0)
-            assert ned == pytest.approx((wmm.x, wmm.y, wmm.z), abs=0.002 * wmm.f)
+            assert there.north_east_down @ field == pytest.approx((wmm.x, wmm.y, wmm.z), abs=0.002 * wmm.f)
 
 
-@pytest.mark.parametrize(("altitude_km", "equator", "pole"), [(400, 24769, 49538), (550, 23193, 46387), (700, 21748, 43497)])
+@pytest.mark.parametrize(
+    ("altitude_km", "equator", "pole"), [(400, 24769, 49538), (550, 23193, 46387), (700, 21748, 43497)])
 def test_centred_dipole(altitude_km, equator, pole, monkeypatch):
     """B0 (a/r)³ √(1 + 3 sin²λ), figures derived; Wertz (ed.) 1978, App. H, from memory."""
-    full = ppigrf.igrf_gc
-    monkeypatch.setattr(field_module.ppigrf, "igrf_gc", lambda r, theta, phi, date: full(r, theta, phi, date, max_degree=1))
+    monkeypatch.setattr(field_module.ppigrf, "igrf_gc", partial(ppigrf.igrf_gc, max_degree=1))
     g10, g11, h11 = -29350.0, -1410.3, 4545.5
     b0 = math.hypot(g10, g11, h11)
     assert b0 == pytest.approx(29733.37, abs=0.005)
@@ -112,7 +114,7 @@ def test_interpolation_stays_close_to_the_model(altitude_km, inclination_deg):
     at = sum(cubics[:, None, power] * u[:, None, None] ** power for power in range(4))
     seconds = 1.0 + (np.arange(intervals)[:, None] + u) * spacing_s
     # The same date as the table's, the middle of the flight.
-    middle = datetime.fromtimestamp(EPOCH.timestamp() + 1.0 + intervals // 2 * spacing_s, timezone.utc).replace(tzinfo=None)
+    middle = DATE + timedelta(seconds=1.0 + intervals // 2 * spacing_s)
     trajectory = Trajectory(orbit)
     exact = geomagnetic_field(trajectory, seconds.ravel(), middle).T.reshape(*seconds.shape, 3)
     assert np.abs(at[..., FIELD] - exact).max() <= 0.014e-9

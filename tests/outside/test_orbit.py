@@ -9,7 +9,9 @@ import pytest
 from sgp4.propagation import gstime
 
 from pyharness.mission.model import Orbit
-from pyharness.plant.orbit import Trajectory, circular_rate, orbital_period
+from pyharness.plant.orbit import (
+    Trajectory, circular_rate, inclination_rad, orbital_period, semi_major_axis_m,
+)
 
 EPOCH = datetime(2027, 3, 14, 9, 30, tzinfo=timezone.utc)
 
@@ -21,7 +23,8 @@ def circular(altitude_km=550.0, inclination_deg=97.6, node_deg=40.0, latitude_de
 def verification_cases():
     """Elements and expected states of the set in AIAA 2006-6753, as the sgp4 package ships them."""
     package = resources.files("sgp4")
-    lines = [line[:69] for line in (package / "SGP4-VER.TLE").read_text("ascii").splitlines() if line[:2] in ("1 ", "2 ")]
+    lines = (package / "SGP4-VER.TLE").read_text("ascii").splitlines()
+    lines = [line[:69] for line in lines if line[:2] in ("1 ", "2 ")]
     blocks = (package / "tcppver.out").read_text("ascii").replace(" xx", "").splitlines()
     numbers, states = [], []
     for fields in map(str.split, blocks):
@@ -61,14 +64,15 @@ def julian(*date) -> float:
 @pytest.mark.parametrize(
     ("date", "degrees", "source"),
     [
-        ((1992, 8, 20, 12, 14), 152.578787810, "Vallado, Fundamentals of Astrodynamics, Ex. 3-5, from memory"),
+        ((1992, 8, 20, 12, 14), 152.57878781, "Vallado, Fundamentals of Astrodynamics, Ex. 3-5, from memory"),
         ((1987, 4, 10, 19, 21), 128.7378734, "Meeus, Astronomical Algorithms, Ex. 12.b, from memory"),
     ],
 )
 def test_greenwich_sidereal_time(date, degrees, source):
     orbit = circular(epoch=datetime(*date, tzinfo=timezone.utc))
     # A Julian date in one double resolves 40 µs, 1.7e-7°.
-    assert math.degrees(Trajectory(orbit).sidereal_angle([0.0])[0]) == pytest.approx(degrees, abs=3e-7), source
+    angle = Trajectory(orbit).sidereal_angle([0.0])[0]
+    assert math.degrees(angle) == pytest.approx(degrees, abs=3e-7), source
 
 
 def test_teme_to_earth_fixed():
@@ -87,7 +91,13 @@ def test_period_of_circular_orbits(altitude_km, period_s):
     assert orbital_period(circular(altitude_km)) == pytest.approx(period_s, abs=0.005)
 
 
-@pytest.mark.parametrize(("altitude_km", "inclination_deg"), [(400.0, 97.030), (550.0, 97.593), (700.0, 98.188)])
+def test_size_and_tilt_of_an_orbit():
+    assert semi_major_axis_m(circular(400.0)) == pytest.approx(6778137.0, abs=1e-3)
+    assert math.degrees(inclination_rad(circular(inclination_deg=51.6))) == pytest.approx(51.6)
+
+
+@pytest.mark.parametrize(
+    ("altitude_km", "inclination_deg"), [(400.0, 97.030), (550.0, 97.593), (700.0, 98.188)])
 def test_sun_synchronous_node_follows_the_sun(altitude_km, inclination_deg):
     """At these inclinations J2 turns the node by 360° a year; figures derived with cos i = −Ω̇/(1.5 J2
     (Re/a)² n)."""

@@ -80,8 +80,8 @@ def test_torque_free_asymmetric_top():
 def test_energy_and_inertial_momentum_are_kept_without_torque(rates_deg_s, seconds):
     inertia = np.array(((0.0108, 0.0007, -0.0005), (0.0007, 0.0312, 0.0004), (-0.0005, 0.0004, 0.0330)))
     n = len(rates_deg_s)
-    start = np.concatenate(
-        [state(np.array((0.5, -0.5, math.sqrt(0.5))) * rate, q=(0.5, 0.5, -0.5, 0.5)) for rate in rates_deg_s], axis=1)
+    direction = np.array((0.5, -0.5, math.sqrt(0.5)))
+    start = np.concatenate([state(direction * rate, q=(0.5, 0.5, -0.5, 0.5)) for rate in rates_deg_s], axis=1)
     end = fly([solid(inertia)] * n, start, seconds, 1.0, np.zeros((3, 3, 3, n)), np.zeros((4, 3, n)))
 
     def momentum(s):

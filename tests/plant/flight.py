@@ -14,12 +14,14 @@ def batch() -> dict:
     """Arguments of a plant whose four spacecraft differ in everything they may differ in."""
     equatorial = replace(MISSION, orbit=replace(MISSION.orbit, inclination_deg=4.0, altitude_km=410.0))
     no_gyro = replace(
-        MISSION, gyro=None, cycle=replace(MISSION.cycle, blanking_ms=40.0, drive_window_ms=380.0, pulse_tick_us=250),
+        MISSION, gyro=None,
+        cycle=replace(MISSION.cycle, blanking_ms=40.0, drive_window_ms=380.0, pulse_tick_us=250),
         coil=tuple(replace(c, time_constant_ms=4.0 + c.time_constant_ms) for c in MISSION.coil))
     return {
         "missions": [MISSION, equatorial, no_gyro, IDEAL],
         "seeds": [11, 12, 13, 14],
-        "rate_rad_s": np.radians(((12.0, 0.2, -80.0, 1.0), (-11.0, 0.1, 40.0, 30.0), (13.0, 0.0, 10.0, -45.0))),
+        "rate_rad_s": np.radians(
+            ((12.0, 0.2, -80.0, 1.0), (-11.0, 0.1, 40.0, 30.0), (13.0, 0.0, 10.0, -45.0))),
         "supply_v": np.array((7.4, 6.6, 8.4, 7.0)),
         "start_s": np.array((0.0, 1000.0, 250.5, 0.0)),
         "duration_s": 200.0,
@@ -43,7 +45,8 @@ def fly(plant: Plant, cycles: int) -> list[np.ndarray]:
         ticks[np.abs(ticks) < 200] = 0
         late = np.where(sample.gyro_counts % 5 == 0, 3, 0)
         switch_off = plant.drive(ticks, late)
-        log += [sample.mag_counts, sample.gyro_counts, switch_off, plant.attitude, plant.rate, plant.field_body]
+        log += [sample.mag_counts, sample.gyro_counts, switch_off]
+        log += [plant.attitude, plant.rate, plant.field_body]
     return log
 
 

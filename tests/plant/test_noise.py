@@ -23,7 +23,8 @@ def test_moments():
     n = x.size
     assert abs(x.mean()) < 4.0 / np.sqrt(n)
     assert x.var() == pytest.approx(1.0, abs=4.0 * np.sqrt(1.9 / n))
-    assert (x**4).mean() - 3.0 * x.var() ** 2 == pytest.approx(-0.1, abs=0.03)  # Irwin–Hall of twelve: −6/(5·12)
+    # Irwin–Hall of twelve: −6/(5 · 12).
+    assert (x**4).mean() - 3.0 * x.var() ** 2 == pytest.approx(-0.1, abs=0.03)
 
 
 def test_each_cycle_and_channel_has_values_of_its_own():

@@ -10,9 +10,10 @@ import numpy as np
 import pytest
 from numpy._core._multiarray_umath import __cpu_dispatch__ as DISPATCHED
 from scipy.integrate import solve_ivp
+from scipy.spatial.transform import Rotation
 
 from plant.flight import alone, batch, digest, fly
-from plant.tern_mission import FREE_BODY, IDEAL, MISSION
+from plant.tern_mission import FREE_BODY, IDEAL, MISSION, ideal_with
 from pyharness.plant import ConstantField, Plant
 from pyharness.plant.plant import attitude_from_seed
 
@@ -141,6 +142,17 @@ def test_counts_follow_the_truth():
         plant.drive(np.zeros((3, 1), int))
 
 
+def test_a_late_sample_sees_the_field_turned_on():
+    """2 ms at 60 °/s, against the rotation itself."""
+    fine = ideal_with(counts_per_ut=600.0, range_ut=50.0)
+    rate = np.radians((40.0, -30.0, 33.0))[:, None]
+    plant = Plant([fine], [0], field=ConstantField(FIELD), attitude=ALIGNED, rate_rad_s=rate)
+    for offset_s in (0.0, 2e-3, -2e-3):
+        turned = Rotation.from_rotvec(rate[:, 0] * offset_s).inv().apply(FIELD[:, 0])
+        assert plant.sample(np.array([offset_s])).mag_counts[:, 0] == pytest.approx(turned * 6e8, abs=0.6)
+    assert np.linalg.norm(turned - FIELD[:, 0]) * 6e8 > 30.0
+
+
 def test_reading_twice_gives_the_same_counts():
     plant = Plant([MISSION], [4], duration_s=100.0)
     first, second = plant.sample(), plant.sample()
@@ -150,8 +162,7 @@ def test_reading_twice_gives_the_same_counts():
 
 
 def test_a_pulse_is_seen_by_the_magnetometer_only_while_it_decays():
-    loud = replace(IDEAL, magnetometer=replace(
-        IDEAL.magnetometer, stray_ut_per_a_m2=((100.0, 0.0, 0.0), (0.0, 100.0, 0.0), (0.0, 0.0, 100.0))))
+    loud = ideal_with(stray_ut_per_a_m2=((100.0, 0.0, 0.0), (0.0, 100.0, 0.0), (0.0, 0.0, 100.0)))
     still = {"field": ConstantField(0.0 * FIELD), "attitude": ALIGNED, "rate_rad_s": np.zeros((3, 1))}
     full, late = np.array((4000, 0, 0))[:, None], np.array((600, 0, 0))[:, None]
     plant = Plant([loud], [0], **still)
@@ -167,8 +178,8 @@ def test_a_pulse_is_seen_by_the_magnetometer_only_while_it_decays():
 
 
 def test_remanence_is_seen_until_the_next_pulse():
-    cored = replace(IDEAL, coil=tuple(replace(c, remanence_fraction=0.01) for c in IDEAL.coil), magnetometer=replace(
-        IDEAL.magnetometer, stray_ut_per_a_m2=((1000.0, 0.0, 0.0), (0.0, 0.0, 0.0), (0.0, 0.0, 0.0))))
+    loud = ideal_with(stray_ut_per_a_m2=((1000.0, 0.0, 0.0), (0.0, 0.0, 0.0), (0.0, 0.0, 0.0)))
+    cored = replace(loud, coil=tuple(replace(c, remanence_fraction=0.01) for c in loud.coil))
     plant = Plant([cored], [0], field=ConstantField(0.0 * FIELD), rate_rad_s=np.zeros((3, 1)))
     seen = []
     for ticks in (1000, 0, 0, -1000, 0):
@@ -180,7 +191,8 @@ def test_remanence_is_seen_until_the_next_pulse():
 def test_a_dipole_along_minus_the_derivative_takes_energy_out_and_along_plus_puts_it_in():
     """m = −k dB/dt through the pulses: dB/dt = −ω × B."""
     for sign in (1, -1):
-        plant = Plant([IDEAL], [6], field=ConstantField(FIELD), rate_rad_s=np.radians((0.5, -0.4, 0.3))[:, None])
+        rate = np.radians((0.5, -0.4, 0.3))[:, None]
+        plant = Plant([IDEAL], [6], field=ConstantField(FIELD), rate_rad_s=rate)
         before = plant.energy()
         for _ in range(20):
             derivative = -np.cross(plant.rate[:, 0], plant.field_body[:, 0])[:, None]

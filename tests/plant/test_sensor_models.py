@@ -51,13 +51,15 @@ def test_no_reading_is_minus_32768():
 def test_bias_known_and_missed_add_up():
     biased = ideal_with(bias_ut=(1.0, -2.0, 0.5), bias_error_ut=(0.25, 0.5, 0.0))
     assert mag_counts(biased, ut(0.0, 0.0, 0.0)).tolist() == [100, -120, 40]
-    gyro = replace(IDEAL, gyro=replace(IDEAL.gyro, bias_deg_s=(1.0, 0.0, 0.0), bias_error_deg_s=(0.5, -0.5, 0.0)))
+    part = replace(IDEAL.gyro, bias_deg_s=(1.0, 0.0, 0.0), bias_error_deg_s=(0.5, -0.5, 0.0))
+    gyro = replace(IDEAL, gyro=part)
     assert gyro_counts(gyro, (0.0, 0.0, 1.0)).tolist() == [360, -120, 240]
 
 
 def test_rotation_matrix_against_scipy():
     for vector in ((0.8, -0.5, 1.1), (0.0, 0.0, 0.0), (90.0, 0.0, 0.0), (-120.0, 40.0, 77.0)):
-        assert rotation_matrix(vector) == pytest.approx(Rotation.from_rotvec(rad(*vector)).as_matrix(), abs=2e-12)
+        expected = Rotation.from_rotvec(rad(*vector)).as_matrix()
+        assert rotation_matrix(vector) == pytest.approx(expected, abs=2e-12)
 
 
 def test_a_sensor_turned_about_z_reads_the_field_turned_back():

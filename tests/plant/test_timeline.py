@@ -35,7 +35,8 @@ def test_an_odd_sample_leaves_no_microsecond_out():
 
 def test_milliseconds_become_whole_microseconds():
     # 0.29 ms is 289.99999999999994 µs in binary.
-    assert Timeline.of(replace(MISSION, cycle=Cycle(100.0, 5.0, 3.0, 0.29, 60.0, 10, 0.1, 1.0))).compute_delay_us == 290
+    cycle = Cycle(100.0, 5.0, 3.0, 0.29, 60.0, 10, 0.1, 1.0)
+    assert Timeline.of(replace(MISSION, cycle=cycle)).compute_delay_us == 290
 
 
 def test_it_cannot_be_changed():

@@ -1,0 +1,103 @@
+"""The closed-loop scenarios of the golden vectors: one thing to exercise each, on the demo mission with its overrides."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateSwitchOff, LowPower
+from pyharness.exact import constants as mrd
+from pyharness.loop import Flight
+from pyharness.mission import load_mission
+from pyharness.mission.model import Vector
+from pyharness.scaling import Scaling, scale
+
+ORBIT_AND_DWELL = 14400
+"""Cycles of the long flights: 7,200 s of the demo, an orbit and a quarter."""
+
+
+@dataclass(frozen=True)
+class Scenario:
+    """A flight by name: what it is for, and how it departs from the mission."""
+
+    name: str
+    purpose: str
+    cycles: int
+    seed: int
+    overrides: dict[str, Any] = field(default_factory=dict)
+    rate_deg_s: Vector | None = None
+    along_field: bool = False
+    start_us: int = 1_000_000
+    separation_s: int = 60
+    orbit_s: float = 0.0
+    events: tuple[Event, ...] = ()
+
+    def scaling(self, mission_path: str) -> Scaling:
+        """The integers of this scenario's mission. Raises MissionError."""
+        return scale(load_mission(mission_path, self.overrides or None))
+
+    def flight(self, mission_path: str) -> Flight:
+        """The flight of this scenario. Raises MissionError."""
+        return Flight(
+            scaling=self.scaling(mission_path), cycles=self.cycles, seed=self.seed, rate_deg_s=self.rate_deg_s,
+            along_field=self.along_field, start_us=self.start_us, separation_s=self.separation_s, orbit_s=self.orbit_s,
+            events=self.events,
+        )  # fmt: skip
+
+
+def _control(**keys: Any) -> dict[str, Any]:
+    return {"control": keys}
+
+
+_RATE_LAW = _control(law="rate")
+
+LOOP = (
+    Scenario("nominal", "the mission as it stands, from hold-off into the saturated part of the detumble", 2400, 1, separation_s=0),
+    Scenario("fast-tumble", "60 °/s: large derivatives, every axis in saturation, phase lag of the sampling", 800, 2,
+             {"body": {"tip_off_deg_s": [36.0, -30.0, 37.0]}}, rate_deg_s=(36.0, -30.0, 37.0)),
+    Scenario("along-field", "spin along the field: hardly a derivative, no authority until the spin axis drifts off", 1200, 3,
+             along_field=True),
+    Scenario("slow-end", "the last degree per second: short pulses, dropped pulses, quantisation", 1200, 4,
+             rate_deg_s=(0.5, -0.4, 0.3)),
+    Scenario("per-axis", "saturation axis by axis in place of keeping the direction", 600, 5, _control(saturation="per-axis")),
+    Scenario("blanked", "coils that switch off late: samples inside the blanking time are rejected, then trusted again", 400, 6,
+             events=(LateSwitchOff(40, 120, coil=0, ticks=500), LateSwitchOff(100, 200, every=5, coil=1, ticks=300),
+                     LateSwitchOff(220, 300, every=3, coil=2, ticks=101), LateSwitchOff(300, 340, coil=2, ticks=100))),
+    Scenario("dropped-samples", "field samples missing, singly and in runs: no derivative across a gap, no pulse", 400, 7,
+             events=(DropSample(50, 51), DropSample(80, 120, every=2), DropSample(150, 180))),
+    Scenario("stamp-wrap", "the host's clock wraps through 2^32 µs during the flight", 300, 8, start_us=2**32 - 70_000_000),
+    Scenario("jitter", "samples off their time by up to the tolerance: derivative over the measured interval", 400, 9,
+             events=(Jitter(20, 300, us=2000), Jitter(320, 360, us=3000))),
+    Scenario("gyro-loss", "rate-damping law; the gyro is lost and returns, the derivative law takes over between", 600, 10, _RATE_LAW,
+             events=(DropGyro(100, 220), DropGyro(300, 340, every=2), DropSample(330, 350, every=3))),
+    Scenario("rate-normalised", "rate-damping law with its gain normalised by the field", 500, 11,
+             _control(law="rate", gain_scaling="normalised"), rate_deg_s=(3.0, -2.0, 2.5)),
+    Scenario("low-pass", "low-pass on the derivative, gain normalised by the field", 600, 12,
+             _control(low_pass_s=2.0, gain_scaling="normalised"), rate_deg_s=(4.0, 3.0, -3.5), events=(DropSample(200, 205),)),
+    Scenario("gain-least", "a gain some thousand times smaller: short pulses, dropped pulses", 300, 13,
+             _control(K_n_m_s=None, k_am2_s_per_t=60.0)),
+    Scenario("gain-greatest", "a gain near the largest that the integers carry: always saturated", 300, 14,
+             _control(K_n_m_s=None, k_am2_s_per_t=2.2e7)),
+    Scenario("settled-and-woken", "settled after a short dwell, coils off, kicked, damping again, settled again", 900, 15,
+             _control(dwell_s=60.0), rate_deg_s=(0.2, -0.1, 0.1),
+             events=(Kick(300, (1.5, -1.0, 0.5)), Kick(420, (0.1, 0.1, -0.1)))),
+    Scenario("settled-by-field", "settled by the field alone, without a gyro", 500, 16,
+             {"gyro": None, "control": {"settle_by": "field", "dwell_s": 90.0}}, rate_deg_s=(0.15, -0.2, 0.1),
+             events=(DropSample(60, 90, every=4), Kick(350, (2.0, 1.5, -1.0)))),
+    Scenario("equatorial", "equatorial orbit: the field hardly turns, one axis stays undamped", 900, 17,
+             {"orbit": {"inclination_deg": 0.5}}, rate_deg_s=(4.0, -3.0, 3.0)),
+    Scenario("polar-north", "over the pole, where the field is strongest", 400, 18, orbit_s=1400.0),
+    Scenario("commands", "hold-off, low power, inhibit, safe, bench and resume, and commands that are refused", 420, 19, separation_s=10,
+             events=(LowPower(20, 30), LowPower(80, 100), Command(120, mrd.MRD_COMMAND_INHIBIT), Command(140, mrd.MRD_COMMAND_RESUME),
+                     Command(150, mrd.MRD_COMMAND_RESUME), Command(160, mrd.MRD_COMMAND_ARM, key=0x5AA5),
+                     Command(180, mrd.MRD_COMMAND_SAFE), Command(200, mrd.MRD_COMMAND_ARM, key=1),
+                     Command(210, mrd.MRD_COMMAND_ARM, key=0x5AA5), Command(215, mrd.MRD_COMMAND_BENCH, coil=0, ticks=1000),
+                     Command(220, mrd.MRD_COMMAND_BENCH, coil=1, ticks=-400), Command(225, mrd.MRD_COMMAND_BENCH, coil=2, ticks=1001),
+                     Command(230, mrd.MRD_COMMAND_BENCH, coil=3, ticks=10), Command(235, mrd.MRD_COMMAND_INHIBIT),
+                     Command(240, mrd.MRD_COMMAND_RESUME), Command(260, 9))),
+)  # fmt: skip
+
+LONG = (
+    Scenario("demo", "the mission as it stands, until it has settled", ORBIT_AND_DWELL, 1, separation_s=0),
+    Scenario("demo-along-field", "the same, starting with the spin along the field", ORBIT_AND_DWELL, 2, along_field=True, separation_s=0),
+)  # fmt: skip

@@ -1,0 +1,284 @@
+"""Unit vectors: short runs of made inputs, a stage or two each, for whoever ports a stage.
+
+The inputs are chosen on either side of every boundary of the arithmetic document, or drawn from the raw PCG64 stream.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from pyharness.exact import constants as mrd
+from pyharness.mission import load_mission
+from pyharness.scaling import Config, Scaling, scale
+
+WRAP = 2**32
+START_US = 5_000_000
+QUIET_FIELD = (1500, -1200, 1800)
+"""Raw counts of a plausible field."""
+
+
+@dataclass(frozen=True)
+class Unit:
+    """One file of unit vectors: `fill` sets the inputs (rows,), which start as quiet cycles, for a configuration."""
+
+    name: str
+    purpose: str
+    rows: int
+    fill: Callable[[np.ndarray, Config, int], None]
+    seed: int = 0
+    overrides: dict[str, Any] = field(default_factory=dict)
+
+    def scaling(self, mission_path: str) -> Scaling:
+        """The integers these vectors are for. Raises MissionError."""
+        return scale(load_mission(mission_path, self.overrides or None))
+
+    def inputs(self, config: Config, dtype: np.dtype) -> np.ndarray:
+        """The inputs, (rows,) records."""
+        inputs = quiet_cycles(self.rows, config["path"], dtype)
+        self.fill(inputs, config, self.seed)
+        return inputs
+
+
+def quiet_cycles(rows: int, path: Config, dtype: np.dtype) -> np.ndarray:
+    """Cycles on time, with a steady field, no rate, all coils long off and hold-off over."""
+    inputs = np.zeros(rows, dtype)
+    start = START_US + np.arange(rows, dtype=np.int64) * path["period_us"]
+    cycle = inputs["path"]
+    cycle["cycle_start_us"] = start % WRAP
+    cycle["sample_us"] = (start + path["phase_us"]) % WRAP
+    cycle["switch_off_us"] = ((start - path["half_sample_us"] - 1) % WRAP)[:, None]
+    cycle["mag_raw"] = QUIET_FIELD
+    cycle["mag_valid"] = cycle["gyro_valid"] = 1
+    inputs["separation_s"] = 4000
+    _refresh_stamps(inputs, path)
+    return inputs
+
+
+def _refresh_stamps(inputs: np.ndarray, path: Config) -> None:
+    """Every coil just old enough at each sample: stamped anew in each cycle, as after a pulse."""
+    blanking = np.array(path["blanking_us"], dtype=np.int64)
+    start = inputs["path"]["sample_us"].astype(np.int64)[:, None] - path["half_sample_us"]
+    inputs["path"]["switch_off_us"] = (start - blanking) % WRAP
+
+
+def _corners(limit: int) -> list[int]:
+    return [0, 1, -1, 2, -2, limit - 1, 1 - limit, limit, -limit, 32766, 32767, -32767, -32768]
+
+
+def _calibration(inputs: np.ndarray, config: Config, seed: int) -> None:
+    path = config["path"]
+    row = 0
+    for sensor, name in (("mag", "mag_raw"), ("gyro", "gyro_raw")):
+        for axis in range(3):
+            for value in _corners(path[sensor]["limit"]):
+                inputs["path"][name][row, axis] = value
+                row += 1
+        for value in _corners(path[sensor]["limit"]):
+            inputs["path"][name][row] = value
+            row += 1
+    inputs["path"]["gyro_valid"][row] = 0
+    inputs["path"]["mag_valid"][row + 1] = 0
+
+
+def _plausibility(inputs: np.ndarray, config: Config, seed: int) -> None:
+    path = config["path"]
+    per_count = path["mag"]["matrix"][0] / 2 ** path["mag"]["shift"]
+    bounds = [round(path[key] ** 0.5 / per_count) for key in ("norm_min_sq", "norm_max_sq")]
+    values = [bound + step for bound in bounds for step in range(-20, 20)]
+    inputs["path"]["mag_raw"][:, 0] = values[: len(inputs)]
+    inputs["path"]["mag_raw"][:, 1:] = 0
+
+
+def _blanking(inputs: np.ndarray, config: Config, seed: int) -> None:
+    path = config["path"]
+    start = inputs["path"]["sample_us"].astype(np.int64) - path["half_sample_us"]
+    row = 0
+    for coil in range(3):
+        blanking = path["blanking_us"][coil]
+        for age in (blanking - 1, blanking, blanking + 1, 0, -1, 2**31 - 1, 2**31, 2**31 + 1, WRAP - 1, blanking):
+            inputs["path"]["switch_off_us"][row, coil] = (start[row] - age) % WRAP
+            row += 1
+    # Stamps that do not change: once clear they stay clear; after a pulse they do not count.
+    inputs["path"]["switch_off_us"][row : row + 12] = inputs["path"]["switch_off_us"][row]
+    _turn_field(inputs, row + 4, row + 8)
+    row += 12
+    # Off its place in the cycle by the tolerance, and by one more.
+    for late in (path["tolerance_us"], path["tolerance_us"] + 1, -path["tolerance_us"], -path["tolerance_us"] - 1):
+        inputs["path"]["sample_us"][row] = (int(inputs["path"]["sample_us"][row]) + late) % WRAP
+        row += 2
+
+
+def _turn_field(inputs: np.ndarray, first: int, end: int) -> None:
+    """A field that moves from cycle to cycle, so that the law asks for pulses."""
+    for row in range(first, end):
+        inputs["path"]["mag_raw"][row] = (QUIET_FIELD[0] + 90 * (row - first + 1), QUIET_FIELD[1], QUIET_FIELD[2] - 70)
+
+
+def _derivative(inputs: np.ndarray, config: Config, seed: int) -> None:
+    path = config["path"]
+    period = path["period_us"]
+    intervals = [period, (period + 1) // 2 - 1, (period + 1) // 2, (period + 1) // 2 + 1, period - 1, period, period + 1,
+                 period + period // 2 - 1, period + period // 2, period + period // 2 + 1, 2 * period, 0, 1, WRAP - 1, period]
+    fields = [(1500, -1200, 1800), (1501, -1203, 1790), (-1500, 1200, -1800), (3000, 2000, -3000), (-3000, -2000, 3000)]
+    sample = START_US + path["phase_us"]
+    for row in range(len(inputs)):
+        sample += intervals[row % len(intervals)]
+        inputs["path"]["sample_us"][row] = sample % WRAP
+        inputs["path"]["cycle_start_us"][row] = (sample - path["phase_us"]) % WRAP
+        inputs["path"]["mag_raw"][row] = fields[row // 3 % len(fields)]
+    _refresh_stamps(inputs, path)
+
+
+def _low_pass(inputs: np.ndarray, config: Config, seed: int) -> None:
+    raw = inputs["path"]["mag_raw"].astype(np.int64)
+    row = np.arange(len(inputs))
+    ramp = np.where(row < 40, 12 * row, np.where(row < 90, 480, np.where(row < 130, 480 - 7 * (row - 90), 200)))
+    raw[:, 0] += ramp
+    raw[:, 1] -= ramp // 3
+    raw[150:, 2] += np.where(row[150:] % 2 == 0, 1, 0)
+    inputs["path"]["mag_raw"] = raw
+    inputs["path"]["mag_valid"][135] = 0
+
+
+def _sweep(largest: int) -> list[int]:
+    """Raw rates from 1 to the largest, each a little more than the last, with both signs."""
+    values, value = [], 1
+    while value < largest:
+        values += [value, -value]
+        value = value + 1 + value // 6
+    return values
+
+
+def _saturation(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Demand on x, y, z alone and on all together, from nothing to far beyond the limit."""
+    sweep = _sweep(config["path"]["gyro"]["limit"])
+    row = 0
+    for field_axis, rate_axis in ((2, 1), (0, 2), (1, 0)):  # ω × B on x, y, z
+        for value in sweep:
+            inputs["path"]["mag_raw"][row] = 0
+            inputs["path"]["mag_raw"][row, field_axis] = 2600
+            inputs["path"]["gyro_raw"][row, rate_axis] = value
+            row += 1
+    for value in sweep:
+        inputs["path"]["mag_raw"][row] = (1700, -1500, 1300)
+        inputs["path"]["gyro_raw"][row] = (value, value // 2, -value // 3)
+        row += 1
+
+
+def _saturation_rows() -> int:
+    return 4 * len(_sweep(28800))
+
+
+def _pulses(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Commands around the shortest pulse, count by count of the gyro."""
+    for row in range(len(inputs)):
+        axis = row // 60 % 3
+        inputs["path"]["mag_raw"][row] = 0
+        inputs["path"]["mag_raw"][row, (axis + 2) % 3] = 2600
+        inputs["path"]["gyro_raw"][row, (axis + 1) % 3] = (row % 60) - 30
+
+
+def _modes(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Every command in every mode, with and without low power; the field moves, so that pulses are asked for."""
+    key, limit = config["supervisor"]["bench_key"], config["supervisor"]["bench_limit_ticks"]
+    rows = iter(range(len(inputs)))
+
+    def give(code: int, **values: int) -> None:
+        row = next(rows)
+        inputs["command"][row] = code
+        for name, value in values.items():
+            inputs[name][row] = value
+
+    reach = {
+        "hold-off": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {"separation_s": 0})],
+        "damping": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {})],
+        "safe": [(mrd.MRD_COMMAND_SAFE, {})],
+        "inhibit": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {}), (mrd.MRD_COMMAND_INHIBIT, {})],
+        "bench": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_ARM, {"command_key": key})],
+    }
+    for steps in reach.values():
+        for code in (0, 1, 2, 3, 4, 5, 6, 65535):
+            for low_power in (0, 1):
+                for step, values in steps:
+                    give(step, **values)
+                give(code, low_power=low_power, command_key=key, command_coil=1, command_ticks=-limit)
+    for coil, ticks in ((0, 1), (1, -1), (2, limit), (0, limit + 1), (0, -limit - 1), (3, 5), (65535, 5), (1, 0), (2, -32768)):
+        give(mrd.MRD_COMMAND_SAFE)
+        give(mrd.MRD_COMMAND_ARM, command_key=key)
+        give(mrd.MRD_COMMAND_BENCH, command_coil=coil, command_ticks=ticks)
+    give(mrd.MRD_COMMAND_SAFE)
+    give(mrd.MRD_COMMAND_ARM, command_key=key ^ 1)
+    first_spare = next(rows)
+    inputs["command"][first_spare:] = 0
+    inputs["separation_s"][first_spare:] = np.arange(len(inputs) - first_spare)
+    row = np.arange(len(inputs))
+    inputs["path"]["mag_raw"][:, 0] = QUIET_FIELD[0] + 60 * (row % 7)
+    inputs["path"]["mag_raw"][:, 1] = QUIET_FIELD[1] - 40 * (row % 5)
+
+
+def _random(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Mostly plausible cycles with wild values among them; stamps, validity and commands are drawn too."""
+    path = config["path"]
+    draw = _draws(seed)
+    pick = lambda items: items[next(draw) % len(items)]  # noqa: E731
+    for row in range(len(inputs)):
+        cycle = inputs["path"]
+        for name, sensor, size in (("mag_raw", "mag", 2600), ("gyro_raw", "gyro", 12000)):
+            for axis in range(3):
+                wild = next(draw) % 97 == 0
+                cycle[name][row, axis] = pick(_corners(path[sensor]["limit"])) if wild else next(draw) % (2 * size) - size
+        if next(draw) % 3 == 0 and row:  # slow change, so that demands below saturation occur
+            near = cycle["mag_raw"][row - 1].astype(np.int64) + [next(draw) % 9 - 4 for _ in range(3)]
+            cycle["mag_raw"][row] = np.clip(near, -32768, 32767)
+        cycle["mag_valid"][row] = next(draw) % 29 != 0
+        cycle["gyro_valid"][row] = next(draw) % 11 != 0
+        if next(draw) % 17 == 0:
+            cycle["sample_us"][row] = (int(cycle["sample_us"][row]) + next(draw) % 6001 - 3000) % WRAP
+        if next(draw) % 13 == 0:
+            coil = next(draw) % 3
+            cycle["switch_off_us"][row, coil] = (int(cycle["switch_off_us"][row, coil]) + next(draw) % 20001 - 10000) % WRAP
+        if next(draw) % 61 == 0:
+            inputs["low_power"][row] = 1
+        if next(draw) % 53 == 0:
+            inputs["command"][row] = next(draw) % 7
+            inputs["command_key"][row] = pick((config["supervisor"]["bench_key"], 0, 1))
+            inputs["command_coil"][row] = next(draw) % 4
+            inputs["command_ticks"][row] = next(draw) % 2400 - 1200
+        elif next(draw) % 19 == 0:
+            inputs["command"][row] = mrd.MRD_COMMAND_RESUME
+
+
+def _draws(seed: int) -> Iterable[int]:
+    generator = np.random.PCG64(seed)
+    while True:
+        yield from (int(word) >> 11 for word in generator.random_raw(4096))
+
+
+_RATE = {"control": {"law": "rate"}}
+_SLOW_RATE = {"control": {"law": "rate", "K_n_m_s": 4.0e-6}}
+
+UNIT = (
+    Unit("calibration", "stage 1: every sensor axis at and around its limits", 108, _calibration),
+    Unit("plausibility", "stage 2: the norm of the field on either side of its bounds", 80, _plausibility),
+    Unit("gate", "stage 3: ages on either side of the blanking time and of 2^31 µs, stamps that do not change, place in the cycle", 54,
+         _blanking),
+    Unit("derivative", "stage 4: intervals on either side of half a period and one and a half, large changes", 60, _derivative),
+    Unit("low-pass", "stage 5: steps, ramps, single counts and a restart of the filter", 200, _low_pass,
+         overrides={"control": {"low_pass_s": 3.0}}),
+    Unit("saturation-per-axis", "stages 6 and 7: demand on each axis and all together, axis by axis", _saturation_rows(), _saturation,
+         overrides={"control": {"law": "rate", "saturation": "per-axis", "K_n_m_s": 4.0e-5}}),
+    Unit("saturation-keep-direction", "stages 6 and 7: the same demands, keeping the direction", _saturation_rows(), _saturation,
+         overrides={"control": {"law": "rate", "K_n_m_s": 4.0e-5}}),
+    Unit("pulses", "stage 8: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
+    Unit("modes", "modes: every command in every mode, with and without low power; hold-off runs out at the end", 360, _modes),
+    Unit("random-derivative", "whole steps of the derivative law, drawn", 500, _random, seed=101),
+    Unit("random-rate", "whole steps of the rate-damping law, drawn", 500, _random, seed=102, overrides=_RATE),
+    Unit("random-derivative-normalised", "whole steps, gain normalised by the field, low-pass, axis by axis, drawn", 500, _random, seed=103,
+         overrides={"control": {"gain_scaling": "normalised", "saturation": "per-axis", "low_pass_s": 1.5}}),
+    Unit("random-rate-normalised", "whole steps of the rate-damping law, gain normalised by the field, drawn", 500, _random, seed=104,
+         overrides={"control": {"law": "rate", "gain_scaling": "normalised"}}),
+)  # fmt: skip

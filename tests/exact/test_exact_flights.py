@@ -1,0 +1,155 @@
+"""Whole steps on any legal configuration and any inputs, and the strategies themselves."""
+
+from collections import Counter
+from copy import deepcopy
+
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from pyharness.exact import (
+    FIELDS, RANGES, init, path_check, path_commit, path_drive, path_reset, path_sense, reset,
+)
+from pyharness.exact.constants import (
+    MRD_GAIN_NORMALISED, MRD_LAW_RATE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_OK, MRD_S_BLANKED,
+    MRD_S_COMMAND_REFUSED, MRD_S_CONFIG_CORRUPT, MRD_S_COUNT, MRD_S_FELL_BACK, MRD_S_STATE_RESTARTED,
+)
+from tests.exact.samples import fly, make_config, make_inputs, make_state
+from tests.strategies import Seeded, any_config, any_inputs, configs, flights, path_configs
+
+
+def elements(record, fields):
+    for field in fields:
+        value = record
+        for part in field.name.split("."):
+            value = value[part]
+        if field.count > 1:
+            assert isinstance(value, tuple) and len(value) == field.count, field.name
+        for element in value if field.count > 1 else (value,):
+            yield field, element
+
+
+def shape(record):
+    """Names of a record and of what is nested in it."""
+    return {name: shape(value) for name, value in record.items() if isinstance(value, dict)} | {
+        name: None for name, value in record.items() if not isinstance(value, dict)}
+
+
+@settings(max_examples=60, deadline=None)
+@given(flights())
+def test_outputs_and_state_are_complete_in_range_and_arguments_unchanged(flight):
+    config, sequence = flight
+    before = deepcopy((config, sequence))
+    state = reset()
+    first = shape(state)
+    for inputs in sequence:
+        kept = deepcopy(state)
+        after, (out,) = fly(config, [inputs], state)
+        assert state == kept and shape(after) == first
+        for field, element in elements(out, FIELDS["outputs"]):
+            assert type(element) is int and field.lo <= element <= field.hi, field.name
+        for field, element in elements(after, FIELDS["state"]):
+            assert type(element) is int and RANGES["state." + field.name].lo <= element <= RANGES["state." + field.name].hi
+        state = after
+    assert (config, sequence) == before
+
+
+@settings(max_examples=60, deadline=None)
+@given(flights(), st.integers(0, 8))
+def test_a_run_in_two_parts_equals_the_whole_run(flight, cut):
+    config, sequence = flight
+    whole_state, whole = fly(config, sequence)
+    state, first = fly(config, sequence[:cut])
+    state, second = fly(config, sequence[cut:], state)
+    assert (state, first + second) == (whole_state, whole)
+
+
+@settings(max_examples=60, deadline=None)
+@given(flights())
+def test_counters_count_what_the_status_says(flight):
+    config, sequence = flight
+    state, outputs = fly(config, sequence)
+    trusted = sum(out["trace"]["gate"]["trusted"] for out in outputs)
+
+    def cycles(bit):
+        return sum(out["status"] >> bit & 1 for out in outputs)
+
+    assert state["counters"] == outputs[-1]["counters"] == {
+        "trusted": trusted, "rejected": len(outputs) - trusted, "blanked": cycles(MRD_S_BLANKED),
+        "fell_back": cycles(MRD_S_FELL_BACK), "refused": cycles(MRD_S_COMMAND_REFUSED), "restarts": 0,
+    }
+
+
+@settings(max_examples=60, deadline=None)
+@given(flights())
+def test_a_step_is_the_path_with_the_modes_around_it(flight):
+    config, sequence = flight
+    state, path = reset(), path_reset()
+    for inputs in sequence:
+        waive = state["mode"] == MRD_MODE_BENCH
+        path, trace, sensed = path_sense(path, config["path"], inputs["path"], waive)
+        trace, driven = path_drive(config["path"], trace)
+        state, (out,) = fly(config, [inputs], state)
+        path = path_commit(path, out["ticks"])
+        assert (out["trace"], state["path"]) == (trace, path)
+        assert out["status"] & (sensed | driven) == sensed | driven
+        assert out["ticks"] == trace["pulses"]["ticks"] or out["mode"] != MRD_MODE_DAMPING
+
+
+def test_counters_stop():
+    full = {f"counters.{name}": 65535
+        for name in ("trusted", "rejected", "blanked", "fell_back", "refused", "restarts")}
+    state, _ = fly(make_config({"path.law": MRD_LAW_RATE}), [
+        make_inputs(1, {"command": 99, "path.gyro_valid": 0}), make_inputs(2,
+            {"path.mag_valid": 0})], make_state(full))
+    assert set(state["counters"].values()) == {65535}
+
+
+def test_stamps_wrap_without_a_trace():
+    """The same flight, begun early and just before the wrap, differs in no output."""
+    runs = []
+    for offset in (0, 2**32 - 1_250_000):
+        sequence = []
+        for k in range(6):
+            inputs = make_inputs(k, {"path.mag_raw": (10_000 + 100 * k, -5_000, 2_000)})
+            stamps = {name: (inputs["path"][name] + offset) % 2**32
+                for name in ("cycle_start_us", "sample_us")}
+            stamps["switch_off_us"] = tuple((stamp + offset) % 2**32
+                for stamp in inputs["path"]["switch_off_us"])
+            sequence.append({**inputs, "path": {**inputs["path"], **stamps}})
+        runs.append(fly(make_config(), sequence)[1])
+    assert runs[0] == runs[1] and runs[0][-1]["trace"]["derivative"]["derivative"] == (100, 0, 0)
+
+
+# ---- the strategies ----
+
+@settings(max_examples=100, deadline=None)
+@given(configs())
+def test_every_configuration_drawn_is_legal(config):
+    assert init(config) == MRD_OK
+
+
+@settings(max_examples=50, deadline=None)
+@given(path_configs())
+def test_every_configuration_of_a_path_drawn_is_legal(path):
+    assert path_check(path) == MRD_OK
+
+
+def test_sequences_reach_the_deep_stages():
+    """Shares of cycles; every status bit of a sound controller is seen."""
+    seen, bits, rows = Counter(), set(), 0
+    for seed in range(150):
+        source = Seeded(seed)
+        config = any_config(source)
+        for out in fly(config, any_inputs(source, config, 20))[1]:
+            rows += 1
+            trace = out["trace"]
+            acted = trace["law"]["active"]
+            seen["derivative"] += trace["derivative"]["valid"]
+            seen["saturated"] += bool(out["status"] >> 13 & 7)
+            seen["rate law"] += acted == MRD_LAW_RATE
+            seen["normalised"] += bool(acted) and config["path"]["gain_scaling"] == MRD_GAIN_NORMALISED
+            seen["pulses"] += any(out["ticks"])
+            bits |= {bit for bit in range(MRD_S_COUNT) if out["status"] >> bit & 1}
+    shares = {name: count / rows for name, count in seen.items()}
+    assert shares["derivative"] > 0.4 and min(shares.values()) > 0.1, shares
+    assert set(range(MRD_S_COUNT)) - bits == {MRD_S_STATE_RESTARTED, MRD_S_CONFIG_CORRUPT}

@@ -1,0 +1,198 @@
+"""Every mode with every command, low power and separation, from a table written from the one in mrd.h."""
+
+from itertools import product
+
+import pytest
+
+from pyharness.exact.constants import (
+    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_INHIBIT, MRD_COMMAND_NONE, MRD_COMMAND_RESUME,
+    MRD_COMMAND_SAFE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_INHIBIT, MRD_MODE_SAFE,
+    MRD_MODE_SETTLED, MRD_S_COMMAND_REFUSED, MRD_S_FIELD_IMPLAUSIBLE,
+)
+from pyharness.exact.modes import MODES, advance
+from tests.exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state
+
+HOLD_OFF, DAMPING, SETTLED = MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED
+SAFE, INHIBIT, BENCH = MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH
+
+# Mode and command, then the mode after the step in four situations:
+# power good and early, power good and separated, low power and early, low power and separated. None: refused.
+NONE_ROWS = {
+    HOLD_OFF: (HOLD_OFF, DAMPING, INHIBIT, INHIBIT),
+    DAMPING: (DAMPING, DAMPING, INHIBIT, INHIBIT),
+    SETTLED: (SETTLED, SETTLED, INHIBIT, INHIBIT),
+    SAFE: (SAFE, SAFE, SAFE, SAFE),
+    INHIBIT: (HOLD_OFF, DAMPING, INHIBIT, INHIBIT),
+    BENCH: (BENCH, BENCH, BENCH, BENCH),
+}
+STAY_SAFE, STAY_INHIBITED = (SAFE,) * 4, (INHIBIT,) * 4
+RESUMED = (HOLD_OFF, DAMPING, INHIBIT, INHIBIT)
+ACCEPTED = {
+    **{(mode, MRD_COMMAND_NONE): row for mode, row in NONE_ROWS.items()},
+    **{(mode, MRD_COMMAND_SAFE): STAY_SAFE for mode in MODES},
+    (HOLD_OFF, MRD_COMMAND_INHIBIT): STAY_INHIBITED,
+    (DAMPING, MRD_COMMAND_INHIBIT): STAY_INHIBITED,
+    (SETTLED, MRD_COMMAND_INHIBIT): STAY_INHIBITED,
+    (INHIBIT, MRD_COMMAND_INHIBIT): STAY_INHIBITED,
+    (SAFE, MRD_COMMAND_RESUME): RESUMED,
+    (INHIBIT, MRD_COMMAND_RESUME): RESUMED,
+    (BENCH, MRD_COMMAND_RESUME): RESUMED,
+    (SAFE, MRD_COMMAND_ARM): (BENCH,) * 4,
+    (BENCH, MRD_COMMAND_BENCH): (BENCH, BENCH, None, None),
+}
+SITUATIONS = tuple(product((0, 1), (599, 600)))
+PULSE = {"command_key": 4242, "command_coil": 1, "command_ticks": -7}
+
+
+def one(state=None, inputs=None, config=None):
+    """State and outputs of one step."""
+    after, (out,) = fly(make_config(config), [make_inputs(changes=inputs)], make_state(state))
+    return after, out
+
+
+@pytest.mark.parametrize("command", range(7))
+@pytest.mark.parametrize("mode", MODES)
+def test_mode_table(mode, command):
+    row = ACCEPTED.get((mode, command), (None,) * 4)
+    for (low_power, separation_s), expected, unaided in zip(SITUATIONS, row, NONE_ROWS[mode]):
+        state, out = one({"mode": mode, "dwell": 1}, {
+            "low_power": low_power, "separation_s": separation_s, "command": command, **PULSE})
+        refused = expected is None
+        assert out["mode"] == state["mode"] == (unaided if refused else expected)
+        assert out["status"] >> MRD_S_COMMAND_REFUSED & 1 == refused
+        assert state["counters"]["refused"] == refused
+        assert state["inhibit_commanded"] == (command == MRD_COMMAND_INHIBIT and not refused)
+        assert out["ticks"] == ((0, -7, 0) if command == MRD_COMMAND_BENCH and not refused else (0, 0, 0))
+        assert out["handover"] == (out["mode"] == SETTLED)
+        assert state["dwell"] == (1 if state["mode"] == mode else 0)
+
+
+@pytest.mark.parametrize("command", range(7))
+def test_a_commanded_inhibit_stays_until_it_is_lifted(command):
+    for low_power, separation_s in SITUATIONS:
+        state, out = one({"mode": INHIBIT, "inhibit_commanded": 1}, {
+            "low_power": low_power, "separation_s": separation_s, "command": command, **PULSE})
+        if command == MRD_COMMAND_SAFE:
+            expected = SAFE
+        elif command == MRD_COMMAND_RESUME:
+            expected = INHIBIT if low_power else DAMPING if separation_s == 600 else HOLD_OFF
+        else:
+            expected = INHIBIT
+        assert out["mode"] == expected
+        assert state["inhibit_commanded"] == (command not in (MRD_COMMAND_SAFE, MRD_COMMAND_RESUME))
+
+
+@pytest.mark.parametrize("mode", [0, 1, 2, 4, 7, 11, 13, 65535])
+def test_a_value_that_is_no_mode_counts_as_safe(mode):
+    assert one({"mode": mode})[1]["mode"] == SAFE
+    assert one({"mode": mode}, {"command": MRD_COMMAND_RESUME})[1]["mode"] == DAMPING
+    assert one({"mode": mode}, {"command": MRD_COMMAND_INHIBIT})[1]["status"] >> MRD_S_COMMAND_REFUSED & 1
+
+
+@pytest.mark.parametrize(("key", "mode"), [(4242, BENCH), (4241, SAFE), (0, SAFE), (4243, SAFE)])
+def test_arming_needs_the_key(key, mode):
+    _, out = one({"mode": SAFE}, {"command": MRD_COMMAND_ARM, "command_key": key})
+    assert (out["mode"], out["status"] >> MRD_S_COMMAND_REFUSED & 1) == (mode, mode == SAFE)
+
+
+@pytest.mark.parametrize(("changes", "ticks"), [
+    ({"command_coil": 0, "command_ticks": 1}, (1, 0, 0)),
+    ({"command_coil": 2, "command_ticks": 1000}, (0, 0, 1000)),  # coil current: no polarity
+    ({"command_coil": 2, "command_ticks": -1000}, (0, 0, -1000)),
+    ({"command_coil": 3, "command_ticks": 1}, None),
+    ({"command_coil": 65535, "command_ticks": 1}, None),
+    ({"command_coil": 0, "command_ticks": 0}, None),
+    ({"command_coil": 0, "command_ticks": 1001}, None),
+    ({"command_coil": 0, "command_ticks": -1001}, None),
+    ({"command_coil": 0, "command_ticks": -32768}, None),
+    ({"command_coil": 0, "command_ticks": 1, "low_power": 1}, None),
+])
+def test_limits_of_a_bench_pulse(changes, ticks):
+    state, out = one({"mode": BENCH}, {"command": MRD_COMMAND_BENCH, **changes})
+    assert out["mode"] == BENCH
+    assert out["ticks"] == state["path"]["ticks"] == (ticks or (0, 0, 0))
+    assert out["status"] >> MRD_S_COMMAND_REFUSED & 1 == (ticks is None)
+
+
+def test_a_bench_pulse_lasts_one_cycle():
+    sequence = [make_inputs(1, {"command": MRD_COMMAND_BENCH, **PULSE}), make_inputs(2)]
+    _, outputs = fly(make_config(), sequence, make_state({"mode": BENCH}))
+    assert [out["ticks"] for out in outputs] == [(0, -7, 0), (0, 0, 0)]
+
+
+def test_on_the_bench_the_norm_is_waived_and_no_pulse_of_the_law_leaves():
+    config = {"path.norm_max_sq": 32768}
+    sequence = [make_inputs(1), make_inputs(2, {"path.mag_raw": tuple(x + 100 for x in FIELD)})]
+    for mode, trusted in ((BENCH, 1), (SAFE, 0)):
+        _, outputs = fly(make_config(config), sequence, make_state({"mode": mode}))
+        assert [out["trace"]["gate"]["trusted"] for out in outputs] == [trusted] * 2
+        assert all(out["status"] >> MRD_S_FIELD_IMPLAUSIBLE & 1 for out in outputs)
+        assert any(outputs[1]["trace"]["pulses"]["ticks"]) == trusted and outputs[1]["ticks"] == (0, 0, 0)
+    # the norm is waived by the mode before the command
+    _, out = one({"mode": SAFE}, {"command": MRD_COMMAND_ARM, "command_key": 4242}, config)
+    assert (out["mode"], out["trace"]["gate"]["trusted"]) == (BENCH, 0)
+
+
+@pytest.mark.parametrize("mode", MODES)
+def test_pulses_of_the_law_leave_in_damping_only(mode):
+    sequence = [make_inputs(1), make_inputs(2, {"path.mag_raw": (10_100, -5_000, 2_000),
+        "separation_s": 599})]
+    state, outputs = fly(make_config({"supervisor.settle_dwell": 100}), sequence[:1],
+        make_state({"mode": mode}))
+    begun = outputs[0]["mode"]
+    _, (out,) = fly(make_config({"supervisor.settle_dwell": 100}), sequence[1:], state)
+    assert out["trace"]["pulses"]["ticks"] == (-15, 0, 0)  # 100·5000 / 32768 = 15.3
+    assert out["ticks"] == ((-15, 0, 0) if begun == DAMPING else (0, 0, 0))
+
+
+# ---- dwell ----
+
+def walk(mode, rates, dwell=0, **supervisor):
+    """Mode and dwell after each valid (or None: invalid) rate."""
+    passed = []
+    for rate in rates:
+        after, dwell = advance(mode, 0, dwell, {**SUPERVISOR, **supervisor}, make_inputs(), rate or 0,
+            rate is not None)
+        dwell = dwell if after == mode else 0
+        mode = after
+        passed.append((mode, dwell))
+    return passed
+
+
+def test_settling_counts_slow_cycles():
+    assert walk(DAMPING, (100, 0, 100)) == [(DAMPING, 1), (DAMPING, 2), (SETTLED, 0)]
+    assert walk(DAMPING, (100, 100, 101, 100)) == [(DAMPING, 1), (DAMPING, 2), (DAMPING, 0), (DAMPING, 1)]
+    assert walk(DAMPING, (100, None, 100, None, 100)) == [
+        (DAMPING, 1), (DAMPING, 1), (DAMPING, 2), (DAMPING, 2), (SETTLED, 0)]
+
+
+def test_waking_counts_fast_cycles():
+    assert walk(SETTLED, (201, 201)) == [(SETTLED, 1), (DAMPING, 0)]
+    assert walk(SETTLED, (201, 200, 201)) == [(SETTLED, 1), (SETTLED, 0), (SETTLED, 1)]
+    assert walk(SETTLED, (201, None, 65535)) == [(SETTLED, 1), (SETTLED, 1), (DAMPING, 0)]
+
+
+def test_dwells_of_one_cycle_and_of_the_whole_counter():
+    assert walk(DAMPING, (0,), settle_dwell=1) == [(SETTLED, 0)]
+    assert walk(SETTLED, (65535,), wake_dwell=1) == [(DAMPING, 0)]
+    assert walk(DAMPING, (0,), dwell=2**32 - 2, settle_dwell=2**32 - 1) == [(SETTLED, 0)]
+    assert walk(DAMPING, (0,), dwell=2**32 - 1, settle_dwell=2**32 - 1) == [(SETTLED, 0)]
+
+
+def test_a_change_of_mode_forgets_the_dwell():
+    state, _ = one({"dwell": 2}, {"low_power": 1})
+    assert (state["mode"], state["dwell"]) == (INHIBIT, 0)
+    state, _ = one({"dwell": 2}, {"path.mag_valid": 0})
+    assert (state["mode"], state["dwell"]) == (DAMPING, 2)
+
+
+def test_one_transition_a_step():
+    """HOLD_OFF that turns to DAMPING does not count towards the dwell yet."""
+    state, _ = fly(make_config({"supervisor.settle_dwell": 1}), [make_inputs(0)], make_state({"mode": SAFE}))
+    state, (out,) = fly(
+        make_config({"supervisor.settle_dwell": 1}), [make_inputs(1, {"command": MRD_COMMAND_RESUME})], state)
+    assert (out["mode"], out["rate_valid"], state["dwell"]) == (DAMPING, 1, 0)
+
+
+def test_modes_differ_in_two_bits():
+    assert all((a ^ b).bit_count() >= 2 for a in MODES for b in MODES if a != b)
