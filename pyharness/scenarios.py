@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -10,10 +11,14 @@ from pyharness.exact import constants as mrd
 from pyharness.loop import Flight
 from pyharness.mission import load_mission
 from pyharness.mission.model import Vector
+from pyharness.plant.orbit import orbital_period
 from pyharness.scaling import Scaling, scale
 
-ORBIT_AND_DWELL = 14400
-"""Cycles of the long flights: 7,200 s of the demo, an orbit and a quarter."""
+
+def long_cycles(scaling: Scaling) -> int:
+    """Cycles until a mission should have settled: an orbit, the hold-off and the dwell, in full cycles."""
+    control = scaling.mission.control
+    return math.ceil((orbital_period(scaling.mission.orbit) + control.hold_off_s + control.dwell_s) / scaling.period_s)
 
 
 @dataclass(frozen=True)
@@ -22,7 +27,7 @@ class Scenario:
 
     name: str
     purpose: str
-    cycles: int
+    cycles: int | None  # None: as long as `long_cycles` says
     seed: int
     overrides: dict[str, Any] = field(default_factory=dict)
     rate_deg_s: Vector | None = None
@@ -38,8 +43,9 @@ class Scenario:
 
     def flight(self, mission_path: str) -> Flight:
         """The flight of this scenario. Raises MissionError."""
+        scaling = self.scaling(mission_path)
         return Flight(
-            scaling=self.scaling(mission_path), cycles=self.cycles, seed=self.seed, rate_deg_s=self.rate_deg_s,
+            scaling=scaling, cycles=long_cycles(scaling) if self.cycles is None else self.cycles, seed=self.seed, rate_deg_s=self.rate_deg_s,
             along_field=self.along_field, start_us=self.start_us, separation_s=self.separation_s, orbit_s=self.orbit_s,
             events=self.events,
         )  # fmt: skip
@@ -98,6 +104,6 @@ LOOP = (
 )  # fmt: skip
 
 LONG = (
-    Scenario("demo", "the mission as it stands, until it has settled", ORBIT_AND_DWELL, 1, separation_s=0),
-    Scenario("demo-along-field", "the same, starting with the spin along the field", ORBIT_AND_DWELL, 2, along_field=True, separation_s=0),
+    Scenario("demo", "the mission as it stands, until it has settled", None, 1, separation_s=0),
+    Scenario("demo-along-field", "the same, starting with the spin along the field", None, 2, along_field=True, separation_s=0),
 )  # fmt: skip

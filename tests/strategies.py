@@ -1,4 +1,4 @@
-"""Hypothesis strategies for the controller: any legal configuration, and sequences of inputs that reach its deep stages.
+"""Hypothesis strategies for the controller: any legal configuration, and inputs that reach its deep stages.
 
 The generators draw integers from a source: from hypothesis (which shrinks what fails) or from a seeded
 `random.Random` (for many thousand rows). Ranges are followed constructively, nothing is filtered away.
@@ -263,26 +263,26 @@ def _switch_off(source: Source, before: int, start: int, blanking_us: int) -> in
 def _command(source: Source, config: Record) -> Record:
     """A command with its values, mostly in their limits."""
     supervisor = config["supervisor"]
-    limit = supervisor["bench_limit_ticks"]
+    limit, key = supervisor["bench_limit_ticks"], supervisor["bench_key"]
     likely = MRD_COMMAND_SAFE, MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_BENCH, MRD_COMMAND_RESUME
     return {
         "command": pick(source, (*likely, source.integer(0, 6), span(source, 0, 65535))),
-        "command_key": pick(source, (supervisor["bench_key"], supervisor["bench_key"],
-            span(source, 0, 65535))),
+        "command_key": pick(source, (key, key, span(source, 0, 65535))),
         "command_coil": pick(source, (0, 1, 2, 0, 1, 2, span(source, 0, 65535))),
         "command_ticks": pick(source, (span(source, -limit, limit), span(source, -limit, limit),
                                        span(source, -32768, 32767), limit + 1)),
     }
 
 
-def _path_inputs(source: Source, path: Record, cycle_start: int, before: Record | None, pool: list,
-    calm: int) -> Record:
+def _path_inputs(
+    source: Source, path: Record, cycle_start: int, before: Record | None, pool: list, calm: int,
+) -> Record:
     """One cycle's inputs of a path; `calm` is how rarely something is disturbed."""
     tolerance = path["tolerance_us"]
     sample = (cycle_start + path["phase_us"] + span(source, -min(tolerance, 50), min(tolerance, 50))) % WRAP
     if once_in(source, 4 * calm):
-        sample = (cycle_start + path["phase_us"] + pick(source,
-            (1, -1)) * (tolerance + source.integer(0, 1))) % WRAP
+        departure = pick(source, (1, -1)) * (tolerance + source.integer(0, 1))
+        sample = (cycle_start + path["phase_us"] + departure) % WRAP
     if once_in(source, 8 * calm):
         sample = span(source, 0, WRAP - 1)
     start = (sample - path["half_sample_us"]) % WRAP
@@ -292,8 +292,8 @@ def _path_inputs(source: Source, path: Record, cycle_start: int, before: Record 
             for i in range(3)
         )
     else:
-        switch_off = tuple((start - path["blanking_us"][i] - source.integer(0, 9999)) % WRAP
-            for i in range(3))
+        switch_off = tuple(
+            (start - blanking_us - source.integer(0, 9999)) % WRAP for blanking_us in path["blanking_us"])
     mag_raw = _near(source, pick(source, pool), pick(source, (0, 3, 30)))
     gyro_raw = _gyro_raw(source, path)
     if once_in(source, 4 * calm):
@@ -316,25 +316,23 @@ def any_inputs(source: Source, config: Record, n: int) -> list[Record]:
     path, supervisor = config["path"], config["supervisor"]
     calm = pick(source, (1000, 16, 4))
     pool = [_plausible_raw(source, path) for _ in range(3)]
-    cycle_start = pick(source, (0, WRAP - path["period_us"] * source.integer(1, max(1, n)),
-        span(source, 0, WRAP - 1)))
+    period, hold_off_s = path["period_us"], supervisor["hold_off_s"]
+    before_wrap = WRAP - period * source.integer(1, max(1, n))
+    cycle_start = pick(source, (0, before_wrap, span(source, 0, WRAP - 1)))
     sequence: list[Record] = []
     for _ in range(n):
         cycle_start %= WRAP
         before = sequence[-1]["path"] if sequence else None
-        commanded = once_in(source, calm)
-        hold_off_s = supervisor["hold_off_s"]
+        commanded, early = once_in(source, calm), once_in(source, calm)
         sequence.append({
             "path": _path_inputs(source, path, cycle_start, before, pool, calm),
-            "separation_s": max(0, hold_off_s - 1) if once_in(source, calm) else span(source, hold_off_s,
-                WRAP - 1),
+            "separation_s": max(0, hold_off_s - 1) if early else span(source, hold_off_s, WRAP - 1),
             "low_power": pick(source, (1, 65535)) if once_in(source, calm) else 0,
             **(_command(source, config) if commanded else {
                 "command": MRD_COMMAND_NONE, "command_key": 0, "command_coil": 0, "command_ticks": 0}),
         })
-        period = path["period_us"]
-        cycle_start += pick(source, (period // 2, period + period // 2, 2 * period)) if once_in(source,
-            calm) else period
+        late = once_in(source, calm)
+        cycle_start += pick(source, (period // 2, period + period // 2, 2 * period)) if late else period
     return sequence
 
 
@@ -352,9 +350,7 @@ def configs(draw: st.DrawFn) -> Record:
 
 @st.composite
 def inputs_sequences(draw: st.DrawFn, config: Record, n: int) -> list[Record]:
-    """The inputs of n cycles in a row for this configuration; n up to about 20 keeps within hypothesis'
-    entropy.
-    """
+    """The inputs of n cycles in a row for this configuration; beyond some 20 cycles use `Seeded`."""
     return any_inputs(Drawn(draw), config, n)
 
 

@@ -20,8 +20,9 @@ def factor_of(period_us: int, interval_us: int) -> int:
     return check("derivative.factor", vmin(quotient, 2**15))
 
 
-def differentiate(state: Record, config: Record, field: Vector, sample_us: int,
-    trusted: int) -> tuple[Record, int]:
+def differentiate(
+    state: Record, config: Record, field: Vector, sample_us: int, trusted: int,
+) -> tuple[Record, int]:
     """The change of the field a period.
 
     Returns the trace's part and the status bits. Saturates and says so.
@@ -42,8 +43,8 @@ def differentiate(state: Record, config: Record, field: Vector, sample_us: int,
     px, py, pz = state["field"]
     dx, dy, dz = check3("derivative.difference", (x - px, y - py, z - pz))
     qx, qy, qz = check3("derivative.product", (dx * factor, dy * factor, dz * factor))
-    unclamped = check3("derivative.unclamped",
-        (round_shift(qx, 14), round_shift(qy, 14), round_shift(qz, 14)))
+    unclamped = (round_shift(qx, 14), round_shift(qy, 14), round_shift(qz, 14))
+    check3("derivative.unclamped", unclamped)
     ux, uy, uz = unclamped
     derivative = (clamp(ux, INT16_MAX), clamp(uy, INT16_MAX), clamp(uz, INT16_MAX))
     return {

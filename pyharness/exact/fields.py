@@ -157,8 +157,9 @@ TRACE: Struct = (
     Nested("gate", (u32("age_us", AXES), u16("trusted"))),
     Nested("derivative", (u32("interval_us"), u16("factor"), i16("derivative", AXES), u16("valid"))),
     Nested("low_pass", (i32("filter", AXES), i16("filtered", AXES))),
-    Nested("law", (u16("active"), i32("cross", AXES), u16("mantissa", AXES), i16("shift", AXES),
-        i32("demand", AXES))),
+    Nested("law", (
+        u16("active"), i32("cross", AXES), u16("mantissa", AXES), i16("shift", AXES), i32("demand", AXES),
+    )),
     Nested("saturation", (i16("command", AXES),)),
     Nested("pulses", (i16("ticks", AXES),)),
 )
@@ -188,8 +189,12 @@ def flatten(struct: Struct, prefix: str = "") -> tuple[Field, ...]:
     return tuple(flat)
 
 
-FIELDS = {"config": flatten(CONFIG), "inputs": flatten(INPUTS), "state": flatten(STATE),
-    "outputs": flatten(OUTPUTS)}
+FIELDS = {
+    "config": flatten(CONFIG),
+    "inputs": flatten(INPUTS),
+    "state": flatten(STATE),
+    "outputs": flatten(OUTPUTS),
+}
 
 
 def zeros(struct: Struct) -> Record:

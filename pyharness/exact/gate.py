@@ -17,14 +17,15 @@ _REJECTED = _MISSING | 1 << MRD_S_MAG_RANGE | 1 << MRD_S_SAMPLE_OFF_TIME | 1 << 
 
 def off_time(config: Record, inputs: Record) -> bool:
     """Whether mid-sample departs from its place in the cycle by more than the tolerance."""
-    departure = check("gate.departure",
-        (inputs["sample_us"] - inputs["cycle_start_us"] - config["phase_us"]) % WRAP)
+    place = inputs["cycle_start_us"] + config["phase_us"]
+    departure = check("gate.departure", (inputs["sample_us"] - place) % WRAP)
     tolerance = config["tolerance_us"]
     return not (departure <= tolerance or departure >= WRAP - tolerance)
 
 
-def blanking(state: Record, config: Record, switch_off_us: Vector, start: int, i: int) -> tuple[int, int,
-    bool]:
+def blanking(
+    state: Record, config: Record, switch_off_us: Vector, start: int, i: int,
+) -> tuple[int, int, bool]:
     """Coil i at the start of the sample.
 
     Returns the age of its switch-off, the flag clear, and whether it is unstamped.
@@ -39,8 +40,9 @@ def blanking(state: Record, config: Record, switch_off_us: Vector, start: int, i
     return age, flag(config["blanking_us"][i] <= age <= OLD), False
 
 
-def admit(state: Record, config: Record, inputs: Record, status: int, waive_norm: int) -> tuple[Record,
-    Vector, int]:
+def admit(
+    state: Record, config: Record, inputs: Record, status: int, waive_norm: int,
+) -> tuple[Record, Vector, int]:
     """Whether the sample is used.
 
     Returns the trace's part, the state's off_clear, and the status bits of this stage.

@@ -1,6 +1,4 @@
-"""Digests: FNV-1a (Fowler, Noll, Vo) over fields instead of bytes, so that byte order and padding do not
-matter.
-"""
+"""Digests: FNV-1a (Fowler, Noll, Vo) over fields instead of bytes: byte order and padding do not matter."""
 
 from __future__ import annotations
 
@@ -23,9 +21,7 @@ def fnv1a(words: Iterable[int]) -> int:
 
 
 def _plan(struct: Struct) -> tuple[tuple[str, int, tuple | None, bool], ...]:
-    """What the walk needs of each entry: name, mask of its width, plan of a nested struct, whether it is an
-    array.
-    """
+    """What the walk needs of each entry: name, mask of its width, plan of a nested struct, array or not."""
     return tuple(
         (entry.name, 0, _plan(entry.struct), False) if isinstance(entry, Nested)
         else (entry.name, (1 << entry.bits) - 1, None, entry.count > 1)

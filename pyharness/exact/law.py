@@ -81,8 +81,8 @@ def command_demand(config: Record, trace: Record) -> tuple[Record, int]:
     active, status = choose(config, trace)
     nothing = (0, 0, 0)
     if active == MRD_LAW_NONE:
-        return {"active": active, "cross": nothing, "mantissa": nothing, "shift": nothing,
-            "demand": nothing}, status
+        parts = ("cross", "mantissa", "shift", "demand")
+        return {"active": active, **dict.fromkeys(parts, nothing)}, status
     norm_sq = trace["plausibility"]["norm_sq"]
     if active == MRD_LAW_RATE:
         gain = gain_used(config, config["rate_gain"], norm_sq)

@@ -1,6 +1,4 @@
-"""Stage 5: first-order low-pass of the derivative. The filter carries eight fraction bits so that it does
-not stick.
-"""
+"""Stage 5: first-order low-pass of the derivative, with eight fraction bits so that it does not stick."""
 
 from __future__ import annotations
 

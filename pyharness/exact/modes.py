@@ -45,8 +45,9 @@ def accepted(mode: int, supervisor: Record, inputs: Record) -> bool:
     return True
 
 
-def obey(mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record) -> tuple[int, int, Vector,
-    int]:
+def obey(
+    mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record,
+) -> tuple[int, int, Vector, int]:
     """Mode after the command, inhibit_commanded, the bench pulse, and the status bits."""
     command = inputs["command"]
     if not accepted(mode, supervisor, inputs):
@@ -61,7 +62,8 @@ def obey(mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record) 
 
 
 def advance(
-    mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int, rate_valid: int,
+    mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int,
+    rate_valid: int,
 ) -> tuple[int, int]:
     """One transition by itself.
 
@@ -79,21 +81,19 @@ def advance(
         if low_power:
             return MRD_MODE_INHIBIT, dwell
         if rate_valid:
-            return dwelling(
-                rate <= supervisor["settled_rate"], dwell, supervisor["settle_dwell"], mode, MRD_MODE_SETTLED)
+            slow = rate <= supervisor["settled_rate"]
+            return dwelling(slow, dwell, supervisor["settle_dwell"], mode, MRD_MODE_SETTLED)
     elif mode == MRD_MODE_SETTLED:
         if low_power:
             return MRD_MODE_INHIBIT, dwell
         if rate_valid:
-            return dwelling(rate > supervisor["wake_rate"], dwell, supervisor["wake_dwell"], mode,
-                MRD_MODE_DAMPING)
+            fast = rate > supervisor["wake_rate"]
+            return dwelling(fast, dwell, supervisor["wake_dwell"], mode, MRD_MODE_DAMPING)
     return mode, dwell
 
 
 def dwelling(towards: bool, dwell: int, needed: int, mode: int, following: int) -> tuple[int, int]:
-    """Mode and dwell after one more cycle towards the mode that follows, or one that begins the dwell
-    again.
-    """
+    """Mode and dwell after one more cycle towards the mode that follows, or one that begins anew."""
     if not towards:
         return mode, 0
     dwell = count(dwell, UINT32_MAX)

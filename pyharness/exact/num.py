@@ -1,4 +1,4 @@
-"""The vocabulary of the arithmetic: everything the stages do to a number beyond + - * // >> % and comparisons.
+"""The vocabulary of the arithmetic: what the stages do to a number beyond + - * // >> % and comparisons.
 
 Arguments are Python integers and results are exact. The stages name each such operation here, and only
 here, so that another number type (an interval, say) needs its own answer in this one place. None of these
@@ -86,9 +86,7 @@ def bits(x: int) -> int:
 
 
 def norm_shift(x: int, width: int) -> tuple[int, int]:
-    """(x >> e, e) with e = bits(x) − width ≥ 0: the leading `width` bits of x, in 2**(width−1):2**width −
-    1.
-    """
+    """(x >> e, e) with e = bits(x) − width ≥ 0: the leading `width` bits of x, the first of them 1."""
     e = x.bit_length() - width
     return x >> e, e
 

@@ -26,6 +26,9 @@ def make_pulses(config: Record, command: Vector) -> tuple[Record, int]:
     ny, short_y = width(config, y)
     nz, short_z = width(config, z)
     ticks = (with_sign(nx, x) * px, with_sign(ny, y) * py, with_sign(nz, z) * pz)
-    status = bit(short_x, MRD_S_SHORT_PULSE_X) | bit(short_y, MRD_S_SHORT_PULSE_Y) | bit(short_z,
-        MRD_S_SHORT_PULSE_Z)
+    status = (
+        bit(short_x, MRD_S_SHORT_PULSE_X)
+        | bit(short_y, MRD_S_SHORT_PULSE_Y)
+        | bit(short_z, MRD_S_SHORT_PULSE_Z)
+    )
     return {"ticks": check3("pulses.ticks", ticks)}, status

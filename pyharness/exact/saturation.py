@@ -19,6 +19,8 @@ def keep_direction(demand: Vector, greatest: int) -> Vector:
     reciprocal = check("saturation.reciprocal", round_div(INT16_MAX << 16, divisor))
 
     def scale(x: int) -> int:
+        # No change to numbers; it tells a type that does not know which axis is the greatest that none is
+        # greater.
         product = check("saturation.product", vmin(abs(x) >> exponent, divisor) * reciprocal)
         return with_sign(vmin(INT16_MAX, (product + 2**15) >> 16), x)
 
@@ -27,10 +29,7 @@ def keep_direction(demand: Vector, greatest: int) -> Vector:
 
 
 def saturate(config: Record, demand: Vector) -> tuple[Record, int]:
-    """The command.
-
-    Returns the trace's part and the status bits. Saturates and says so; no axis changes its sign.
-    """
+    """The command: trace's part and status bits. Saturates and says so; no axis changes its sign."""
     x, y, z = demand
     if not exceeds(demand, INT16_MAX):
         return {"command": check3("saturation.command", clamp3(demand))}, 0

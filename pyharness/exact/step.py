@@ -100,8 +100,8 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     status |= raised
     trace, raised = path_drive(path_config, trace)
     status |= raised
-    mode, inhibit_commanded, dwell, bench_pulse, raised = change_mode(state, supervisor, inputs, rate,
-        rate_valid)
+    mode, inhibit_commanded, dwell, bench_pulse, raised = change_mode(
+        state, supervisor, inputs, rate, rate_valid)
     status |= raised
     ticks = NO_PULSE
     if mode == MRD_MODE_DAMPING:

@@ -1,6 +1,6 @@
-"""A mission as checked data: SI-compatible units as named, derived quantities as properties.
+"""A mission as checked data: units as the names say, derived quantities as properties.
 
-Nothing here reads files or checks ranges (see `schema` and `load`); nothing here makes integers (see `scaling`).
+Nothing here reads files or checks ranges (see `load` and `schema`); nothing here makes integers (see `scaling`).
 """
 
 from __future__ import annotations
@@ -61,7 +61,8 @@ class Winding:
 
     def dipole_a_m2(self, supply_v: float) -> float:
         """Turns × area × current, the current from copper's resistance at `temperature_c`."""
-        warm = 1.0 + COPPER_PER_K * (self.temperature_c - self.resistance_temperature_c)
+        warm = 1.0 + COPPER_PER_K * (self.temperature_c - 20.0)
+        warm /= 1.0 + COPPER_PER_K * (self.resistance_temperature_c - 20.0)
         return self.turns * self.area_m2 * supply_v / (self.resistance_ohm * warm)
 
 
@@ -157,7 +158,7 @@ class Mission:
     cycle: Cycle
     control: Control
     source: str  # path of the file, for messages
-    digest: str  # SHA-256 of the file's bytes, first 12 hex digits
+    digest: str  # SHA-256 of the file's bytes and of what was laid over it, first 12 hex digits
 
     @property
     def tip_off_rad_s(self) -> float:

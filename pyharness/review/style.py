@@ -10,6 +10,7 @@ import re
 from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import Any
+from xml.etree import ElementTree
 
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
@@ -90,16 +91,35 @@ def save(figure: Figure, target: Any, kind: str) -> None:
 
 
 def inline_svg(figure: Figure, name: str, label: str) -> str:
-    """The figure as an <svg> element for HTML: prolog stripped, ids and styles its own, scaled by the page."""
+    """The figure as an <svg> element for HTML: without prolog, scaled by the page, its ids and styles its own.
+
+    `name` goes before every id, so that several figures can stand in one page.
+    """
     buffer = io.BytesIO()
     save(figure, buffer, "svg")
-    svg = buffer.getvalue().decode()
-    svg = svg[svg.index("<svg") :]
-    svg = re.sub(r"<metadata>.*?</metadata>\s*", "", svg, flags=re.DOTALL)
-    svg = re.sub(r'\bid="', f'id="{name}-', svg)
-    svg = svg.replace("url(#", f"url(#{name}-").replace('xlink:href="#', f'href="#{name}-')
-    svg = svg.replace("<style type=\"text/css\">*{", f'<style>#{name} *{{')
-    opening = re.search(r'viewBox="[^"]*"', svg)[0]
-    label = label.replace("&", "&amp;").replace("<", "&lt;").replace('"', "&quot;")
-    head = f'<svg id="{name}" {opening} role="img" aria-label="{label}">'
-    return re.sub(r"^<svg[^>]*>", lambda _: head, svg, count=1)
+    root = ElementTree.fromstring(buffer.getvalue())
+    for element in root.iter():
+        element.tag = _local(element.tag)
+        element.attrib = {_local(key): _renamed(_local(key), value, name) for key, value in element.attrib.items()}
+        if element.tag == "style":
+            element.text = (element.text or "").replace("*{", f"#{name} *{{")
+    root.attrib = {"id": name, "viewBox": root.attrib["viewBox"], "role": "img", "aria-label": label}
+    return ElementTree.tostring(root, encoding="unicode", short_empty_elements=False)
+
+
+_LONG_NUMBER = re.compile(r"-?\d+\.\d{3,}")
+"""In a path: hundredths of a point are finer than any screen or printer."""
+
+
+def _local(name: str) -> str:
+    return name.rpartition("}")[2]
+
+
+def _renamed(key: str, value: str, name: str) -> str:
+    if key == "id":
+        return f"{name}-{value}"
+    if key == "d":
+        return _LONG_NUMBER.sub(lambda found: f"{float(found[0]):.2f}", value)
+    if key == "href":
+        return value.replace("#", f"#{name}-", 1)
+    return value.replace("url(#", f"url(#{name}-")

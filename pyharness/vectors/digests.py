@@ -12,11 +12,14 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from tqdm import tqdm
 
+from pyharness.controllers import Controller
 from pyharness.flight.records import to_columns
-from pyharness.loop import Record
-from pyharness.scenarios import Scenario
-from pyharness.vectors.files import VectorError
+from pyharness.loop import Record, fly
+from pyharness.scenarios import LONG, Scenario
+from pyharness.vectors.files import NoVectors, VectorError
+from pyharness.vectors.verdict import Verdict
 
 FORMAT = "slackwater digest 1"
 CHECKPOINT = 600
@@ -50,6 +53,27 @@ def hashes(record: Record) -> list[str]:
         sha.update(table[start : start + CHECKPOINT].tobytes())
         result.append(sha.hexdigest()[:16])
     return result
+
+
+def check_digests(folder: Path, controller: Controller, mission_path: str, bar: tqdm) -> list[Verdict]:
+    """Fly every long flight that the folder has a digest of, and compare. Raises NoVectors if there is none."""
+    contents = [read_digest(path) for path in sorted((folder / "digests").glob("*.json"))]
+    if not contents:
+        raise NoVectors(f"{folder}: no digests here; write them with: slackwater vectors write --out {folder}")
+    known = {scenario.name: scenario for scenario in LONG}
+    if unknown := [content["name"] for content in contents if content["name"] not in known]:
+        raise VectorError(f"{folder}: digests of unknown flights: {', '.join(unknown)}")
+    flights = [known[content["name"]].flight(mission_path) for content in contents]
+    bar.total = max(flight.cycles for flight in flights)
+    records = fly(flights, controller, bar.update)
+    return [verdict(content, record) for content, record in zip(contents, records, strict=True)]
+
+
+def verdict(content: dict[str, Any], record: Record) -> Verdict:
+    """What a flight has to say to a digest file."""
+    difference = first_difference(content, record)
+    told = difference or f"all {len(content['checkpoints'])} hashes equal"
+    return Verdict(f"digests/{content['name']}", content["purpose"], len(record.inputs), difference is None, told)
 
 
 def read_digest(path: Path) -> dict[str, Any]:

@@ -8,8 +8,6 @@ from __future__ import annotations
 
 import io
 import json
-import os
-import tempfile
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -27,6 +25,10 @@ TIERS = ("unit", "loop")
 
 class VectorError(Exception):
     """A vector file, or a folder of them, that cannot be used."""
+
+
+class NoVectors(VectorError):
+    """There is nothing to check, which is a failure."""
 
 
 @dataclass(frozen=True)
@@ -180,24 +182,10 @@ def _tuples(value: Any) -> Any:
 
 
 def find_vectors(folder: Path) -> list[Path]:
-    """The vector files of a folder, by tier and name. Raises VectorError if there is none: nothing checked is a failure."""
+    """The vector files of a folder, by tier and name. Raises NoVectors if there is none: nothing checked is a failure."""
     paths = [path for tier in TIERS for path in sorted((folder / tier).glob("*.csv"))]
     if not paths:
-        raise VectorError(
+        raise NoVectors(
             f"{folder}: no vectors here (expected unit/*.csv and loop/*.csv); write them with: slackwater vectors write --out {folder}"
         )
     return paths
-
-
-def write_atomically(path: Path, text: str) -> None:
-    """Write a file whole or not at all: to a temporary name beside it, then renamed."""
-    path.parent.mkdir(parents=True, exist_ok=True)
-    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
-    try:
-        with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
-            file.write(text)
-        os.chmod(name, 0o644)
-        os.replace(name, path)
-    except BaseException:
-        os.unlink(name)
-        raise

@@ -11,8 +11,9 @@ from pyharness.loop import Record, fly
 from pyharness.mission import MissionError
 from pyharness.scenarios import LONG, LOOP, Scenario
 from pyharness.vectors.digests import digest_text
-from pyharness.vectors.files import TIERS, VectorFile, sizes_of, to_text, write_atomically
+from pyharness.vectors.files import TIERS, VectorFile, sizes_of, to_text
 from pyharness.vectors.unit import UNIT, Unit
+from pyharness.whole_files import write_whole
 
 COMMAND = "slackwater vectors write"
 
@@ -72,15 +73,15 @@ def _named(item: Scenario | Unit, make: Callable):
         raise MissionError(f"{error.source} as scenario {item.name} changes it", error.problems) from None
 
 
-def write_folder(folder: Path, files: dict[str, str]) -> list[str]:
+def write_folder(folder: Path, files: dict[str, str], keep_digests: bool = False) -> list[str]:
     """Put the files in place, each whole, and remove vectors that are no longer written. Returns what changed, by path."""
     changed = []
     for name, text in files.items():
         path = folder / name
         if not path.is_file() or path.read_text(encoding="utf-8") != text:
-            write_atomically(path, text)
+            write_whole(path, text)
             changed.append(name)
-    for tier in (*TIERS, "digests"):
+    for tier in TIERS if keep_digests else (*TIERS, "digests"):
         for path in sorted((folder / tier).glob("*.*")):
             if (name := f"{tier}/{path.name}") not in files and path.suffix in (".csv", ".json"):
                 path.unlink()

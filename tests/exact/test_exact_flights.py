@@ -13,8 +13,8 @@ from pyharness.exact.constants import (
     MRD_GAIN_NORMALISED, MRD_LAW_RATE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_OK, MRD_S_BLANKED,
     MRD_S_COMMAND_REFUSED, MRD_S_CONFIG_CORRUPT, MRD_S_COUNT, MRD_S_FELL_BACK, MRD_S_STATE_RESTARTED,
 )
-from tests.exact.samples import fly, make_config, make_inputs, make_state
-from tests.strategies import Seeded, any_config, any_inputs, configs, flights, path_configs
+from exact.samples import fly, make_config, make_inputs, make_state, with_changes
+from strategies import Seeded, any_config, any_inputs, configs, flights, path_configs
 
 
 def elements(record, fields):
@@ -34,7 +34,7 @@ def shape(record):
         name: None for name, value in record.items() if not isinstance(value, dict)}
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=60)
 @given(flights())
 def test_outputs_and_state_are_complete_in_range_and_arguments_unchanged(flight):
     config, sequence = flight
@@ -48,12 +48,13 @@ def test_outputs_and_state_are_complete_in_range_and_arguments_unchanged(flight)
         for field, element in elements(out, FIELDS["outputs"]):
             assert type(element) is int and field.lo <= element <= field.hi, field.name
         for field, element in elements(after, FIELDS["state"]):
-            assert type(element) is int and RANGES["state." + field.name].lo <= element <= RANGES["state." + field.name].hi
+            declared = RANGES["state." + field.name]
+            assert type(element) is int and declared.lo <= element <= declared.hi, field.name
         state = after
     assert (config, sequence) == before
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=60)
 @given(flights(), st.integers(0, 8))
 def test_a_run_in_two_parts_equals_the_whole_run(flight, cut):
     config, sequence = flight
@@ -63,7 +64,7 @@ def test_a_run_in_two_parts_equals_the_whole_run(flight, cut):
     assert (state, first + second) == (whole_state, whole)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=60)
 @given(flights())
 def test_counters_count_what_the_status_says(flight):
     config, sequence = flight
@@ -79,7 +80,7 @@ def test_counters_count_what_the_status_says(flight):
     }
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=60)
 @given(flights())
 def test_a_step_is_the_path_with_the_modes_around_it(flight):
     config, sequence = flight
@@ -96,11 +97,9 @@ def test_a_step_is_the_path_with_the_modes_around_it(flight):
 
 
 def test_counters_stop():
-    full = {f"counters.{name}": 65535
-        for name in ("trusted", "rejected", "blanked", "fell_back", "refused", "restarts")}
-    state, _ = fly(make_config({"path.law": MRD_LAW_RATE}), [
-        make_inputs(1, {"command": 99, "path.gyro_valid": 0}), make_inputs(2,
-            {"path.mag_valid": 0})], make_state(full))
+    full = {f"counters.{name}": 65535 for name in reset()["counters"]}
+    sequence = [make_inputs(1, {"command": 99, "path.gyro_valid": 0}), make_inputs(2, {"path.mag_valid": 0})]
+    state, _ = fly(make_config({"path.law": MRD_LAW_RATE}), sequence, make_state(full))
     assert set(state["counters"].values()) == {65535}
 
 
@@ -111,24 +110,25 @@ def test_stamps_wrap_without_a_trace():
         sequence = []
         for k in range(6):
             inputs = make_inputs(k, {"path.mag_raw": (10_000 + 100 * k, -5_000, 2_000)})
-            stamps = {name: (inputs["path"][name] + offset) % 2**32
-                for name in ("cycle_start_us", "sample_us")}
-            stamps["switch_off_us"] = tuple((stamp + offset) % 2**32
-                for stamp in inputs["path"]["switch_off_us"])
-            sequence.append({**inputs, "path": {**inputs["path"], **stamps}})
+            path = inputs["path"]
+            sequence.append(with_changes(inputs, {
+                "path.cycle_start_us": (path["cycle_start_us"] + offset) % 2**32,
+                "path.sample_us": (path["sample_us"] + offset) % 2**32,
+                "path.switch_off_us": tuple((stamp + offset) % 2**32 for stamp in path["switch_off_us"]),
+            }))
         runs.append(fly(make_config(), sequence)[1])
     assert runs[0] == runs[1] and runs[0][-1]["trace"]["derivative"]["derivative"] == (100, 0, 0)
 
 
 # ---- the strategies ----
 
-@settings(max_examples=100, deadline=None)
+@settings(max_examples=100)
 @given(configs())
 def test_every_configuration_drawn_is_legal(config):
     assert init(config) == MRD_OK
 
 
-@settings(max_examples=50, deadline=None)
+@settings(max_examples=50)
 @given(path_configs())
 def test_every_configuration_of_a_path_drawn_is_legal(path):
     assert path_check(path) == MRD_OK

@@ -8,7 +8,7 @@ from pyharness.exact.constants import (
     MRD_E_MAG, MRD_E_NORM, MRD_E_PERIOD, MRD_E_POLARITY, MRD_E_SAMPLE, MRD_E_SETTLE, MRD_E_TIMELINE,
     MRD_E_WINDOW, MRD_GAIN_NORMALISED, MRD_LAW_RATE, MRD_OK, MRD_SETTLE_BY_GYRO,
 )
-from tests.exact.samples import make_config
+from exact.samples import make_config
 
 
 def matrix(*entries):
@@ -37,7 +37,7 @@ def sensor_cases(name, code):
 # ticks or phase.
 TIGHT = {"path.blanking_us": (0, 0, 0)}
 SHORT = {"path.shortest_ticks": 1, "supervisor.bench_limit_ticks": 1, **TIGHT}
-# 17 bits
+# Norms of 17 bits.
 NORMALISED = {"path.gain_scaling": MRD_GAIN_NORMALISED, "path.norm_min_sq": 65536, "path.norm_max_sq": 131071}
 
 

@@ -10,7 +10,7 @@ from pyharness.exact.constants import (
     MRD_MODE_SETTLED, MRD_S_COMMAND_REFUSED, MRD_S_FIELD_IMPLAUSIBLE,
 )
 from pyharness.exact.modes import MODES, advance
-from tests.exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state
+from exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state
 
 HOLD_OFF, DAMPING, SETTLED = MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED
 SAFE, INHIBIT, BENCH = MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH
@@ -135,12 +135,11 @@ def test_on_the_bench_the_norm_is_waived_and_no_pulse_of_the_law_leaves():
 
 @pytest.mark.parametrize("mode", MODES)
 def test_pulses_of_the_law_leave_in_damping_only(mode):
-    sequence = [make_inputs(1), make_inputs(2, {"path.mag_raw": (10_100, -5_000, 2_000),
-        "separation_s": 599})]
-    state, outputs = fly(make_config({"supervisor.settle_dwell": 100}), sequence[:1],
-        make_state({"mode": mode}))
+    config = make_config({"supervisor.settle_dwell": 100})
+    state, outputs = fly(config, [make_inputs(1)], make_state({"mode": mode}))
     begun = outputs[0]["mode"]
-    _, (out,) = fly(make_config({"supervisor.settle_dwell": 100}), sequence[1:], state)
+    turned = make_inputs(2, {"path.mag_raw": (10_100, -5_000, 2_000), "separation_s": 599})
+    _, (out,) = fly(config, [turned], state)
     assert out["trace"]["pulses"]["ticks"] == (-15, 0, 0)  # 100·5000 / 32768 = 15.3
     assert out["ticks"] == ((-15, 0, 0) if begun == DAMPING else (0, 0, 0))
 
@@ -151,8 +150,8 @@ def walk(mode, rates, dwell=0, **supervisor):
     """Mode and dwell after each valid (or None: invalid) rate."""
     passed = []
     for rate in rates:
-        after, dwell = advance(mode, 0, dwell, {**SUPERVISOR, **supervisor}, make_inputs(), rate or 0,
-            rate is not None)
+        after, dwell = advance(
+            mode, 0, dwell, {**SUPERVISOR, **supervisor}, make_inputs(), rate or 0, rate is not None)
         dwell = dwell if after == mode else 0
         mode = after
         passed.append((mode, dwell))

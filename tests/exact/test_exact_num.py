@@ -10,8 +10,8 @@ from pyharness.exact import num
 
 
 @pytest.mark.parametrize(("x", "s", "rounded"), [
-    (0, 1, 0), (1, 1, 1), (-1, 1, -1), (3, 1, 2), (-3, 1, -2), (5, 2, 1), (6, 2, 2), (-6, 2, -2), (7, 3,
-        1), (4, 3, 1), (3, 3, 0),
+    (0, 1, 0), (1, 1, 1), (-1, 1, -1), (3, 1, 2), (-3, 1, -2), (5, 2, 1), (6, 2, 2), (-6, 2, -2), (7, 3, 1),
+    (4, 3, 1), (3, 3, 0),
     (-3, 3, 0), (16383, 15, 0), (16384, 15, 1), (-16384, 15, -1),
 ])
 def test_rounds_half_away_from_zero(x, s, rounded):
@@ -32,8 +32,8 @@ def test_clamp_is_symmetric(x, clamped):
 
 
 @pytest.mark.parametrize(("values", "beyond"), [
-    ((5, -5, 5), False), ((6, 0, 0), True), ((0, -6, 0), True), ((0, 0, 6), True), ((0, 6, 0),
-        True), ((0, 0, -6), True), ((-6, 0, 0), True),
+    ((5, -5, 5), False), ((6, 0, 0), True), ((0, -6, 0), True), ((0, 0, 6), True), ((0, 6, 0), True),
+    ((0, 0, -6), True), ((-6, 0, 0), True),
 ])
 def test_exceeds_looks_at_every_element_and_both_signs(values, beyond):
     assert num.exceeds(values, 5) is beyond

@@ -11,7 +11,9 @@ from pyharness.exact.estimate import rate_across_field
 from pyharness.exact.law import gain_used
 from pyharness.exact.path import path_reset, zero_trace
 from pyharness.exact.ranges import check, check3
-from tests.exact.samples import SUPERVISOR, make_config, make_inputs, make_state, path_config, path_inputs
+from exact.samples import (
+    SENSOR, SUPERVISOR, make_config, make_inputs, make_state, path_config, path_inputs,
+)
 
 HEADER = Path(__file__).parents[2] / "fsw_c" / "include" / "mrd.h"
 
@@ -47,8 +49,8 @@ def test_every_range_is_closed_and_raises_beyond(name):
     for bad in (lo - 1, hi + 1):
         with pytest.raises(RangeError) as caught:
             check(name, bad)
-        assert (caught.value.name, caught.value.value, caught.value.range) == (name, bad,
-            (lo, hi, unit, meaning))
+        error = caught.value
+        assert (error.name, error.value, error.range) == (name, bad, (lo, hi, unit, meaning))
         assert str(caught.value) == f"{name}: {bad} {unit} ({meaning}), must be in {lo}:{hi}"
         for axis in range(3):
             with pytest.raises(RangeError):
@@ -69,11 +71,10 @@ KNOWN = {**path_reset(), "field_valid": 1, "sample_us": 1_040_000}
 
 @pytest.mark.parametrize(("name", "violate"), [
     ("calibration.sum", lambda: path_sense(
-        path_reset(), path_config(mag={**path_config()["mag"],
+        path_reset(), path_config(mag={**SENSOR,
             "matrix": (32767,) * 9}), path_inputs(mag_raw=(32766,) * 3), 0)),
     ("calibration.value", lambda: path_sense(
-        path_reset(), path_config(mag={**path_config()["mag"],
-            "offset": (-(2**31), 0, 0)}), path_inputs(), 0)),
+        path_reset(), path_config(mag={**SENSOR, "offset": (-(2**31), 0, 0)}), path_inputs(), 0)),
     ("derivative.interval", lambda: factor_of(100_000, 32_764)),
     ("derivative.quotient", lambda: factor_of(100_000, 49_000)),
     ("derivative.difference", lambda: path_sense({**KNOWN, "field": (-60_000, 0, 0)}, path_config(),
@@ -81,8 +82,8 @@ KNOWN = {**path_reset(), "field_valid": 1, "sample_us": 1_040_000}
     ("low_pass.error", lambda: path_sense(
         {**KNOWN, "filter_valid": 1, "filter": (0, 2**31 - 1, 0)}, path_config(), path_inputs(), 0)),
     ("low_pass.product", lambda: path_sense(
-        {**KNOWN, "filter_valid": 1, "filter": (0, 8_388_352,
-            0)}, path_config(filter_gain=2**17), path_inputs(), 0)),
+        {**KNOWN, "filter_valid": 1, "filter": (0, 8_388_352, 0)}, path_config(filter_gain=2**17),
+        path_inputs(), 0)),
     ("law.product", lambda: drive(path_config(), low_pass={"filtered": (0, 0, 2**17)})),
     ("law.cross", lambda: drive(path_config(law=2), calibration={"rate": (2**17, 0, 0),
         "field": (0, 32767, 0)})),
@@ -104,8 +105,8 @@ KNOWN = {**path_reset(), "field_valid": 1, "sample_us": 1_040_000}
         (32767, 0, 0), 40_000)),
     ("inputs.path.mag_raw", lambda: path_sense(path_reset(), path_config(),
         path_inputs(mag_raw=(32768, 0, 0)), 0)),
-    ("inputs.path.sample_us", lambda: path_sense(path_reset(), path_config(), path_inputs(sample_us=2**32),
-        0)),
+    ("inputs.path.sample_us", lambda: path_sense(path_reset(), path_config(),
+        path_inputs(sample_us=2**32), 0)),
     ("inputs.command_ticks", lambda: step(make_state(), make_config(),
         make_inputs(changes={"command_ticks": -32769}))),
 ])
@@ -123,9 +124,8 @@ def struct_members(body):
 
 
 def test_fields_are_those_of_the_header_in_its_order():
-    structs = {name: struct_members(body)
-               for body, name in re.findall(r"typedef struct \{(.*?)\}\s*(\w+);", HEADER.read_text(),
-                   flags=re.S)}
+    typedefs = re.findall(r"typedef struct \{(.*?)\}\s*(\w+);", HEADER.read_text(), flags=re.S)
+    structs = {name: struct_members(body) for body, name in typedefs}
 
     def flat(struct, prefix=""):
         for kind, name, count in structs[struct]:

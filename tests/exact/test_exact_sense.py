@@ -1,6 +1,4 @@
-"""Stages 1 to 5 on numbers worked out by hand from the arithmetic document, and on either side of every
-comparison.
-"""
+"""Stages 1 to 5 on numbers worked out by hand from the arithmetic document, on both sides of comparisons."""
 
 import pytest
 
@@ -13,7 +11,7 @@ from pyharness.exact.constants import (
 )
 from pyharness.exact.derivative import factor_of
 from pyharness.exact.low_pass import follow
-from tests.exact.samples import FIELD, SENSOR, path_config, path_inputs
+from exact.samples import FIELD, SENSOR, path_config, path_inputs
 
 
 def sense(state=None, config=None, inputs=None, waive_norm=0):
@@ -75,8 +73,8 @@ NORM_SQ = 129_000_000  # 10000² + 5000² + 2000²
 
 
 @pytest.mark.parametrize(("limits", "plausible"), [
-    ((NORM_SQ, NORM_SQ), True), ((NORM_SQ + 1, NORM_SQ + 1), False), ((32768, NORM_SQ - 1),
-        False), ((32768, NORM_SQ), True),
+    ((NORM_SQ, NORM_SQ), True), ((NORM_SQ + 1, NORM_SQ + 1), False),
+    ((32768, NORM_SQ - 1), False), ((32768, NORM_SQ), True),
 ])
 def test_norm_against_its_plausible_range(limits, plausible):
     config = path_config(norm_min_sq=limits[0], norm_max_sq=limits[1])
@@ -94,8 +92,8 @@ def test_a_waived_norm_is_reported_but_does_not_reject():
 # ---- stage 3 ----
 
 @pytest.mark.parametrize(("tolerance", "departure", "at_place"), [
-    (500, 500, True), (500, 501, False), (500, -500, True), (500, -501, False), (0, 0, True), (0, 1,
-        False), (0, -1, False),
+    (500, 500, True), (500, 501, False), (500, -500, True), (500, -501, False), (0, 0, True), (0, 1, False),
+    (0, -1, False),
 ])
 @pytest.mark.parametrize("cycle_start", [5_000_000, 2**32 - 40_000, 2**32 - 39_600])
 def test_place_in_the_cycle(tolerance, departure, at_place, cycle_start):
@@ -195,9 +193,7 @@ def test_factor_by_hand(period, interval, factor):
 
 
 def test_factor_over_all_periods_at_both_ends_of_the_interval():
-    """The checks of the named values hold for every leading part of a period, with the bits below it 0 or
-    1.
-    """
+    """The ranges hold for every leading part of a period, with the bits below it all 0 or all 1."""
     for k in (0, 1, 9):
         for leading in range(2**14, 2**15):
             for period in {leading << k, (leading + 1 << k) - 1}:

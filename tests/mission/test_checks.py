@@ -106,6 +106,11 @@ REFUSED = {
         "body.inertia_kg_m2: principal moments 0, 1.5 and 2 kg m², must each be in [1e-05, 1000] (from xx "
         "1, yy 1, zz 1.5, xy 1, xz 0, yz 0 kg m²)",
     ),
+    "too large": (
+        inertia(1000, 1000, 1000, xy=1),
+        "body.inertia_kg_m2: principal moments 999, 1000 and 1001 kg m², must each be in [1e-05, 1000] "
+        "(from xx 1000, yy 1000, zz 1000, xy 1, xz 0, yz 0 kg m²)",
+    ),
     # ½ (3 ± 1) from the x, y block, and 3.001 > 1 + 2.
     "triangle": (
         inertia(1.5, 1.5, 3.001, xy=0.5),

@@ -111,7 +111,9 @@ def test_wrong_shapes(base_tree, path):
         put(base_tree, path, value)
         (problem,) = read_tree(base_tree).problems
         assert problem.startswith(f"{path}: ")
-        assert f"must be {' × '.join(map(str, key.shape))} " in problem
+        size = " × ".join(map(str, key.shape))
+        legal = f"numbers, each in {key.limits} {key.unit}" if key.limits else "texts"
+        assert problem.endswith(f"must be {size} {legal}")
 
 
 @pytest.mark.parametrize("value", [math.nan, math.inf, -math.inf])

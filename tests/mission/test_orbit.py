@@ -85,6 +85,7 @@ def changed(line: int, start: int, text: str) -> tuple[str, str]:
         ((LINES[0], LINES[1][:67] + "3" + LINES[1][68]), ["[1]: checksum ", f"{LINES[1][68]} in the last"]),
         (changed(1, 2, "99998"), ["different satellites", '"99999"', '"99998"']),
         (changed(0, 18, "79"), ["[0]: epoch 1979-03-14T09:29:59.999712Z", "must be in [1980"]),
+        (changed(0, 18, "30"), ["[0]: epoch 2030-03-14T09:29:59.999712Z", "2030-01-01T00:00:00Z)"]),
         (changed(1, 26, "9999999"), ["sgp4 error 4: semilatus rectum is less than zero"]),
         (changed(1, 52, "00.00000000"), ["cannot be propagated, sgp4 error 2"]),
         (changed(1, 52, " 9.00000000"), ["lowest altitude", "highest altitude", "must be in [200, 2000]"]),

@@ -1,0 +1,5 @@
+"""The command `slackwater`."""
+
+from pyharness.cli.main import main
+
+__all__ = ["main"]

@@ -1,0 +1,77 @@
+"""What several commands share: options, the mission, the sources, progress, tables."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Iterable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+
+from tqdm import tqdm
+
+from pyharness.controllers import NAMES
+from pyharness.flight import Sources, find_sources
+from pyharness.mission import demo_path
+
+SHOW_AFTER_S = 2.0
+
+
+class UsageError(Exception):
+    """The options do not make sense together, or a value is out of its range."""
+
+
+def add_mission(parser: argparse.ArgumentParser) -> None:
+    """The positional mission file."""
+    parser.add_argument(
+        "mission", nargs="?", default=str(demo_path()), metavar="MISSION", help="mission file (TOML); default: the demo mission"
+    )
+
+
+def add_sources(parser: argparse.ArgumentParser) -> None:
+    """--sources."""
+    parser.add_argument(
+        "--sources", metavar="DIR", help="folder of the C sources (include/ and src/); default: the checkout's, else the packaged ones"
+    )
+
+
+def add_controller(parser: argparse.ArgumentParser) -> None:
+    """--controller."""
+    parser.add_argument("--controller", default="c", metavar="NAME", help=f"{NAMES}; default: c, the C sources built on this machine")
+
+
+def announce_sources(options: argparse.Namespace) -> Sources:
+    """Find the C sources and say which."""
+    sources = find_sources(options.sources)
+    print(f"sources   {sources.root} ({sources.digest})")
+    return sources
+
+
+@contextmanager
+def progress(what: str, total: int | None = None, unit: str = "cycle") -> Iterator[tqdm]:
+    """A progress bar on stderr that appears once the work has lasted 2 s."""
+    with tqdm(
+        total=total, desc=what, unit=unit, unit_scale=True, delay=SHOW_AFTER_S, leave=False, file=sys.stderr, dynamic_ncols=True,
+        mininterval=0.2,
+    ) as bar:  # fmt: skip
+        yield bar
+
+
+def table(rows: Iterable[Sequence[str]], indent: str = "") -> str:
+    """Columns side by side, as wide as they need to be; the last one is not padded."""
+    rows = [list(map(str, row)) for row in rows]
+    if not rows:
+        return ""
+    widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]) - 1)]
+    return "\n".join(
+        (indent + "  ".join([*(cell.ljust(w) for cell, w in zip(row, widths, strict=False)), row[-1]])).rstrip() for row in rows
+    )
+
+
+def find_vector_folder(given: str | None) -> Path:
+    """--vectors, ./vectors, or those of the checkout. Raises NoVectors with the remedy if there are none."""
+    if given is not None:
+        return Path(given)
+    here = Path("vectors")
+    checkout = Path(__file__).resolve().parents[2] / "vectors"
+    return here if here.is_dir() or not checkout.is_dir() else checkout

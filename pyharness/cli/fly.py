@@ -1,0 +1,126 @@
+"""slackwater fly: one closed-loop flight."""
+
+from __future__ import annotations
+
+import argparse
+import io
+from pathlib import Path
+
+import numpy as np
+
+from pyharness.cli.common import UsageError, add_controller, add_mission, add_sources, announce_sources, progress, table
+from pyharness.compare import compare_with_truth
+from pyharness.controllers import load_controller
+from pyharness.loop import Flight, fly
+from pyharness.mission import load_mission
+from pyharness.review.figures import all_figures
+from pyharness.review.flown import Flown
+from pyharness.review.style import save
+from pyharness.scaling import scale
+from pyharness.scenarios import long_cycles
+from pyharness.whole_files import replacing, write_whole
+
+
+def add_to(commands) -> None:
+    """Add the command."""
+    parser = commands.add_parser(
+        "fly",
+        help="fly a mission in closed loop",
+        description="Fly a mission in closed loop, from tip-off until it should have settled, and tell how it went.",
+    )
+    add_mission(parser)
+    length = parser.add_mutually_exclusive_group()
+    length.add_argument("--cycles", type=int, metavar="N", help="length in control cycles")
+    length.add_argument("--duration", type=float, metavar="S", help="length in seconds; default: an orbit, the hold-off and the dwell")
+    parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
+    parser.add_argument("--rate", type=float, nargs=3, metavar=("X", "Y", "Z"), help="body rate at the start, °/s; default: the tip-off rate")
+    parser.add_argument("--along-field", action="store_true", help="turn the rate at the start along the field")
+    parser.add_argument("--plot", metavar="DIR", help="write the figures into this folder")
+    parser.add_argument("--format", choices=("png", "svg"), default="png", help="of the figures; default: png")
+    parser.add_argument("--csv", metavar="FILE", help="write a table with a row for each cycle, in physical units")
+    add_controller(parser)
+    add_sources(parser)
+    parser.set_defaults(run=run)
+
+
+def run(options: argparse.Namespace) -> int:
+    """Run the command."""
+    scaling = scale(load_mission(options.mission))
+    cycles = _cycles(options, scaling)
+    if options.seed < 0:
+        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
+    controller = load_controller(options.controller, announce_sources(options))
+    rate = tuple(options.rate) if options.rate else None
+    if rate and not np.isfinite(rate).all():
+        raise UsageError("--rate: must be three finite numbers in °/s")
+    with progress("flying", cycles) as bar:
+        (record,) = fly([Flight(scaling, cycles, options.seed, rate, options.along_field)], controller, bar.update)
+    comparison = compare_with_truth(scaling, record.inputs, record.outputs, controller.interface.header)
+    flown = Flown(scaling.mission.name, record, comparison, controller.interface)
+    print(f"mission   {scaling.mission.name} ({scaling.mission.digest}), config 0x{scaling.config['digest']:08x}")
+    print(f"flight    {cycles} cycles, {cycles * scaling.period_s:g} s, seed {options.seed}, controller {controller.name}\n")
+    print(table(_summary(flown)))
+    if options.csv:
+        write_whole(Path(options.csv), _csv(flown))
+        print(f"\ntable     {options.csv}")
+    if options.plot:
+        folder = Path(options.plot)
+        for name, figure in all_figures(flown).items():
+            with replacing(folder / f"{name}.{options.format}") as path:
+                save(figure, path, options.format)
+        print(f"figures   {folder}")
+    return 0
+
+
+def _cycles(options: argparse.Namespace, scaling) -> int:
+    if options.cycles is not None:
+        cycles = options.cycles
+    elif options.duration is not None and np.isfinite(options.duration):
+        cycles = int(np.ceil(options.duration / scaling.period_s))
+    else:
+        cycles = long_cycles(scaling)
+    if not 1 <= cycles <= 1_000_000:
+        raise UsageError(f"length: {cycles} cycles, must be in [1, 1000000]")
+    return cycles
+
+
+def _summary(flown: Flown) -> list[tuple[str, str]]:
+    rate, time = flown.record.true_rate_deg_s, flown.record.time_s
+    below = np.flatnonzero(rate < 0.5)
+    settled = flown.settled_at
+    driven = max(int(flown.driven.sum()), 1)
+    saturated = flown.saturated.any(axis=1).sum() / driven
+    rejected = int((~flown.trusted).sum())
+    error = flown.comparison
+    return [
+        ("true rate, start and end", f"{rate[0]:.2f} °/s, {rate[-1]:.3f} °/s"),
+        ("first below 0.5 °/s", f"{time[below[0]]:.0f} s" if len(below) else "not reached"),
+        ("settled (handover)", "not reached" if settled is None else f"{time[settled]:.0f} s, true rate then {rate[settled]:.3f} °/s"),
+        ("saturated", f"{saturated:.1%} of the cycles with damping"),
+        ("samples not trusted", f"{rejected} of {flown.cycles}, {int(flown.bit('BLANKED').sum())} of them inside a blanking time"),
+        ("short pulses dropped", f"{int(error.dropped.sum())}"),
+        ("mean duty x, y, z", "  ".join(f"{d:.1%}" for d in flown.duty.mean(axis=0))),
+        ("apart from the truth", f"at most {error.command_error_a_m2.max() * 1e3:.3g} mA m², {error.used:.2f} of the bound"),
+    ]  # fmt: skip
+
+
+def _csv(flown: Flown) -> str:
+    record = flown.record
+    columns = {"time_s": record.time_s}
+    vectors = {
+        "true_rate_deg_s": np.degrees(record.rate_rad_s),
+        "true_field_nt": record.field_t * 1e9,
+        "command_a_m2": flown.commanded_a_m2,
+        "applied_a_m2": flown.applied_a_m2,
+        "ticks": record.outputs["ticks"],
+    }
+    for name, values in vectors.items():
+        columns |= {f"{name}_{axis}": values[:, i] for i, axis in enumerate("xyz")}
+    columns["estimate_deg_s"] = flown.estimate_deg_s
+    modes = [flown.interface.mode_name(int(mode)) for mode in record.outputs["mode"]]
+    text = io.StringIO()
+    text.write(",".join([*columns, "mode", "status"]) + "\n")
+    for i, row in enumerate(zip(*columns.values(), strict=True)):
+        cells = ["" if np.isnan(value) else f"{value:.9g}" for value in row]
+        text.write(",".join([*cells, modes[i], f"0x{record.outputs['status'][i]:06x}"]) + "\n")
+    return text.getvalue()

@@ -1,0 +1,49 @@
+"""slackwater scale: the integers of a mission."""
+
+from __future__ import annotations
+
+import argparse
+import json
+from pathlib import Path
+
+from pyharness.cli.common import add_mission, add_sources, announce_sources, table
+from pyharness.describe import c_header, describe_config, describe_resolution
+from pyharness.flight import Interface, find_sources
+from pyharness.mission import load_mission
+from pyharness.scaling import scale
+from pyharness.whole_files import write_whole
+
+
+def add_to(commands) -> None:
+    """Add the command."""
+    parser = commands.add_parser(
+        "scale",
+        help="turn a mission into the controller's integers",
+        description="Turn a mission file into the controller's integer configuration and show what each integer stands for.",
+    )
+    add_mission(parser)
+    parser.add_argument("--header", metavar="FILE", help="also write the configuration as a C header")
+    parser.add_argument("--json", action="store_true", help="print the bare integers as JSON, for other tools")
+    add_sources(parser)
+    parser.set_defaults(run=run)
+
+
+def run(options: argparse.Namespace) -> int:
+    """Run the command."""
+    mission = load_mission(options.mission)
+    scaling = scale(mission)
+    if options.json:
+        interface = Interface(find_sources(options.sources))
+        print(json.dumps(scaling.config, indent=2))
+    else:
+        interface = Interface(announce_sources(options))
+        print(f"mission   {mission.name} ({mission.source}, {mission.digest})")
+        print(f"config    0x{scaling.config['digest']:08x}\n")
+        print(table(describe_resolution(scaling)), "\n")
+        rows = [(row.name, " ".join(map(str, row.integers)), row.value) for row in describe_config(scaling, interface)]
+        print(table([("field", "integers", "meaning"), *rows]))
+    if options.header:
+        write_whole(Path(options.header), c_header(scaling, interface))
+        if not options.json:
+            print(f"\nwritten   {options.header}")
+    return 0

@@ -1,0 +1,92 @@
+"""slackwater trace: one cycle, stage by stage, integers beside physical values."""
+
+from __future__ import annotations
+
+import argparse
+
+from pyharness.cli.common import UsageError, add_controller, add_mission, add_sources, announce_sources, progress, table
+from pyharness.controllers import load_controller
+from pyharness.flight.records import columns, to_columns
+from pyharness.loop import Flight, Record, fly
+from pyharness.mission import load_mission
+from pyharness.scaling import Scaling, scale
+from pyharness.truth import Truth, TruthStep
+from pyharness.vectors.check import in_stage_order, stage_of
+
+
+def add_to(commands) -> None:
+    """Add the command."""
+    parser = commands.add_parser(
+        "trace",
+        help="show one cycle stage by stage",
+        description="Fly a mission up to one cycle and show that cycle: inputs, every stage's integers with their physical values, "
+        "what the status word says, and the truth beside the command.",
+    )
+    add_mission(parser)
+    parser.add_argument("--cycle", type=int, default=200, metavar="N", help="which cycle, from 0; default: 200")
+    parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
+    parser.add_argument("--along-field", action="store_true", help="start with the spin along the field")
+    add_controller(parser)
+    add_sources(parser)
+    parser.set_defaults(run=run)
+
+
+def run(options: argparse.Namespace) -> int:
+    """Run the command."""
+    if options.cycle < 0 or options.seed < 0:
+        raise UsageError("--cycle and --seed: must be 0 or more")
+    scaling = scale(load_mission(options.mission))
+    controller = load_controller(options.controller, announce_sources(options))
+    flight = Flight(scaling, options.cycle + 1, seed=options.seed, along_field=options.along_field)
+    with progress("flying", flight.cycles) as bar:
+        (record,) = fly([flight], controller, bar.update)
+    truth = Truth([scaling])
+    for i in range(flight.cycles):
+        step = truth.step(record.inputs[i : i + 1], record.outputs[i : i + 1])
+    print(f"mission   {scaling.mission.name} ({scaling.mission.digest}), controller {controller.name}")
+    print(f"cycle     {options.cycle}, {record.time_s[-1]:.6g} s after the first sample; true rate {record.true_rate_deg_s[-1]:.4g} °/s\n")
+    print(table(_rows(record, scaling)))
+    print("\n" + table(_truth_rows(record, scaling, step)))
+    print("\n" + "\n".join(_told(record, controller.interface)))
+    return 0
+
+
+def _rows(record: Record, scaling: Scaling) -> list[tuple[str, str, str, str]]:
+    rows = [("stage", "value", "integers", "physical")]
+    for title, records in (("inputs", record.inputs), ("outputs", record.outputs)):
+        names = [f"{title}.{c}" for c in columns(records.dtype)]
+        values = to_columns(records[-1:])[0].tolist()
+        order = in_stage_order(names) if title == "outputs" else range(len(names))
+        groups: dict[str, list[int]] = {}
+        for i in order:
+            groups.setdefault(names[i].partition("[")[0], []).append(i)
+        previous = ""
+        for group, indices in groups.items():
+            stage = "inputs" if title == "inputs" else stage_of(group)
+            sizes = [scaling.size_of(names[i].partition(".")[2]) for i in indices]
+            physical = "  ".join(f"{s.value(values[i]):.5g}" for i, s in zip(indices, sizes, strict=True) if s)
+            unit = f" {sizes[0].unit}" if sizes[0] else ""
+            integers = "  ".join(str(values[i]) for i in indices)
+            rows.append((stage if stage != previous else "", group.rpartition(".")[2], integers, physical + unit))
+            previous = stage
+    return rows
+
+
+def _truth_rows(record: Record, scaling: Scaling, step: TruthStep) -> list[tuple[str, str, str, str, str]]:
+    rows = [("truth", "controller", "truth", "apart", "bound")]
+    command, ticks = record.outputs["trace"]["saturation"]["command"][-1], record.outputs["trace"]["pulses"]["ticks"][-1]
+    for axis, name in enumerate("xyz"):
+        size = scaling.command_a_m2(axis) * 1e3
+        apart = abs(command[axis] - step.command[axis, 0]) * size
+        rows.append((f"dipole {name}, mA m²", f"{command[axis] * size:.4f}", f"{step.command[axis, 0] * size:.4f}", f"{apart:.4f}",
+                     f"{step.command_bound[axis, 0] * size:.4f}"))  # fmt: skip
+    for axis, name in enumerate("xyz"):
+        apart = abs(ticks[axis] - step.ticks[axis, 0])
+        rows.append((f"pulse {name}, ticks", f"{ticks[axis]}", f"{step.ticks[axis, 0]:.2f}", f"{apart:.2f}", f"{step.ticks_bound[axis, 0]:.2f}"))
+    return rows
+
+
+def _told(record: Record, interface) -> list[str]:
+    output = record.outputs[-1]
+    texts = interface.status_texts(int(output["status"])) or ["nothing to report"]
+    return [f"mode      {interface.mode_name(int(output['mode']))}", *(f"status    {text}" for text in texts)]

@@ -1,0 +1,144 @@
+"""The integer configuration in words: what each field holds, and the physical value of its integers."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from pyharness.flight import Interface
+from pyharness.scaling import Q15, Scaling
+
+
+@dataclass(frozen=True)
+class Row:
+    """One field of the configuration."""
+
+    name: str  # "path.mag.matrix"
+    integers: tuple[int, ...]
+    value: str  # what they stand for, with unit; "" where they stand for themselves
+
+
+def describe_config(scaling: Scaling, interface: Interface) -> list[Row]:
+    """Every field, in the order of mrd.h."""
+    return [Row(name, integers, _value(name, integers, scaling, interface)) for name, integers in flatten(scaling.config)]
+
+
+def describe_resolution(scaling: Scaling) -> list[tuple[str, str]]:
+    """What one count is worth, and how far the counts reach: (quantity, text)."""
+    s, deg = scaling, math.degrees
+    rows = [
+        ("field", f"{s.field_t * 1e9:.4g} nT a count, up to {s.field_t * 32767e6:.4g} µT"),
+        ("derivative of the field", f"{s.field_t / s.period_s * 1e9:.4g} nT/s a count, up to {s.field_t / s.period_s * 32767e6:.4g} µT/s"),
+        ("rate", f"{deg(s.rate_rad_s):.4g} °/s a count, up to {deg(s.rate_rad_s) * 32767:.4g} °/s"),
+    ]  # fmt: skip
+    for axis, limit in zip("xyz", s.dipole_a_m2, strict=True):
+        rows.append((f"command on {axis}", f"{limit / Q15 * 1e6:.4g} µA m² a count, up to {limit:.4g} A m² over the cycle"))
+    tick = s.timeline.tick_us
+    rows.append(("pulse", f"{tick} µs a tick, up to {s.config['path']['window_ticks']} ticks"))
+    rows.append(("gain", f"k = {s.gain.k_am2_s_per_t:.4g} A m² s/T, K = {s.gain.K_n_m_s:.4g} N m s at the rms field of "
+                         f"{s.gain.rms_field_t * 1e6:.4g} µT, from {s.gain.origin}"))  # fmt: skip
+    return rows
+
+
+def flatten(config: dict, prefix: str = "") -> Iterator[tuple[str, tuple[int, ...]]]:
+    """(name, integers) of every field of a nested configuration."""
+    for key, value in config.items():
+        if isinstance(value, dict):
+            yield from flatten(value, f"{prefix}{key}.")
+        else:
+            yield f"{prefix}{key}", value if isinstance(value, tuple) else (value,)
+
+
+def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interface) -> str:
+    leaf = name.rpartition(".")[2]
+    number = integers[0]
+    if leaf.endswith("_us"):
+        return _all(integers, 1e-3, "ms")
+    if leaf.endswith("_ticks"):
+        return _all(integers, s.timeline.tick_us * 1e-3, "ms")
+    if leaf in ("law", "gain_scaling", "saturation", "settle_by"):
+        prefix = {"law": "MRD_LAW_", "gain_scaling": "MRD_GAIN_", "saturation": "MRD_SATURATE_", "settle_by": "MRD_SETTLE_BY_"}[leaf]
+        return interface.header.named(prefix)[number].lower().replace("_", " ")
+    if leaf in ("settled_rate", "wake_rate"):
+        return _all(integers, math.degrees(s.rate_rad_s), "°/s")
+    if leaf in ("settle_dwell", "wake_dwell"):
+        return _all(integers, s.period_s, "s")
+    if leaf in ("norm_min_sq", "norm_max_sq"):
+        return f"{math.sqrt(number) * s.field_t * 1e6:.4g} µT"
+    if leaf == "filter_gain":
+        return "no low-pass" if number == Q15 else f"pole {1 - number / Q15:.4g}"
+    if leaf == "hold_off_s":
+        return f"{number} s"
+    if name.startswith("path.mag."):
+        return _sensor(leaf, integers, s.config["path"]["mag"]["shift"], s.raw_field_t * 1e9, s.field_t * 1e9, "nT")
+    if name.startswith("path.gyro.") and s.raw_rate_rad_s is not None:
+        raw, count = math.degrees(s.raw_rate_rad_s), math.degrees(s.rate_rad_s)
+        return _sensor(leaf, integers, s.config["path"]["gyro"]["shift"], raw, count, "°/s")
+    if leaf == "mantissa" and "_gain." in name:
+        shifts = s.config["path"][name.split(".")[1]]["shift"]
+        return "  ".join(f"{m / 2.0**h:.5g}" for m, h in zip(integers, shifts, strict=True)) + " in counts"
+    if leaf == "digest":
+        return f"0x{number:08x}"
+    return ""
+
+
+def _sensor(leaf: str, integers: tuple[int, ...], shift: int, raw: float, count: float, unit: str) -> str:
+    if leaf == "matrix":
+        return "  ".join(f"{m / 2**shift * count / raw:.4f}" for m in integers)
+    if leaf == "offset":
+        return _all(integers, count, unit)
+    return f"{integers[0] * raw:.6g} {unit}" if leaf == "limit" else ""
+
+
+def _all(integers: tuple[int, ...], step: float, unit: str) -> str:
+    return "  ".join(f"{i * step:.5g}" for i in integers) + f" {unit}"
+
+
+def c_header(scaling: Scaling, interface: Interface) -> str:
+    """A C header that defines `mission_config`, with the physical value beside each integer."""
+    rows = {row.name: row for row in describe_config(scaling, interface)}
+    lines = [
+        "/*",
+        f" * Integer configuration of the mission {_comment(scaling.mission.name)},",
+        f" * written by `slackwater scale --header` from mission file {scaling.mission.digest}. Do not edit: change the mission and write anew.",
+        " * A reference, not flight-qualified; show the polarity of every coil and sensor axis on the hardware.",
+        " */",
+        "#ifndef MISSION_CONFIG_H",
+        "#define MISSION_CONFIG_H",
+        "",
+        '#include "mrd.h"',
+        "",
+        *(f"/* {what}: {text} */" for what, text in describe_resolution(scaling)),
+        "",
+        "static const mrd_config mission_config = {",
+        *_initialiser(scaling.config, rows, ""),
+        "};",
+        "",
+        "#endif",
+        "",
+    ]
+    return "\n".join(lines)
+
+
+def _initialiser(config: dict, rows: dict[str, Row], prefix: str) -> Iterator[str]:
+    indent = "    " * (prefix.count(".") + 1)
+    for key, value in config.items():
+        name = f"{prefix}{key}"
+        if isinstance(value, dict):
+            yield f"{indent}.{key} = {{"
+            yield from _initialiser(value, rows, f"{name}.")
+            yield f"{indent}}},"
+        else:
+            integers = [_literal(i) for i in (value if isinstance(value, tuple) else (value,))]
+            body = f"{{{', '.join(integers)}}}" if isinstance(value, tuple) else integers[0]
+            comment = f" /* {_comment(rows[name].value)} */" if rows[name].value else ""
+            yield f"{indent}.{key} = {body},{comment}"
+
+
+def _literal(value: int) -> str:
+    return f"{value}u" if value > 32767 else str(value)  # only unsigned fields hold more
+
+
+def _comment(text: str) -> str:
+    return text.replace("*/", "* /").replace("\n", " ")
