@@ -1,8 +1,9 @@
 """Rigid-body motion of N spacecraft, integrated from one mid-sample to the next.
 
 State (7, N): the attitude as a unit quaternion (scalar first) that takes body vectors to inertial axes, then
-the rate of the body against inertial axes, in body axes, rad/s. Equations: q̇ = ½ q ⊗ (0, ω); J ω̇ = (J ω) ×
-ω + torque.
+the rate of the body against inertial axes, in body axes, rad/s.
+
+    q̇ = ½ q ⊗ (0, ω)        J ω̇ = (J ω) × ω + torque
 """
 
 from __future__ import annotations

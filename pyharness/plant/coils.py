@@ -20,7 +20,7 @@ from functools import lru_cache
 
 import numpy as np
 
-from pyharness.mission.model import Mission
+from pyharness.mission.model import AXES, Mission
 from pyharness.plant.batch import round_to, spacecraft_last
 from pyharness.plant.cycle import Timeline
 
@@ -102,9 +102,19 @@ class Drive:
     switch_off_us: np.ndarray  # (3, N) int64, after the start of the drive window; 0 for a coil not driven
 
 
+def _check(name: str, width: np.ndarray, limit: np.ndarray) -> None:
+    wrong = np.argwhere((width < 0) | (width > limit))
+    if wrong.size:
+        axis, craft = wrong[0]
+        raise ValueError(
+            f"{name}: pulse of {width[axis, craft]} ticks on {AXES[axis]} of spacecraft {craft}, "
+            f"must be in [0, {limit[craft]}]"
+        )
+
+
 class Coils:
-    """The three coils of N spacecraft, at each spacecraft's own supply voltage (V, shape (N,); None:
-    nominal)."""
+    """The three coils of N spacecraft; `supply_v` (N,) is the voltage that drives them, by default
+    nominal."""
 
     def __init__(self, missions: Sequence[Mission], supply_v: np.ndarray | None = None):
         timelines = [Timeline.of(m) for m in missions]
@@ -122,25 +132,19 @@ class Coils:
         self._last_tick = np.array([t.ticks_to_next_sample for t in timelines])
 
         lags = [(Timeline.of(m), [coil.time_constant_ms for coil in m.coil]) for m in missions]
-        # Both (4 powers of ticks, 4 powers of x, 3, N); without L/R for the time a core's remanence is
-        # overridden.
+        # A core's remanence is overridden for just as long as the pulse lasts: without L/R.
         pulse = spacecraft_last([_pulse_cubic(t, tau) for tau in taus] for t, taus in lags)
         rectangle = spacecraft_last([_pulse_cubic(t, 0.0) for _ in taus] for t, taus in lags)
+        # (4 powers of ticks, pulse and rectangle, 4 powers of x, 3, N)
         self._by_ticks = np.ascontiguousarray(np.stack((pulse, rectangle)).transpose(3, 0, 2, 1, 4))
         self._before = spacecraft_last(_before_window_cubic(t) for t in timelines)[:, None]
         self._after = -self._before
         self._after[0] += 1.0
-        self._tabulate(lags)
-
-    def _tabulate(self, lags: Sequence[tuple[Timeline, list[float]]]) -> None:
-        """Lay the edge tables of all distinct coils end to end; `_first` says where each coil's begins."""
-        begins: dict[tuple[Timeline, float], int] = {}
-        tables, length = [], 0
-        for key in dict.fromkeys((t, tau) for t, taus in lags for tau in taus):
-            tables.append(_edge_tables(*key))
-            begins[key] = length
-            length += tables[-1][0].size
-        self._reached, self._left = (np.concatenate(column) for column in zip(*tables, strict=True))
+        # The edge tables of all distinct coils, end to end; `_first` says where each coil's begins.
+        tables = {(t, tau): _edge_tables(t, tau) for t, taus in lags for tau in taus}
+        self._reached, self._left = (np.concatenate(tables) for tables in zip(*tables.values(), strict=True))
+        ends = np.cumsum([reached.size for reached, _ in tables.values()])
+        begins = dict(zip(tables, [0, *ends], strict=False))
         self._first = np.array([[begins[t, tau] for tau in taus] for t, taus in lags]).T
 
     @property
@@ -154,20 +158,17 @@ class Coils:
 
     def _widths(self, ticks: np.ndarray, late_ticks: np.ndarray | None) -> np.ndarray:
         width = np.abs(ticks)
-        if (width > self._window_ticks).any():
-            raise ValueError(f"ticks: pulse of {width.max()} ticks, longer than its drive window")
+        _check("ticks", width, self._window_ticks)
         if late_ticks is None:
             return width
         width = width + np.where(width > 0, late_ticks, 0)
-        if (width < 0).any() or (width > self._last_tick).any():
-            raise ValueError("late_ticks: switch-off must lie between the pulse's start and the next sample")
+        _check("ticks + late_ticks", width, self._last_tick)
         return width
 
     def drive(self, state: CoilState, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> Drive:
         """Pulses of signed `ticks` (3, N) ints, each switched off `late_ticks` after it should have been.
 
-        Raises ValueError for a pulse longer than the drive window, or switched off after the next sample's
-        start.
+        Raises ValueError for a pulse longer than the drive window, or still on when the next sample starts.
         """
         width = self._widths(ticks, late_ticks)
         strength = self._full * np.sign(ticks)
@@ -182,7 +183,7 @@ class Coils:
 
     def waveform(self, ticks: np.ndarray, seconds: np.ndarray,
                  late_ticks: np.ndarray | None = None) -> np.ndarray:
-        """Exact pulse dipole (K, 3, N), A m², at K times in s after the start of the drive window. For
+        """Exact pulse dipole (K, 3, N), A m², at K times, s after the start of the drive window; for
         figures."""
         width_s = self._widths(ticks, late_ticks) * self._tick_us * 1e-6
         t = np.asarray(seconds, dtype=float)[:, None, None]

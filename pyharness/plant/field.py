@@ -1,5 +1,4 @@
-"""What the orbit does to the spacecraft: geomagnetic field, direction of flight, gradient of gravity, in TEME
-axes.
+"""What the orbit brings, in TEME axes: geomagnetic field, direction of flight, gradient of gravity.
 
 All three are tabulated once along the orbit at knots about 30 s apart, rounded to a grid so that the table
 has the same bits on every machine, and interpolated by cubic Hermite polynomials, whose slopes are
@@ -10,7 +9,7 @@ end. A cycle here runs from one mid-sample to the next, and knots fall on its en
 from __future__ import annotations
 
 from collections.abc import Sequence
-from datetime import datetime, timedelta
+from datetime import datetime
 from functools import lru_cache
 from typing import Protocol
 
@@ -23,8 +22,8 @@ from pyharness.plant.cycle import Timeline
 from pyharness.plant.orbit import EARTH_MU, Trajectory
 
 FIELD, FLIGHT, GRADIENT = range(3)
-"""Vectors of an environment: field in T; unit velocity; r̂ √(3μ/r³) in 1/s, so that s × J s is the torque of
-gravity."""
+"""Vectors of an environment: field, T; unit velocity; s = r̂ √(3μ/r³), 1/s, whose s × J s is gravity's
+torque."""
 
 KNOT_US = 30_000_000
 """Knots are this far apart, or the next whole number of cycles below."""
@@ -37,16 +36,13 @@ _SLOPE = ((3, 45.0 / 60.0), (2, -9.0 / 60.0), (1, 1.0 / 60.0))
 _GUARD = 3
 
 _IGRF_FROM, _IGRF_TO = datetime(1900, 1, 1), datetime(2030, 1, 1)
-_J2000 = datetime(2000, 1, 1, 12)
-_J2000_JULIAN = 2451545.0
 
 
 class Environment(Protocol):
     """Anything that gives the three vectors over a cycle."""
 
     def quadratic(self, cycle: int) -> np.ndarray:
-        """Coefficients of x⁰, x¹, x² over the cycle, x from 0 to 1: (3, 3 components, 3 vectors, N), inertial
-        axes."""
+        """Coefficients of x⁰, x¹, x² over the cycle, x from 0 to 1: (3, 3 components, 3 vectors, N), TEME."""
 
 
 def geomagnetic_field(trajectory: Trajectory, seconds: np.ndarray, date: datetime) -> np.ndarray:
@@ -73,13 +69,9 @@ def geomagnetic_field(trajectory: Trajectory, seconds: np.ndarray, date: datetim
     ))
 
 
-def _knots(trajectory: Trajectory, seconds: np.ndarray) -> np.ndarray:
-    """The three vectors at times in s after the orbit's epoch, on their grids: (K, 3 components, 3 vectors).
-
-    The secular variation over one flight (0.01 nT an hour) is neglected: the date is the flight's middle.
-    """
-    day, fraction = trajectory.julian_date(seconds[[seconds.size // 2]])
-    date = _J2000 + timedelta(days=float(day[0] - _J2000_JULIAN + fraction[0]))
+def _knots(trajectory: Trajectory, seconds: np.ndarray, date: datetime) -> np.ndarray:
+    """The three vectors at times in s after the orbit's epoch, on their grids: (K, 3 components, 3
+    vectors)."""
     position, velocity = trajectory.state(seconds)
     r = norm(position)
     vectors = (
@@ -94,8 +86,11 @@ def _knots(trajectory: Trajectory, seconds: np.ndarray) -> np.ndarray:
 def _hermite(orbit: Orbit, start_us: int, spacing_us: int, intervals: int) -> np.ndarray:
     """Cubics in u from 0 to 1 over each interval, (intervals, 4 powers, 3 components, 3 vectors),
     read-only."""
-    index = np.arange(-_GUARD, intervals + 1 + _GUARD)
-    f = _knots(Trajectory(orbit), (start_us + index * spacing_us) * 1e-6)
+    trajectory = Trajectory(orbit)
+    seconds = (start_us + np.arange(-_GUARD, intervals + 1 + _GUARD) * spacing_us) * 1e-6
+    # The start's date for all: the secular variation is 0.01 nT an hour, and no cycle depends on the number
+    # of intervals.
+    f = _knots(trajectory, seconds, trajectory.date(start_us * 1e-6))
     inner = intervals + 1
     slope = sum(w * (f[2 * _GUARD - i + 1:][:inner] - f[i - 1:][:inner]) for i, w in _SLOPE)
     f = f[_GUARD:-_GUARD]

@@ -7,7 +7,7 @@ of a detumble it is taken as inertial: precession and nutation turn it by about 
 from __future__ import annotations
 
 import math
-from datetime import timezone
+from datetime import datetime, timedelta, timezone
 
 import numpy as np
 from sgp4.api import SGP4_ERRORS, WGS72, Satrec, jday
@@ -23,6 +23,8 @@ EARTH_RADIUS_M = 6378137.0
 _DAYS_1949 = 2433281.5
 """Julian date of 1949-12-31 00:00 UT, from which SGP4 counts epochs."""
 DAY_S = 86400.0
+
+_J2000, _J2000_JULIAN = datetime(2000, 1, 1, 12), 2451545.0
 
 
 def circular_rate(altitude_km: float) -> float:
@@ -94,6 +96,11 @@ class Trajectory:
         """Julian date, UTC, as day and fraction of it."""
         fraction = self._satellite.jdsatepochF + np.asarray(seconds, dtype=float) / DAY_S
         return np.full_like(fraction, self._satellite.jdsatepoch), fraction
+
+    def date(self, seconds: float) -> datetime:
+        """Date and time, UTC."""
+        day, fraction = self.julian_date(seconds)
+        return _J2000 + timedelta(days=float(day - _J2000_JULIAN + fraction))
 
     def state(self, seconds: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Position in m and velocity in m/s, TEME, each (3, K). Raises ValueError where SGP4 fails."""

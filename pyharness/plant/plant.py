@@ -133,7 +133,7 @@ class Plant:
     @property
     def field_inertial(self) -> np.ndarray:
         """True field, TEME axes, T, (3, N)."""
-        return self._environment.quadratic(self._cycle)[0, :, FIELD]
+        return self._environment.quadratic(self._cycle)[0, :, FIELD].copy()
 
     @property
     def field_body(self) -> np.ndarray:

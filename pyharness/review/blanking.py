@@ -21,6 +21,7 @@ class BlankingMargin:
     needed_ms: float
     required_ms: float  # what the gate asks for
     given_ms: float  # what the timeline leaves after the longest pulse
+    chased: float  # demand that reversing a full pulse causes through the core's remanence, part of the limit
 
     @property
     def margin_ms(self) -> float:
@@ -36,6 +37,17 @@ def worst_stray_t_per_a_m2(scaling: Scaling, coil: int) -> float:
 def blanking_needed_ms(time_constant_ms: float, stray: float, tolerated: float) -> float:
     """(L/R) ln(stray field at full dipole / tolerated error); both fields in the same unit."""
     return time_constant_ms * math.log(max(stray / tolerated, 1.0))
+
+
+def chased_remanence(scaling: Scaling, coil: int) -> float:
+    """Demand on a coil's own axis, as a part of its limit, when the remanence of a full pulse changes sign between samples.
+
+    The derivative law takes the change 2 b of the stray field for a turn of the body: m = −k 2 b / T. Positive: it asks for
+    a pulse against the last one, which from 1 on repeats itself for ever; negative: it asks for one more like the last.
+    """
+    part, stray = scaling.mission.coil[coil], scaling.mission.magnetometer.stray_ut_per_a_m2[coil][coil] * 1e-6
+    change_t = 2.0 * part.remanence_fraction * part.dipole_a_m2 * stray
+    return scaling.gain.k_am2_s_per_t * change_t / scaling.period_s / scaling.dipole_a_m2[coil]
 
 
 def blanking_margins(scaling: Scaling) -> list[BlankingMargin]:
@@ -58,4 +70,5 @@ def _margin(scaling: Scaling, index: int) -> BlankingMargin:
         needed_ms=blanking_needed_ms(coil.time_constant_ms, stray_nt, count_nt),
         required_ms=coil.blanking_ms,
         given_ms=timeline.age_at_next_sample_us(timeline.window_ticks) * 1e-3,
+        chased=chased_remanence(scaling, index),
     )

@@ -106,17 +106,20 @@ def test_signs_of_the_rate_law():
     (0, 65535, (65534, 15)),  # limited to the least plausible norm
     (3221028867, 32768, (43693, 32)),  # 49149, 2^31 // 49149 = 43693, e = 16
     (65535, 65535, (65535, 16)),  # reciprocal 32768: 65535·2^15 is below 2^31
-    (65536, 65536 - 1, (65534, 16)),  # e = 1
+    (65536, 65535, (65534, 16)),  # e = 1
 ])
 def test_normalised_gain_by_hand(norm_sq, mantissa, used):
     config = path_config(gain_scaling=MRD_GAIN_NORMALISED)
     gain = {"mantissa": (mantissa,) * 3, "shift": (-1, -2, -3)}
-    if used[1] < 18:
-        gain["shift"] = (0, -1, -2)
-    base = gain["shift"][0]
-    got_mantissa, got_shift = gain_used(config, gain, norm_sq)
-    assert got_mantissa == (used[0],) * 3
-    assert got_shift == tuple(used[1] + base - i for i in range(3))
+    m, h = used
+    assert gain_used(config, gain, norm_sq) == ((m, m, m), (h - 1, h - 2, h - 3))
+
+
+def test_each_axis_is_normalised_by_itself():
+    config = path_config(gain_scaling=MRD_GAIN_NORMALISED)
+    gain = {"mantissa": (32768, 40000, 65535), "shift": (-3, -2, -1)}
+    # norm 65536: e = 1, reciprocal 65535; 40000·65535 = 2621400000 is above 2^31 and >> 16 gives 39999
+    assert gain_used(config, gain, 65536) == ((65535, 39999, 65534), (14, 14, 15))
 
 
 @given(st.integers(32768, 3221028867), st.integers(32768, 65535))
@@ -150,6 +153,8 @@ def saturated(demand, policy):
 @pytest.mark.parametrize("policy", [MRD_SATURATE_PER_AXIS, MRD_SATURATE_KEEP_DIRECTION])
 @pytest.mark.parametrize(("demand", "bits"), [
     ((32767, -32767, 0), ()), ((32768, 0, 0), (MRD_S_SATURATED_X,)), ((0, -32768, 0), (MRD_S_SATURATED_Y,)),
+    ((32768, -32767, 32767), (MRD_S_SATURATED_X,)), ((32767, 32768, -32767), (MRD_S_SATURATED_Y,)),
+    ((-32767, 32767, 32768), (MRD_S_SATURATED_Z,)),
     ((0, 0, 2**30), (MRD_S_SATURATED_Z,)), ((-32768, 5, 40000), (MRD_S_SATURATED_X, MRD_S_SATURATED_Z)),
 ])
 def test_saturation_says_which_axes(policy, demand, bits):

@@ -14,7 +14,7 @@ from pyharness.exact.constants import (
     MRD_S_COMMAND_REFUSED, MRD_S_CONFIG_CORRUPT, MRD_S_COUNT, MRD_S_FELL_BACK, MRD_S_STATE_RESTARTED,
 )
 from exact.samples import fly, make_config, make_inputs, make_state, with_changes
-from strategies import Seeded, any_config, any_inputs, configs, flights, path_configs
+from strategies import Seeded, any_config, any_inputs, configs, flights, inputs_sequences, path_configs
 
 
 def elements(record, fields):
@@ -132,6 +132,16 @@ def test_every_configuration_drawn_is_legal(config):
 @given(path_configs())
 def test_every_configuration_of_a_path_drawn_is_legal(path):
     assert path_check(path) == MRD_OK
+
+
+@settings(max_examples=30)
+@given(st.data())
+def test_every_sequence_drawn_has_its_length_and_fits_its_types(data):
+    sequence = data.draw(inputs_sequences(data.draw(configs()), 4))
+    assert len(sequence) == 4
+    for inputs in sequence:
+        for field, element in elements(inputs, FIELDS["inputs"]):
+            assert type(element) is int and field.lo <= element <= field.hi, field.name
 
 
 def test_sequences_reach_the_deep_stages():

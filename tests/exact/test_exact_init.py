@@ -20,7 +20,7 @@ def sensor_cases(name, code):
     prefix = f"path.{name}."
     return [
         (code, {prefix + "matrix": matrix(-32767, 32767, 1)}, {prefix + "matrix": matrix(-32767, 32767, 2)}),
-        (code, {prefix + "matrix": (32767, -1, 32767) + (0,) * 6},
+        (code, {prefix + "matrix": (32767, -1, 32767) * 3},
             {prefix + "matrix": (32767, -2, 32767) + (0,) * 6}),
         (code, {prefix + "matrix": (0, 0, 0, -32767, 1, 32767, 0, 0, 0)},
             {prefix + "matrix": (0, 0, 0, -32767, -2, 32767, 0, 0, 0)}),

@@ -7,7 +7,7 @@ import pytest
 from pyharness.exact.constants import (
     MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_INHIBIT, MRD_COMMAND_NONE, MRD_COMMAND_RESUME,
     MRD_COMMAND_SAFE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_INHIBIT, MRD_MODE_SAFE,
-    MRD_MODE_SETTLED, MRD_S_COMMAND_REFUSED, MRD_S_FIELD_IMPLAUSIBLE,
+    MRD_MODE_SETTLED, MRD_S_COMMAND_REFUSED, MRD_S_FIELD_IMPLAUSIBLE, MRD_S_NO_PREVIOUS,
 )
 from pyharness.exact.modes import MODES, advance
 from exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state
@@ -59,7 +59,7 @@ def test_mode_table(mode, command):
             "low_power": low_power, "separation_s": separation_s, "command": command, **PULSE})
         refused = expected is None
         assert out["mode"] == state["mode"] == (unaided if refused else expected)
-        assert out["status"] >> MRD_S_COMMAND_REFUSED & 1 == refused
+        assert out["status"] == 1 << MRD_S_NO_PREVIOUS | refused << MRD_S_COMMAND_REFUSED
         assert state["counters"]["refused"] == refused
         assert state["inhibit_commanded"] == (command == MRD_COMMAND_INHIBIT and not refused)
         assert out["ticks"] == ((0, -7, 0) if command == MRD_COMMAND_BENCH and not refused else (0, 0, 0))

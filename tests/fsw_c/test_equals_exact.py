@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from hypothesis import given, settings
+from fsw_c.runs import Bank
 from strategies import Seeded, any_config, any_inputs, any_path_config, flights
 
 from pyharness import exact
@@ -13,24 +14,6 @@ from pyharness.flight.records import to_dict, to_record
 
 ROWS = 100_000
 CYCLES = 200
-
-
-class Bank:
-    """One C controller, stepped with nested dicts."""
-
-    def __init__(self, library: Library, config: dict):
-        self.library, self.interface = library, library.interface
-        self.config = to_record(self.interface.config, config).reshape(1)
-        self.state = np.zeros(1, self.interface.state)
-        library.reset(self.state)
-
-    def run(self, sequence: list[dict]) -> np.ndarray:
-        inputs = np.zeros(len(sequence), self.interface.inputs)
-        for i, values in enumerate(sequence):
-            inputs[i] = to_record(self.interface.inputs, values)
-        outputs = np.zeros(len(sequence), self.interface.outputs)
-        self.library.run(self.state, self.config, inputs, outputs)
-        return outputs
 
 
 def assert_equal_run(library: Library, config: dict, sequence: list[dict]) -> np.ndarray:

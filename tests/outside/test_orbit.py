@@ -57,6 +57,11 @@ def test_sgp4_verification(lines, expected):
     assert velocity.T * 1e-3 == pytest.approx(expected[:, 4:7], abs=1e-8)
 
 
+def test_dates_count_from_the_epoch():
+    assert Trajectory(circular()).date(86400.0 + 1.5) == pytest.approx(
+        datetime(2027, 3, 15, 9, 30, 1, 500_000), abs=timedelta(milliseconds=1))
+
+
 def julian(*date) -> float:
     return 2451545.0 + (datetime(*date) - datetime(2000, 1, 1, 12)) / timedelta(days=1)
 

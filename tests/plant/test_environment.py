@@ -11,6 +11,7 @@ from pyharness.plant.field import FIELD, FLIGHT, GRADIENT, OrbitEnvironment, _he
 from pyharness.plant.orbit import Trajectory, circular_rate
 
 NOW = np.zeros(1)
+DATE = MISSION.orbit.epoch_utc.replace(tzinfo=None)
 
 
 def at(environment, cycle: int, x: float) -> np.ndarray:
@@ -22,7 +23,7 @@ def test_a_cycle_begins_at_mid_sample():
     environment = OrbitEnvironment([MISSION], np.array([100.0]), 600.0)
     # Cycle 60 is the second knot: 30 s on, 70 ms into the cycle.
     assert np.array_equal(environment.quadratic(60)[0, ..., 0],
-                          _knots(Trajectory(MISSION.orbit), np.array([130.07]))[0])
+                          _knots(Trajectory(MISSION.orbit), np.array([130.07]), DATE)[0])
 
 
 def test_cycles_join():
@@ -45,7 +46,7 @@ def test_the_period_need_not_divide_the_knots():
     odd = replace(MISSION, cycle=replace(MISSION.cycle, period_ms=700.0))
     environment = OrbitEnvironment([odd], NOW, 100.0)
     cycle = 71
-    exact = _knots(Trajectory(MISSION.orbit), np.array([0.07 + 0.7 * cycle]))[0]
+    exact = _knots(Trajectory(MISSION.orbit), np.array([0.07 + 0.7 * cycle]), DATE)[0]
     assert np.abs(environment.quadratic(cycle)[0, :, FIELD, 0] - exact[:, FIELD]).max() < 0.03e-9
 
 
@@ -66,6 +67,12 @@ def test_spacecraft_on_one_orbit_share_its_table():
     _hermite.cache_clear()
     OrbitEnvironment([MISSION] * 20, np.zeros(20), 100.0)
     assert _hermite.cache_info().misses == 1
+
+
+def test_it_does_not_depend_on_how_long_the_flight_may_last():
+    short, long = (OrbitEnvironment([MISSION], NOW, seconds) for seconds in (100.0, 20_000.0))
+    for cycle in (0, 100, 199):
+        assert np.array_equal(short.quadratic(cycle), long.quadratic(cycle))
 
 
 def test_beyond_the_duration_it_is_refused():

@@ -145,7 +145,7 @@ def test_counts_follow_the_truth():
 def test_a_late_sample_sees_the_field_turned_on():
     """2 ms at 60 °/s, against the rotation itself."""
     fine = ideal_with(counts_per_ut=600.0, range_ut=50.0)
-    rate = np.radians((40.0, -30.0, 33.0))[:, None]
+    rate = np.radians((-40.0, 30.0, 33.0))[:, None]
     plant = Plant([fine], [0], field=ConstantField(FIELD), attitude=ALIGNED, rate_rad_s=rate)
     for offset_s in (0.0, 2e-3, -2e-3):
         turned = Rotation.from_rotvec(rate[:, 0] * offset_s).inv().apply(FIELD[:, 0])

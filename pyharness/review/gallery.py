@@ -1,0 +1,73 @@
+"""The figures by name, with what to look for in each."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from matplotlib.figure import Figure
+
+from pyharness.review import figures
+from pyharness.review.flown import Flown
+from pyharness.review.magnifier import cycle_figure
+from pyharness.review.style import save
+
+
+@dataclass(frozen=True)
+class Plot:
+    """One kind of figure."""
+
+    name: str
+    title: str
+    caption: str  # what to look for
+    draw: Callable[[Flown], Figure]
+
+
+PLOTS = (
+    Plot(
+        "rates", "Rates and field",
+        "The true rate should fall without rising for long, and the estimate should stay around it. The rate along the field "
+        "cannot be damped at that moment: it falls only as the orbit turns the field in the body.",
+        figures.rates_figure,
+    ),
+    Plot(
+        "dipole", "Dipole, commanded and applied",
+        "Applied should cover commanded while damping, and be zero in every other mode. Strips and triangles show the cycles in "
+        "which the demand was beyond the limit; when the direction is kept, an axis may be reduced without being at its own limit.",
+        figures.dipole_figure,
+    ),
+    Plot(
+        "cycle", "One cycle under the magnifier",
+        "The tails of the last pulses must fall below one magnetometer count before the sample begins. What a core keeps of a "
+        "pulse (dotted) does not decay: blanking does not help against it, and the law sees it change when a pulse changes sign.",
+        cycle_figure,
+    ),
+    Plot(
+        "duty", "Duty and saturation",
+        "Headroom is the distance from the drive window and from 100 % saturated cycles. Duty that stays high after the rate is "
+        "low is not spent on the tumble: look for noise, or for remanence that the law chases.",
+        figures.duty_figure,
+    ),
+    Plot(
+        "samples", "Samples and faults",
+        "Every cycle without a trusted sample is one without a pulse of the derivative law. The first cycle has no previous sample.",
+        figures.samples_figure,
+    ),
+    Plot(
+        "error", "Controller against truth",
+        "The largest error must stay below the bound, which is derived from the rounding of each stage, not fitted. A pulse that "
+        "is dropped because it is too short is outside the bound and has its own line.",
+        figures.error_figure,
+    ),
+)  # fmt: skip
+"""In the order in which a reviewer reads them."""
+
+
+def save_figures(flown: Flown, folder: Path, kind: str = "svg") -> list[Path]:
+    """Save every figure of a flight as folder/<name>.<kind>, "svg" or "png". The folder is made; files are replaced."""
+    folder.mkdir(parents=True, exist_ok=True)
+    paths = [folder / f"{plot.name}.{kind}" for plot in PLOTS]
+    for plot, path in zip(PLOTS, paths, strict=True):
+        save(plot.draw(flown), path, kind)
+    return paths
