@@ -153,8 +153,9 @@ def _path(s: Scaling, problems: list[str]) -> Config:
         "shortest_ticks": max(1, math.ceil(t.shortest_pulse_us / t.tick_us)),
         "polarity": tuple(coil.polarity for coil in mission.coil),
         "filter_gain": _filter_gain(control.low_pass_s, s.period_s),
-        "derivative_gain": _gain(s, s.field_t / s.period_s, 0, problems),
-        "rate_gain": _gain(s, s.rate_rad_s * s.field_t, 16, problems) if gyro else _no_gain(control.gain_scaling, norm_min),
+        "derivative_gain": _gain(s, "derivative law", s.field_t / s.period_s, 0, problems),
+        "rate_gain": _gain(s, "rate-damping law", s.rate_rad_s * s.field_t, 16, problems) if control.law == "rate"
+        else _no_gain(control.gain_scaling, norm_min),
     }  # fmt: skip
 
 
@@ -243,22 +244,21 @@ def _mantissa(value: float) -> tuple[int, int]:
     return (mantissa, shift) if mantissa < 65536 else (32768, shift - 1)
 
 
-def _gain(s: Scaling, input_si: float, input_shift: int, problems: list[str]) -> Config:
+def _gain(s: Scaling, law: str, input_si: float, input_shift: int, problems: list[str]) -> Config:
     """The gain of one law: command counts per count of its input, of size `input_si` [T/s] and shifted down by `input_shift`."""
     control = s.mission.control
     normalised = control.gain_scaling == "normalised"
     strength = s.gain.K_n_m_s / s.field_t**2 if normalised else s.gain.k_am2_s_per_t
     pairs = [_mantissa(strength * input_si / s.command_a_m2(axis) * 2.0**input_shift) for axis in range(3)]
     least, greatest = _shift_range(s)
-    for axis, (_, shift) in zip(AXES, pairs, strict=True):
-        if not least <= shift <= greatest:
-            given = s.gain.K_n_m_s if normalised else s.gain.k_am2_s_per_t
-            unit = "N m s" if normalised else "A m² s/T"
-            low, high = given * 2.0 ** (shift - greatest), given * 2.0 ** (shift - least)
-            problems.append(
-                f"{s.gain.origin}: {given:.4g} {unit} on coil.{axis}: its integer mantissa would be lost, must be in about "
-                f"[{low:.2g}, {high:.2g}] {unit}"
-            )
+    if not all(least <= shift <= greatest for _, shift in pairs):
+        given, unit = (s.gain.K_n_m_s, "N m s") if normalised else (s.gain.k_am2_s_per_t, "A m² s/T")
+        low = max(given * Q15 / m * 2.0 ** (shift - greatest) for m, shift in pairs)
+        high = min(given * 65535 / m * 2.0 ** (shift - least) for m, shift in pairs)
+        problems.append(
+            f"{s.gain.origin}: {given:.4g} {unit}: its integer mantissa would be lost in the {law} on coil.x, coil.y or coil.z, "
+            f"must be in [{low * 1.005:.3g}, {high * 0.995:.3g}] {unit}"
+        )
     return {"mantissa": tuple(m for m, _ in pairs), "shift": tuple(n for _, n in pairs)}
 
 

@@ -88,7 +88,7 @@ enum {
     MRD_S_FIELD_IMPLAUSIBLE = 2,     /* norm of the field outside its plausible range */
     MRD_S_SAMPLE_OFF_TIME = 3,       /* sample not at its place in the cycle */
     MRD_S_SWITCH_OFF_UNSTAMPED = 4,  /* a coil was commanded and its switch-off never stamped */
-    MRD_S_BLANKED = 5,               /* sample inside the blanking time of a coil */
+    MRD_S_BLANKED = 5,               /* sample inside the blanking time of a coil, or nothing known of the coils yet */
     MRD_S_NO_PREVIOUS = 6,           /* trusted sample without a trusted one before it */
     MRD_S_INTERVAL_SHORT = 7,        /* samples less than half a period apart */
     MRD_S_INTERVAL_LONG = 8,         /* samples more than one and a half periods apart */
@@ -116,7 +116,7 @@ enum {
     MRD_E_GYRO = 2,         /* gyro_fitted 0 or 1; if 1, gyro within the ranges of mag */
     MRD_E_NORM = 3,         /* norm_min_sq and norm_max_sq: 32768 <= min <= max <= 3221028867 */
     MRD_E_PERIOD = 4,       /* period_us: in [16384, 10000000] */
-    MRD_E_SAMPLE = 5,       /* half_sample_us up to phase_us, phase_us below period_us, tolerance_us below a quarter of period_us */
+    MRD_E_SAMPLE = 5,       /* half_sample_us up to phase_us, phase_us below period_us, tolerance_us below a quarter of period_us, rounded down */
     MRD_E_WINDOW = 6,       /* tick_us at least 1, window_ticks in [1, 16384], shortest_ticks in [1, window_ticks] */
     MRD_E_TIMELINE = 7,     /* delay_us at least half_sample_us, the drive window ends within the period and leaves every coil its blanking_us before the next sample */
     MRD_E_FILTER = 8,       /* filter_gain: in [1, 32768] */
@@ -193,7 +193,7 @@ typedef struct {
 typedef struct {
     uint32_t cycle_start_us;   /* us, wraps */
     uint32_t sample_us;        /* us, wraps: mid-sample; ignored where mag_valid is 0 */
-    uint32_t switch_off_us[3]; /* us, wraps: last actual switch-off of each coil; may be refreshed while it is off */
+    uint32_t switch_off_us[3]; /* us, wraps: last actual switch-off of each coil; may be set anew while it is off */
     int16_t mag_raw[3];        /* raw counts */
     int16_t gyro_raw[3];       /* raw counts */
     uint16_t mag_valid;        /* 0: no sample */

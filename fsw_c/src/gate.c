@@ -1,7 +1,8 @@
 /*
  * Stage 3: gate. Stamps in us, which wrap after 71.6 min: every difference is unsigned and wraps with them. An age of
  * 2^31 or more is a switch-off that lies ahead of the sample. A switch-off that was once old enough stays old while
- * its stamp does not change, so a coil at rest for hours is never taken for one just switched off.
+ * its stamp does not change, so a coil at rest for hours is never taken for one just switched off. In the first cycle
+ * after a reset nothing is known of the coils, and no sample is trusted.
  */
 #include "arith.h"
 #include "stages.h"
@@ -27,11 +28,13 @@ uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mr
         status |= MRD_BIT(MRD_S_SAMPLE_OFF_TIME);
     }
     for (i = 0; i < 3u; i++) {
-        uint16_t fresh = !state->off_known || inputs->switch_off_us[i] != state->switch_off_us[i];
+        uint16_t fresh = inputs->switch_off_us[i] != state->switch_off_us[i];
         uint32_t age_us = start_us - inputs->switch_off_us[i];
         uint16_t clear;
 
-        if (!fresh && state->ticks[i] != 0) {
+        if (!state->off_known) {
+            clear = 0;
+        } else if (!fresh && state->ticks[i] != 0) {
             status |= MRD_BIT(MRD_S_SWITCH_OFF_UNSTAMPED);
             clear = 0;
         } else if (!fresh && state->off_clear[i]) {
@@ -40,7 +43,7 @@ uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mr
         } else {
             clear = age_us >= config->blanking_us[i] && age_us <= age_saturated_us;
         }
-        if (!clear) {
+        if (!clear && have_sample) {
             status |= MRD_BIT(MRD_S_BLANKED);
         }
         trace->age_us[i] = age_us;

@@ -89,11 +89,11 @@ void mrd_step(mrd_state *state, const mrd_config *config, const mrd_inputs *inpu
     static const mrd_outputs zero;
 
     *outputs = zero;
+    outputs->status = restart_if_corrupt(state);
     if (config->digest != mrd_config_digest(config)) {
-        outputs->status = MRD_BIT(MRD_S_CONFIG_CORRUPT);
+        outputs->status |= MRD_BIT(MRD_S_CONFIG_CORRUPT);
         go_safe(state);
     } else {
-        outputs->status = restart_if_corrupt(state);
         run(state, config, inputs, outputs);
     }
     mrd_path_commit(&state->path, outputs->ticks);

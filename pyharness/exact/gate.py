@@ -31,7 +31,9 @@ def blanking(
     Returns the age of its switch-off, the flag clear, and whether it is unstamped.
     """
     age = (start - switch_off_us[i]) % WRAP
-    if state["off_known"] and switch_off_us[i] == state["switch_off_us"][i]:
+    if not state["off_known"]:
+        return age, 0, False
+    if switch_off_us[i] == state["switch_off_us"][i]:
         if state["ticks"][i] != 0:
             return age, 0, True
         if state["off_clear"][i]:
@@ -58,7 +60,7 @@ def admit(
     age_y, clear_y, unstamped_y = blanking(state, config, switch_off_us, start, 1)
     age_z, clear_z, unstamped_z = blanking(state, config, switch_off_us, start, 2)
     raised |= bit(unstamped_x or unstamped_y or unstamped_z, MRD_S_SWITCH_OFF_UNSTAMPED)
-    raised |= bit(not (clear_x and clear_y and clear_z), MRD_S_BLANKED)
+    raised |= bit(not (clear_x and clear_y and clear_z) and not status & _MISSING, MRD_S_BLANKED)
     disqualifying = _REJECTED if waive_norm else _REJECTED | _NORM
     trace = {
         "age_us": check3("gate.age_us", (age_x, age_y, age_z)),

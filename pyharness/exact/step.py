@@ -67,10 +67,10 @@ def _commit(
     }
 
 
-def _make_safe(state: Record, config: Record) -> tuple[Record, Record]:
+def _make_safe(state: Record, config: Record, status: int) -> tuple[Record, Record]:
     """The cycle of a configuration that fails its digest: everything off, counters as they are."""
     safe = {**state, "path": path_reset(), "dwell": 0, "mode": MRD_MODE_SAFE, "inhibit_commanded": 0}
-    return _commit(safe, config, NO_PULSE, 1 << MRD_S_CONFIG_CORRUPT, 0, 0, zero_trace())
+    return _commit(safe, config, NO_PULSE, status, 0, 0, zero_trace())
 
 
 def _check_inputs(inputs: Record) -> None:
@@ -86,12 +86,12 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     `init` allows.
     """
     _check_inputs(inputs)
-    if config["digest"] != config_digest(config):
-        return _make_safe(state, config)
     status = 0
     if state["digest"] != state_digest(state):
         status = 1 << MRD_S_STATE_RESTARTED
         state = restart(state)
+    if config["digest"] != config_digest(config):
+        return _make_safe(state, config, status | 1 << MRD_S_CONFIG_CORRUPT)
     path_config, supervisor = config["path"], config["supervisor"]
     waive_norm = flag(state["mode"] == MRD_MODE_BENCH)
     path, trace, raised = path_sense(state["path"], path_config, inputs["path"], waive_norm)

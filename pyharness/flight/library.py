@@ -94,8 +94,8 @@ class Library:
     def _check_layout(self) -> None:
         try:
             table = self.lib.mrd_layout
-        except AttributeError as error:
-            raise LayoutError(f"{self.path}: exports no layout table ({error}); build it with src/layout.c") from None
+        except (AttributeError, KeyError):  # which of them depends on the version of cffi
+            raise LayoutError(f"{self.path}: exports no layout table; build it with src/layout.c") from None
         for i, (meaning, want) in enumerate([*self.interface.layout(), ("end of the layout table", LAYOUT_END)]):
             if table[i] != want:
                 have = "missing" if table[i] == LAYOUT_END else table[i]

@@ -104,8 +104,7 @@ def _step(state: np.ndarray, step: int, period_s: float, parameters: np.ndarray,
           dipole: np.ndarray, steps: np.ndarray) -> np.ndarray:
     """One step of DOP853, the `step`-th of each spacecraft's `steps`."""
     n = steps.size
-    # Overwritten by every stage: factors of four cross products, x and y repeated below z; (q, −q); and the
-    # slopes.
+    # Overwritten by every stage: factors of four cross products, x and y repeated below z; (q, −q); slopes.
     left, right, both, k = np.empty((4, 5, n)), np.empty((4, 5, n)), np.empty((8, n)), np.empty((12, 7, n))
     work = left, right, both
     inertia, inverse_inertia = parameters[:9].reshape(3, 3, n), parameters[9:18].reshape(3, 3, n)
@@ -130,8 +129,7 @@ def _derivative(y: np.ndarray, environment: np.ndarray, dipole: np.ndarray, iner
                 inverse_inertia: np.ndarray, work: tuple[np.ndarray, ...], out: np.ndarray) -> None:
     """dy/dt of the state (7, N) into `out`.
 
-    Four cross products at once: dipole × field, drag arm × flight, (−J s) × s of gravity's gradient, and (J
-    ω) × ω.
+    Four cross products at once: dipole × field, drag arm × flight, (−J s) × s of gravity, and (J ω) × ω.
     """
     q, rate = y[:4], y[4:]
     left, right, both = work

@@ -113,8 +113,7 @@ def _check(name: str, width: np.ndarray, limit: np.ndarray) -> None:
 
 
 class Coils:
-    """The three coils of N spacecraft; `supply_v` (N,) is the voltage that drives them, by default
-    nominal."""
+    """The three coils of N spacecraft; `supply_v` (N,) is the voltage that drives them (None: nominal)."""
 
     def __init__(self, missions: Sequence[Mission], supply_v: np.ndarray | None = None):
         timelines = [Timeline.of(m) for m in missions]

@@ -70,8 +70,7 @@ def geomagnetic_field(trajectory: Trajectory, seconds: np.ndarray, date: datetim
 
 
 def _knots(trajectory: Trajectory, seconds: np.ndarray, date: datetime) -> np.ndarray:
-    """The three vectors at times in s after the orbit's epoch, on their grids: (K, 3 components, 3
-    vectors)."""
+    """The three vectors at times, s after the epoch, on their grids: (K, 3 components, 3 vectors)."""
     position, velocity = trajectory.state(seconds)
     r = norm(position)
     vectors = (
@@ -84,12 +83,10 @@ def _knots(trajectory: Trajectory, seconds: np.ndarray, date: datetime) -> np.nd
 
 @lru_cache(maxsize=256)
 def _hermite(orbit: Orbit, start_us: int, spacing_us: int, intervals: int) -> np.ndarray:
-    """Cubics in u from 0 to 1 over each interval, (intervals, 4 powers, 3 components, 3 vectors),
-    read-only."""
+    """Cubics in u from 0 to 1 over each interval: (intervals, 4 powers, 3 components, 3 vectors), shared."""
     trajectory = Trajectory(orbit)
     seconds = (start_us + np.arange(-_GUARD, intervals + 1 + _GUARD) * spacing_us) * 1e-6
-    # The start's date for all: the secular variation is 0.01 nT an hour, and no cycle depends on the number
-    # of intervals.
+    # One date, the start's, so that no cycle depends on the length; the secular variation is 0.01 nT an hour.
     f = _knots(trajectory, seconds, trajectory.date(start_us * 1e-6))
     inner = intervals + 1
     slope = sum(w * (f[2 * _GUARD - i + 1:][:inner] - f[i - 1:][:inner]) for i, w in _SLOPE)
@@ -101,8 +98,7 @@ def _hermite(orbit: Orbit, start_us: int, spacing_us: int, intervals: int) -> np
 
 
 class OrbitEnvironment:
-    """The environment of N spacecraft, each on its own orbit; those that share orbit and start share one
-    table.
+    """The environment of N spacecraft on their own orbits; equal orbits and starts share one table.
 
     `start_s` (N,): start of the first cycle, s after each orbit's epoch. Every flight lasts at most
     `duration_s`.

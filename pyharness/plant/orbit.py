@@ -22,7 +22,7 @@ EARTH_RADIUS_M = 6378137.0
 
 _DAYS_1949 = 2433281.5
 """Julian date of 1949-12-31 00:00 UT, from which SGP4 counts epochs."""
-DAY_S = 86400.0
+_DAY_S = 86400.0
 
 _J2000, _J2000_JULIAN = datetime(2000, 1, 1, 12), 2451545.0
 
@@ -94,7 +94,7 @@ class Trajectory:
 
     def julian_date(self, seconds: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Julian date, UTC, as day and fraction of it."""
-        fraction = self._satellite.jdsatepochF + np.asarray(seconds, dtype=float) / DAY_S
+        fraction = self._satellite.jdsatepochF + np.asarray(seconds, dtype=float) / _DAY_S
         return np.full_like(fraction, self._satellite.jdsatepoch), fraction
 
     def date(self, seconds: float) -> datetime:

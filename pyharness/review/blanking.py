@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass
 
 from pyharness.mission import AXES
-from pyharness.scaling import Scaling
+from pyharness.scaling import Q15, Scaling
 
 
 @dataclass(frozen=True)
@@ -42,12 +42,13 @@ def blanking_needed_ms(time_constant_ms: float, stray: float, tolerated: float) 
 def chased_remanence(scaling: Scaling, coil: int) -> float:
     """Demand on a coil's own axis, as a part of its limit, when the remanence of a full pulse changes sign between samples.
 
-    The derivative law takes the change 2 b of the stray field for a turn of the body: m = −k 2 b / T. Positive: it asks for
+    The derivative law takes the change 2 b of the stray field for a turn of the body: m = −k 2 b / T, less by the low-pass. Positive: it asks for
     a pulse against the last one, which from 1 on repeats itself for ever; negative: it asks for one more like the last.
     """
     part, stray = scaling.mission.coil[coil], scaling.mission.magnetometer.stray_ut_per_a_m2[coil][coil] * 1e-6
     change_t = 2.0 * part.remanence_fraction * part.dipole_a_m2 * stray
-    return scaling.gain.k_am2_s_per_t * change_t / scaling.period_s / scaling.dipole_a_m2[coil]
+    smoothing = scaling.config["path"]["filter_gain"] / Q15
+    return smoothing * scaling.gain.k_am2_s_per_t * change_t / scaling.period_s / scaling.dipole_a_m2[coil]
 
 
 def blanking_margins(scaling: Scaling) -> list[BlankingMargin]:

@@ -106,10 +106,10 @@ def _blanking_kept(flights: Sequence[Flown]) -> Check:
     name = "No sample used inside the blanking time"
     if least_spare is None:
         return Check(name, False, "no trusted sample at all")
+    spare = f"{abs(least_spare) / 1e3:.1f} ms {'more' if least_spare >= 0 else 'less'} than the gate requires"
     return Check(
         name, broken == 0,
-        f"{broken} trusted samples too young; least age of a switch-off {least_age / 1e3:.1f} ms, "
-        f"{least_spare / 1e3:.1f} ms more than needed",
+        f"{broken} trusted samples with a coil off for too short a time; shortest {least_age / 1e3:.1f} ms, {spare}",
     )  # fmt: skip
 
 

@@ -72,10 +72,11 @@ def _mark_moments(axes: Axes, flown: Flown) -> None:
     """Vertical lines at the moments a reviewer asks for, with their times."""
     time, unit = _time(flown)
     slow = first(flown.record.true_rate_deg_s < DETUMBLED_DEG_S)
-    moments = ((slow, f"true ‖ω‖ first below {DETUMBLED_DEG_S:g} °/s", 0.93), (flown.settled_at, "settled: handover", 0.83))
+    # Below the curve before it is slow, above it afterwards: there is nothing there.
+    moments = ((slow, f"true ‖ω‖ first below {DETUMBLED_DEG_S:g} °/s", 0.07), (flown.settled_at, "settled: handover", 0.93))
     for index, text, height in moments:
         if index is not None:
-            late = time[index] > 0.6 * time[-1]
+            late = time[index] > 0.3 * time[-1]
             axes.axvline(time[index], color=INK, linewidth=0.8, linestyle=(0, (2, 2)))
             axes.annotate(
                 f"{text}, {time[index]:.1f} {unit}", (time[index], height), xycoords=axes.get_xaxis_transform(),
@@ -171,7 +172,7 @@ def _saturation_strip(axes: Axes, flown: Flown, axis: int) -> None:
     time, _ = _time(flown)
     bins = Bins(flown.cycles)
     share = bins.mean(flown.saturated[:, axis])
-    axes.fill_between(bins.mean(time), 0, share, step="mid", facecolor=ORANGE, edgecolor=INK, linewidth=0.3)
+    axes.fill_between(bins.mean(time), 0, share, step="mid", color=ORANGE, linewidth=0)
     axes.set_ylim(0, 1.02)
     axes.set_yticks([0, 1], ["0", "1"])
     axes.grid(visible=False)
@@ -260,8 +261,7 @@ def samples_figure(flown: Flown) -> Figure:
     with house_style():
         figure = new_figure(1.3 + 0.25 * len(rows), _title(flown, "samples and faults"))
         axes = figure.subplots()
-        time, _ = _time(flown)
-        edge = np.append(time, time[-1] + (time[-1] - time[0]) / max(len(time) - 1, 1))
+        edge = _time_edges(flown)
         width = edge[-1] - edge[0]
         bins = Bins(flown.cycles, 600)
         for row, (_, flags, colour) in enumerate(rows):
@@ -272,7 +272,6 @@ def samples_figure(flown: Flown) -> Figure:
         axes.text(edge[-1] + 0.012 * width, -0.85, "cycles", va="center", ha="left", fontsize=8)
         axes.set_yticks(range(len(rows)), [label for label, _, _ in rows])
         axes.set_ylim(len(rows) - 0.5, -0.6)
-        axes.set_xlim(edge[0], edge[-1])
         axes.grid(visible=False)
         axes.tick_params(axis="y", length=0)
         _label_time(axes, flown)
@@ -349,15 +348,20 @@ def _time(flown: Flown) -> tuple[np.ndarray, str]:
 
 
 def _label_time(axes: Axes, flown: Flown) -> None:
+    edge = _time_edges(flown)
+    axes.set_xlabel(f"time since the first sample [{_time(flown)[1]}]")
+    axes.set_xlim(edge[0], edge[-1])
+
+
+def _time_edges(flown: Flown) -> np.ndarray:
+    """Start of each cycle's stretch of the time axis, and the end of the last, (cycles + 1,)."""
     time, unit = _time(flown)
-    axes.set_xlabel(f"time since the first sample [{unit}]")
-    axes.set_xlim(time[0], max(time[-1], time[0] + 1e-9))
+    return np.append(time, time[-1] + flown.scaling.period_s / (60.0 if unit == "min" else 1.0))
 
 
 def _modes(axes: Axes, flown: Flown) -> None:
     """A ribbon of the modes, with their names where there is room; the others follow on the right."""
-    time, _ = _time(flown)
-    edge = np.append(time, time[-1])
+    edge = _time_edges(flown)
     for a, b, name in flown.mode_spans():
         axes.axvspan(edge[a], edge[b], facecolor=_MODE_COLOURS.get(name, "white"), edgecolor="white", linewidth=1.0)
         wide = edge[b] - edge[a] > 0.08 * edge[-1]

@@ -19,7 +19,7 @@ from pyharness.review.gallery import PLOTS, Plot
 from pyharness.review.numbers import numbers
 from pyharness.review.style import inline_svg
 from pyharness.review.tables import configuration_rows, mission_rows, size_rows, status_rows, timeline_rows
-from pyharness.review.wording import percent
+from pyharness.review.wording import tied
 from pyharness.scaling import Scaling
 from pyharness.vectors.verdict import Verdict
 
@@ -91,7 +91,7 @@ def render(data: ReviewData) -> str:
         loader=FileSystemLoader(Path(__file__).parent), autoescape=True, undefined=StrictUndefined,
         trim_blocks=True, lstrip_blocks=True, keep_trailing_newline=True,
     )  # fmt: skip
-    environment.filters["percent"] = percent
+    environment.filters["tied"] = tied
     header = data.interface.header
     return environment.get_template(_TEMPLATE).render(
         data=data,

@@ -9,7 +9,7 @@ from typing import Any
 
 from pyharness.flight.header import Header
 from pyharness.mission import AXES, Mission
-from pyharness.mission.schema import KEYS, each_axis
+from pyharness.mission.schema import BY_PATH, KEYS, each_axis
 from pyharness.mission.wording import shown
 from pyharness.review.flown import Flown
 from pyharness.review.wording import joined
@@ -27,13 +27,17 @@ class Row:
 
 def mission_rows(mission: Mission) -> list[Row]:
     """Every key of the mission with its value as parsed, defaults filled in, and its unit."""
-    rows = []
-    for key in KEYS:
-        for path in each_axis(key.path):
-            value = _mission_value(mission, path)
-            if value is not None:
-                rows.append(Row(path, _shown(value), key.unit))
-    return rows
+    paths = [path for key in KEYS for path in each_axis(key.path)]
+    paths.sort(key=lambda path: (_TABLES.index(path.partition(".")[0]), path[:6] if path.startswith("coil.") else ""))
+    values = {path: _mission_value(mission, path) for path in paths}
+    return [
+        Row(path, _shown(value), "" if BY_PATH[path].kind == "text" else BY_PATH[path].unit)
+        for path, value in values.items() if value is not None
+    ]  # fmt: skip
+
+
+_TABLES = list(dict.fromkeys(key.path.partition(".")[0] for key in KEYS))
+"""In the order of the mission file; within them each coil's keys stay together."""
 
 
 def _mission_value(mission: Mission, path: str) -> Any:
@@ -54,6 +58,8 @@ def _mission_value(mission: Mission, path: str) -> Any:
 def _shown(value: Any) -> str:
     if isinstance(value, tuple):
         return f"[{', '.join(map(_shown, value))}]"
+    if isinstance(value, float):
+        value = float(f"{value:.9g}")  # a derived dipole has digits without meaning
     return value if isinstance(value, str) else shown(value)
 
 

@@ -8,9 +8,9 @@ from __future__ import annotations
 
 from typing import Any
 
-from pyharness.exact import config_digest, reset, state_digest, step
+from pyharness.exact import config_digest, path_reset, reset, state_digest, step
 from pyharness.exact.constants import (
-    MRD_GAIN_CONSTANT, MRD_LAW_DERIVATIVE, MRD_MODE_DAMPING, MRD_SATURATE_PER_AXIS, MRD_SETTLE_BY_FIELD,
+    MRD_GAIN_CONSTANT, MRD_LAW_DERIVATIVE, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_SATURATE_PER_AXIS, MRD_SETTLE_BY_FIELD,
 )
 
 Record = dict[str, Any]
@@ -99,15 +99,20 @@ def make_inputs(cycle: int = 1, changes: Record | None = None) -> Record:
     }, changes or {})
 
 
+def path_state(**changes: Any) -> Record:
+    """A path that has seen a cycle: it knows the stamps of the coils."""
+    return {**path_reset(), "off_known": 1, **changes}
+
+
 def make_state(changes: Record | None = None) -> Record:
-    """A state in DAMPING with dotted changes and the right digest."""
-    state = with_changes({**reset(), "mode": MRD_MODE_DAMPING}, changes or {})
+    """A state in DAMPING that knows the stamps, with dotted changes and the right digest."""
+    state = with_changes({**reset(), "path": path_state(), "mode": MRD_MODE_DAMPING}, changes or {})
     return {**state, "digest": state_digest(state)}
 
 
 def fly(config: Record, sequence: list[Record], state: Record | None = None) -> tuple[Record, list[Record]]:
-    """State and outputs after a sequence of inputs."""
-    state, outputs = state or reset(), []
+    """State and outputs after a sequence of inputs; by default from a start that knows the stamps of the coils."""
+    state, outputs = state or make_state({"mode": MRD_MODE_HOLD_OFF}), []
     for inputs in sequence:
         state, out = step(state, config, inputs)
         outputs.append(out)

@@ -84,7 +84,7 @@ def test_a_corrupt_state_is_restarted(mode, after, restarts, counted):
     state, out = step({**sound, "digest": sound["digest"] ^ 1}, make_config(), make_inputs())
     assert out["status"] >> MRD_S_STATE_RESTARTED & 1 and out["mode"] == after
     assert out["counters"] == state["counters"]
-    assert state["counters"] == {"trusted": 1, "rejected": 0, "blanked": 0, "fell_back": 0, "refused": 0,
+    assert state["counters"] == {"trusted": 0, "rejected": 1, "blanked": 1, "fell_back": 0, "refused": 0,
         "restarts": counted}
     assert state["digest"] == state_digest(state) and state["dwell"] == 0
 

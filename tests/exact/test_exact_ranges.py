@@ -11,6 +11,7 @@ from pyharness.exact.estimate import rate_across_field
 from pyharness.exact.law import gain_used
 from pyharness.exact.path import path_reset, zero_trace
 from pyharness.exact.ranges import check, check3
+from exact.samples import path_state
 from exact.samples import (
     SENSOR, SUPERVISOR, make_config, make_inputs, make_state, path_config, path_inputs,
 )
@@ -66,7 +67,7 @@ def drive(config, **parts):
     return path_drive(config, trace)
 
 
-KNOWN = {**path_reset(), "field_valid": 1, "sample_us": 1_040_000}
+KNOWN = {**path_state(), "field_valid": 1, "sample_us": 1_040_000}
 
 
 @pytest.mark.parametrize(("name", "violate"), [

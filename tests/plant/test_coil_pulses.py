@@ -82,7 +82,7 @@ def test_current_is_one_percent_after_4_605_time_constants():
         assert remaining[0, 0] == pytest.approx(0.2 * left, rel=2e-3)
 
 
-@pytest.mark.parametrize("ticks", [8, 300, 4000])
+@pytest.mark.parametrize("ticks", [8, -300, 3000, -4000])
 def test_remaining_dipole_is_the_mean_of_the_exact_tail_over_the_sample(ticks):
     mission = with_time_constant(30.0)
     start = TIMELINE.age_at_next_sample_us(0) * 1e-6

@@ -1,0 +1,130 @@
+"""From SI units to integers."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+import pytest
+from fsw_c.runs import Bank
+
+from pyharness import exact
+from pyharness.gain import gain_of, recommended_gain_n_m_s, rms_field_t
+from pyharness.mission import MissionError, demo_path, load_mission
+from pyharness.plant.sensors import rotation_matrix
+from pyharness.scaling import _mantissa, scale
+
+
+def scaled(**control):
+    return scale(load_mission(demo_path(), {"control": control}))
+
+
+def test_the_controller_accepts_the_integers(library, demo_scaling):
+    assert exact.init(demo_scaling.config) == 0
+    assert library.init(Bank(library, demo_scaling.config).config[0]) == 0
+
+
+def test_mantissas_are_full_and_close():
+    for value in (1.0, 0.999999, 65535.4 / 2**7, 65535.6 / 2**7, 3e-5, 12345.678):
+        mantissa, shift = _mantissa(value)
+        assert 32768 <= mantissa <= 65535
+        assert mantissa / 2.0**shift == pytest.approx(value, rel=2**-16)
+
+
+@pytest.mark.parametrize("scaling", ["constant", "normalised"])
+def test_the_gain_in_counts_is_the_gain_in_si(scaling):
+    """m = −k dB/dt worked through by hand: one field count a period, in command counts."""
+    s = scaled(gain_scaling=scaling)
+    gain = s.config["path"]["derivative_gain"]
+    for axis in range(3):
+        in_counts = gain["mantissa"][axis] / 2.0 ** gain["shift"][axis]
+        dipole = in_counts * s.dipole_a_m2[axis] / 32768
+        field_rate = s.field_t / s.period_s
+        if scaling == "normalised":  # at ‖B‖ = 30 µT
+            dipole /= (30e-6 / s.field_t) ** 2
+            assert dipole == pytest.approx(s.gain.K_n_m_s / 30e-6**2 * field_rate, rel=2**-15)
+        else:
+            assert dipole == pytest.approx(s.gain.k_am2_s_per_t * field_rate, rel=2**-15)
+
+
+def test_the_rate_gain_in_counts_is_the_same_gain():
+    s = scaled(law="rate")
+    gain = s.config["path"]["rate_gain"]
+    for axis in range(3):
+        per_cross = gain["mantissa"][axis] / 2.0 ** (16 + gain["shift"][axis])
+        dipole = per_cross * s.dipole_a_m2[axis] / 32768
+        assert dipole == pytest.approx(s.gain.k_am2_s_per_t * s.rate_rad_s * s.field_t, rel=2**-15)
+
+
+def test_the_limit_is_the_mean_over_the_cycle(demo_scaling):
+    share = demo_scaling.timeline.drive_window_us / demo_scaling.timeline.period_us
+    for coil, limit in zip(demo_scaling.mission.coil, demo_scaling.dipole_a_m2, strict=True):
+        assert limit == coil.dipole_a_m2 * share
+
+
+def test_calibration_undoes_the_sensor(library, demo, demo_scaling):
+    """Raw counts made by the sensor's definition come back as the field, within rounding, through the C."""
+    rotation = np.array(rotation_matrix(demo.magnetometer.misalignment_deg))
+    field_ut = np.array([21.0, -33.0, 12.5])
+    sensed = rotation.T @ field_ut + np.array(demo.magnetometer.bias_ut)
+    raw = np.rint(sensed * demo.magnetometer.counts_per_ut).astype(int)
+    inputs = {"path": {"mag_raw": tuple(raw.tolist()), "mag_valid": 1, "sample_us": 70_000}}
+    field = Bank(library, demo_scaling.config).run([inputs])["trace"]["calibration"]["field"][0]
+    np.testing.assert_allclose(field * demo_scaling.field_t * 1e6, field_ut, atol=1.5 / demo.magnetometer.counts_per_ut)
+
+
+def test_full_scale_of_the_rate_is_a_quarter_above_tip_off(demo, demo_scaling):
+    assert demo_scaling.rate_rad_s * 32767 == pytest.approx(1.25 * math.radians(math.hypot(*demo.body.tip_off_deg_s)))
+
+
+def test_the_low_pass_pole():
+    """Pole of a sampled first-order low-pass: exp(−T/τ)."""
+    assert scaled(low_pass_s=0.0).config["path"]["filter_gain"] == 32768
+    s = scaled(low_pass_s=2.0)
+    assert 1 - s.config["path"]["filter_gain"] / 32768 == pytest.approx(math.exp(-s.period_s / 2.0), abs=2**-16)
+
+
+def test_recommended_gain():
+    """Avanzini & Giulietti, JGCD 35(4), 2012 (formula from memory): K = 2 n (1 + sin ξ) Jmin; 550 km, ξ = 97.6°, J = .04."""
+    ball = {"xx": 0.04, "yy": 0.04, "zz": 0.04, "xy": 0.0, "xz": 0.0, "yz": 0.0}
+    mission = load_mission(demo_path(), {"body": {"inertia_kg_m2": ball}, "control": {"K_n_m_s": None, "gain": "auto"}})
+    assert recommended_gain_n_m_s(mission) == pytest.approx(1.744e-4, rel=5e-4)
+    gain = gain_of(mission)
+    assert gain.K_n_m_s == recommended_gain_n_m_s(mission)
+    # The unit trap: k = K / ‖B‖². At 33.78 µT that is 1.53e5.
+    assert gain.K_n_m_s / 33.78e-6**2 == pytest.approx(1.53e5, rel=2e-3)
+    assert gain.k_am2_s_per_t * gain.rms_field_t**2 == pytest.approx(gain.K_n_m_s)
+
+
+def test_rms_field_of_a_dipole():
+    """Equatorial orbit: the equatorial field. Polar orbit: √2.5 of it (mean of 1 + 3 sin² over a circle)."""
+    above = 550 + 6371.2 - 6378.137  # 550 km above the sphere that the dipole is given for
+    equatorial = load_mission(demo_path(), {"orbit": {"inclination_deg": 0.0, "altitude_km": above}})
+    polar = load_mission(demo_path(), {"orbit": {"inclination_deg": 90.0, "altitude_km": above}})
+    # Centred dipole: Wertz (ed.), Spacecraft Attitude Determination and Control, 1978, App. H (from memory).
+    assert rms_field_t(equatorial) == pytest.approx(23193e-9, rel=3e-5)
+    assert rms_field_t(polar) / rms_field_t(equatorial) == pytest.approx(math.sqrt(2.5), rel=1e-9)
+
+
+def test_a_gain_that_would_lose_its_mantissa_is_refused():
+    for k, scaling in ((1e-3, "constant"), (9e8, "constant"), (1e-3, "normalised"), (9e8, "normalised")):
+        with pytest.raises(MissionError) as caught:
+            scaled(K_n_m_s=None, k_am2_s_per_t=k, gain_scaling=scaling)
+        problems = caught.value.problems
+        assert "control.k_am2_s_per_t" in problems[0] and "mantissa would be lost" in problems[0], problems
+        low, high = problems[0].split("[")[1].split("]")[0].split(",")
+        unit = "N m s" if scaling == "normalised" else "A m² s/T"
+        assert problems[0].endswith(unit)
+        for legal in (float(low), float(high)):  # the range it names is legal
+            scaled(**({"K_n_m_s": legal} if scaling == "normalised" else {"K_n_m_s": None, "k_am2_s_per_t": legal}),
+                   gain_scaling=scaling)  # fmt: skip
+
+
+def test_every_size_is_positive_and_named(library, demo_scaling):
+    from pyharness.flight.records import columns
+
+    for column in columns(library.interface.inputs) + columns(library.interface.outputs):
+        size = demo_scaling.size_of(column)
+        assert size is None or (size.step > 0 and size.unit)
+    assert demo_scaling.size_of("trace.saturation.command[2]").unit == "mA m²"
+    assert demo_scaling.size_of("command") is None
