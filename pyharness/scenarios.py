@@ -36,6 +36,7 @@ class Scenario:
     separation_s: int = 60
     orbit_s: float = 0.0
     events: tuple[Event, ...] = ()
+    title: str = ""  # for the reviewer
 
     def scaling(self, mission_path: str) -> Scaling:
         """The integers of this scenario's mission. Raises MissionError."""
@@ -104,6 +105,7 @@ LOOP = (
 )  # fmt: skip
 
 LONG = (
-    Scenario("demo", "the mission as it stands, until it has settled", None, 1, separation_s=0),
-    Scenario("demo-along-field", "the same, starting with the spin along the field", None, 2, along_field=True, separation_s=0),
+    Scenario("detumble", "the mission as it stands, until it has settled", None, 1, separation_s=0, title="nominal tip-off"),
+    Scenario("detumble-along-field", "the same, starting with the spin along the field", None, 2, along_field=True, separation_s=0,
+             title="spin along the field at the start"),
 )  # fmt: skip

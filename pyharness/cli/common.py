@@ -51,7 +51,7 @@ def announce_sources(options: argparse.Namespace) -> Sources:
 def progress(what: str, total: int | None = None, unit: str = "cycle") -> Iterator[tqdm]:
     """A progress bar on stderr that appears once the work has lasted 2 s."""
     with tqdm(
-        total=total, desc=what, unit=unit, unit_scale=True, delay=SHOW_AFTER_S, leave=False, file=sys.stderr, dynamic_ncols=True,
+        total=total, desc=what, unit=unit, unit_scale=True, delay=SHOW_AFTER_S, leave=False, file=sys.stderr, dynamic_ncols=True, disable=None,
         mininterval=0.2,
     ) as bar:  # fmt: skip
         yield bar

@@ -13,12 +13,11 @@ from pyharness.compare import compare_with_truth
 from pyharness.controllers import load_controller
 from pyharness.loop import Flight, fly
 from pyharness.mission import load_mission
-from pyharness.review.figures import all_figures
-from pyharness.review.flown import Flown
-from pyharness.review.style import save
+from pyharness.review import Flown, save_figures
+from pyharness.review.numbers import numbers
 from pyharness.scaling import scale
 from pyharness.scenarios import long_cycles
-from pyharness.whole_files import replacing, write_whole
+from pyharness.whole_files import write_whole
 
 
 def add_to(commands) -> None:
@@ -59,16 +58,13 @@ def run(options: argparse.Namespace) -> int:
     flown = Flown(scaling.mission.name, record, comparison, controller.interface)
     print(f"mission   {scaling.mission.name} ({scaling.mission.digest}), config 0x{scaling.config['digest']:08x}")
     print(f"flight    {cycles} cycles, {cycles * scaling.period_s:g} s, seed {options.seed}, controller {controller.name}\n")
-    print(table(_summary(flown)))
+    print(table((label, value) for label, (value,) in numbers([flown])))
     if options.csv:
         write_whole(Path(options.csv), _csv(flown))
         print(f"\ntable     {options.csv}")
     if options.plot:
-        folder = Path(options.plot)
-        for name, figure in all_figures(flown).items():
-            with replacing(folder / f"{name}.{options.format}") as path:
-                save(figure, path, options.format)
-        print(f"figures   {folder}")
+        paths = save_figures(flown, Path(options.plot), options.format)
+        print(f"figures   {', '.join(map(str, paths))}")
     return 0
 
 
@@ -82,26 +78,6 @@ def _cycles(options: argparse.Namespace, scaling) -> int:
     if not 1 <= cycles <= 1_000_000:
         raise UsageError(f"length: {cycles} cycles, must be in [1, 1000000]")
     return cycles
-
-
-def _summary(flown: Flown) -> list[tuple[str, str]]:
-    rate, time = flown.record.true_rate_deg_s, flown.record.time_s
-    below = np.flatnonzero(rate < 0.5)
-    settled = flown.settled_at
-    driven = max(int(flown.driven.sum()), 1)
-    saturated = flown.saturated.any(axis=1).sum() / driven
-    rejected = int((~flown.trusted).sum())
-    error = flown.comparison
-    return [
-        ("true rate, start and end", f"{rate[0]:.2f} °/s, {rate[-1]:.3f} °/s"),
-        ("first below 0.5 °/s", f"{time[below[0]]:.0f} s" if len(below) else "not reached"),
-        ("settled (handover)", "not reached" if settled is None else f"{time[settled]:.0f} s, true rate then {rate[settled]:.3f} °/s"),
-        ("saturated", f"{saturated:.1%} of the cycles with damping"),
-        ("samples not trusted", f"{rejected} of {flown.cycles}, {int(flown.bit('BLANKED').sum())} of them inside a blanking time"),
-        ("short pulses dropped", f"{int(error.dropped.sum())}"),
-        ("mean duty x, y, z", "  ".join(f"{d:.1%}" for d in flown.duty.mean(axis=0))),
-        ("apart from the truth", f"at most {error.command_error_a_m2.max() * 1e3:.3g} mA m², {error.used:.2f} of the bound"),
-    ]  # fmt: skip
 
 
 def _csv(flown: Flown) -> str:

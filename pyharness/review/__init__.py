@@ -2,7 +2,7 @@
 
 from pyharness.review.checks import Check, checks
 from pyharness.review.flown import Flown
-from pyharness.review.gallery import save_figures
+from pyharness.review.figures import save_figures
 from pyharness.review.page import ReviewData, render, review_data, write_page
 
 __all__ = ["Check", "Flown", "ReviewData", "checks", "render", "review_data", "save_figures", "write_page"]

@@ -37,5 +37,7 @@ class Bins:
         hit = np.concatenate(([0], np.logical_or.reduceat(flags, self.starts).astype(int), [0]))
         change = np.diff(hit)
         yield from zip(
-            self.edges[np.flatnonzero(change == 1)].tolist(), self.edges[np.flatnonzero(change == -1)].tolist(), strict=True
+            self.edges[np.flatnonzero(change == 1)].tolist(),
+            self.edges[np.flatnonzero(change == -1)].tolist(),
+            strict=True,
         )

@@ -40,12 +40,16 @@ def blanking_needed_ms(time_constant_ms: float, stray: float, tolerated: float) 
 
 
 def chased_remanence(scaling: Scaling, coil: int) -> float:
-    """Demand on a coil's own axis, as a part of its limit, when the remanence of a full pulse changes sign between samples.
+    """Demand on a coil's own axis, as a part of its limit, when the remanence of a full pulse changes sign.
 
-    The derivative law takes the change 2 b of the stray field for a turn of the body: m = −k 2 b / T, less by the low-pass. Positive: it asks for
-    a pulse against the last one, which from 1 on repeats itself for ever; negative: it asks for one more like the last.
+    The derivative law takes the change 2 b of the stray field between two samples for a turn of the body:
+    m = −k 2 b / T, less by the low-pass. Positive: it asks for a pulse against the last one, which from 1 on
+    repeats itself for ever; negative: it asks for one more like the last.
     """
-    part, stray = scaling.mission.coil[coil], scaling.mission.magnetometer.stray_ut_per_a_m2[coil][coil] * 1e-6
+    part, stray = (
+        scaling.mission.coil[coil],
+        scaling.mission.magnetometer.stray_ut_per_a_m2[coil][coil] * 1e-6,
+    )
     change_t = 2.0 * part.remanence_fraction * part.dipole_a_m2 * stray
     smoothing = scaling.config["path"]["filter_gain"] / Q15
     return smoothing * scaling.gain.k_am2_s_per_t * change_t / scaling.period_s / scaling.dipole_a_m2[coil]

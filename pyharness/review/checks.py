@@ -25,8 +25,13 @@ class Check:
     figure: str  # the number that decides it, in words
 
 
-def checks(flights: Sequence[Flown], vectors: Sequence[Verdict], settle_within_s: float | None = None) -> list[Check]:
-    """All checks over all flights. `settle_within_s`: None for one orbit, and the dwell and hold-off of the mission."""
+def checks(
+    flights: Sequence[Flown], vectors: Sequence[Verdict], settle_within_s: float | None = None
+) -> list[Check]:
+    """All checks over all flights.
+
+    `settle_within_s`: time for the handover flag; None: as `default_settle_within_s` has it.
+    """
     return [
         *(_detumbled(flown) for flown in flights),
         *(_settled(flown, settle_within_s) for flown in flights),
@@ -69,7 +74,8 @@ def _within_bound(flown: Flown) -> Check:
     return Check(
         f"Controller within its bound of the truth, {flown.title}",
         comparison.within and acted > 0,
-        f"largest share of the bound used {percent(comparison.used)} (mean dipole), {percent(comparison.used_ticks)} (pulse width), "
+        f"largest share of the bound used {percent(comparison.used)} (mean dipole), "
+        f"{percent(comparison.used_ticks)} (pulse width), "
         f"in {acted} cycles in which the law acted",
     )
 
@@ -77,13 +83,16 @@ def _within_bound(flown: Flown) -> Check:
 def sample_gaps_us(flown: Flown) -> tuple[np.ndarray, np.ndarray]:
     """Time between coils and samples from what really happened, µs.
 
-    First (cycles − 1, 3): from each coil's actual switch-off to the start of the next sample; the largest integer for a
-    coil that was off in that cycle. Second (cycles,): from the end of a sample to the start of the pulses that follow.
+    First (cycles − 1, 3): from each coil's actual switch-off to the start of the next sample; the largest
+    integer for a coil that was off in that cycle. Second (cycles,): from the end of a sample to the start of the
+    pulses that follow.
     """
     timeline, record = flown.scaling.timeline, flown.record
     path = record.inputs["path"]
     half = timeline.sample_us // 2
-    mid = (path["sample_us"] - path["cycle_start_us"]).astype(np.int64)  # the stamps wrap, their difference does not
+    mid = (path["sample_us"] - path["cycle_start_us"]).astype(
+        np.int64
+    )  # the stamps wrap, their difference does not
     mid = np.where(path["mag_valid"] != 0, mid, timeline.mid_sample_us)
     on = np.abs(record.applied_ticks[:-1]).astype(np.int64)
     switch_off = timeline.drive_start_us + on * timeline.tick_us
@@ -109,7 +118,8 @@ def _blanking_kept(flights: Sequence[Flown]) -> Check:
     spare = f"{abs(least_spare) / 1e3:.1f} ms {'more' if least_spare >= 0 else 'less'} than the gate requires"
     return Check(
         name, broken == 0,
-        f"{broken} trusted samples with a coil off for too short a time; shortest {least_age / 1e3:.1f} ms, {spare}",
+        f"{broken} trusted samples with a coil off for too short a time; shortest {least_age / 1e3:.1f} ms, "
+        f"{spare}",
     )  # fmt: skip
 
 
@@ -117,7 +127,11 @@ def _coils_off_in_samples(flights: Sequence[Flown]) -> Check:
     before = min(int(sample_gaps_us(flown)[0].min(initial=np.iinfo(np.int64).max)) for flown in flights)
     after = min(int(sample_gaps_us(flown)[1].min()) for flown in flights)
     pulses = sum(int(np.count_nonzero(flown.record.applied_ticks)) for flown in flights)
-    clear = f"every one of {pulses} pulses ends at least {before / 1e3:.1f} ms before a sample" if pulses else "no pulse at all"
+    clear = (
+        f"every one of {pulses} pulses ends at least {before / 1e3:.1f} ms before a sample"
+        if pulses
+        else "no pulse at all"
+    )
     return Check(
         "No coil on during a sample", before >= 0 and after >= 0 and pulses > 0,
         f"{clear} and starts at least {after / 1e3:.1f} ms after one",
@@ -138,7 +152,11 @@ def _integrity(flights: Sequence[Flown]) -> Check:
 def _vectors(vectors: Sequence[Verdict]) -> Check:
     failed = [verdict.name for verdict in vectors if not verdict.passed]
     rows = sum(verdict.rows for verdict in vectors)
-    figure = f"{len(vectors) - len(failed)} of {len(vectors)} files, {rows} rows" if vectors else "no vectors were replayed"
+    figure = (
+        f"{len(vectors) - len(failed)} of {len(vectors)} files, {rows} rows"
+        if vectors
+        else "no vectors were replayed"
+    )
     return Check(
         "Golden vectors: every file replayed without a difference", bool(vectors) and not failed,
         figure + (f"; failed: {', '.join(failed)}" if failed else ""),

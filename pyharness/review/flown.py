@@ -63,7 +63,9 @@ class Flown:
     @cached_property
     def commanded_a_m2(self) -> np.ndarray:
         """(cycles, 3) mean dipole over the cycle that the law asks for, whatever the mode, after saturation."""
-        return self.record.outputs["trace"]["saturation"]["command"] / Q15 * np.array(self.scaling.dipole_a_m2)
+        return (
+            self.record.outputs["trace"]["saturation"]["command"] / Q15 * np.array(self.scaling.dipole_a_m2)
+        )
 
     @cached_property
     def applied_a_m2(self) -> np.ndarray:
@@ -96,7 +98,9 @@ class Flown:
         mode = self.record.outputs["mode"]
         edges = [0, *(np.flatnonzero(np.diff(mode)) + 1).tolist(), len(mode)]
         return [
-            (a, b, self.interface.mode_name(int(mode[a]))) for a, b in zip(edges[:-1], edges[1:], strict=True) if b > a
+            (a, b, self.interface.mode_name(int(mode[a])))
+            for a, b in zip(edges[:-1], edges[1:], strict=True)
+            if b > a
         ]
 
 

@@ -1,4 +1,4 @@
-"""One cycle under the magnifier: coil currents with their edges, the windows, and what the magnetometer sees of the coils."""
+"""One cycle under the magnifier: windows, coil currents with their edges, and what the magnetometer sees of them."""
 
 from __future__ import annotations
 
@@ -22,7 +22,7 @@ _WINDOWS = (
 
 
 def default_cycle(flown: Flown) -> int:
-    """The first saturated cycle that follows a cycle with pulses; without one, the first with pulses; else the second."""
+    """The first saturated cycle after one with pulses; if there is none, the first with pulses; else the second."""
     on = flown.duty.any(axis=1)
     after_pulses = np.append(False, on[:-1])
     for flags in (flown.saturated.any(axis=1) & after_pulses, on):
@@ -33,7 +33,7 @@ def default_cycle(flown: Flown) -> int:
 
 
 def cycle_figure(flown: Flown, cycle: int | None = None) -> Figure:
-    """Currents over the cycle, and the stray field from the end of the pulses before it to the start of its own.
+    """Currents over a cycle, and the stray field from the end of the pulses before it to the start of its own.
 
     Raises IndexError for a cycle that was not flown.
     """
@@ -41,7 +41,9 @@ def cycle_figure(flown: Flown, cycle: int | None = None) -> Figure:
     if not 0 <= cycle < flown.cycles:
         raise IndexError(f"cycle {cycle} was not flown, there are {flown.cycles}")
     with house_style():
-        figure = new_figure(7.4, f"{flown.scaling.mission.name} · {flown.title}: cycle {cycle} under the magnifier")
+        figure = new_figure(
+            7.4, f"{flown.scaling.mission.name} · {flown.title}: cycle {cycle} under the magnifier"
+        )
         ribbon, current, stray = figure.subplots(3, 1, height_ratios=(0.3, 2.4, 3))
         timeline = flown.scaling.timeline
         idle_ms = (timeline.period_us - timeline.drive_end_us) / 1e3
@@ -49,14 +51,22 @@ def cycle_figure(flown: Flown, cycle: int | None = None) -> Figure:
         whole = (-before_ms, timeline.period_us / 1e3 * 1.005)
         _ribbon(ribbon, flown, whole)
         _currents(current, flown, cycle, whole)
-        _stray(stray, flown, cycle, (-idle_ms - 0.2 * timeline.blanking_us / 1e3, timeline.drive_start_us / 1e3 * 1.12))
+        _stray(
+            stray,
+            flown,
+            cycle,
+            (-idle_ms - 0.2 * timeline.blanking_us / 1e3, timeline.drive_start_us / 1e3 * 1.12),
+        )
         stray.set_xlabel(f"time from the start of cycle {cycle} [ms]")
     return figure
 
 
 def _edges_ms(flown: Flown) -> list[float]:
     t = flown.scaling.timeline
-    return [us / 1e3 for us in (0, t.sample_start_us, t.sample_start_us + t.sample_us, t.drive_start_us, t.drive_end_us)]
+    return [
+        us / 1e3
+        for us in (0, t.sample_start_us, t.sample_start_us + t.sample_us, t.drive_start_us, t.drive_end_us)
+    ]
 
 
 def _shade(axes: Axes, flown: Flown) -> None:
@@ -100,7 +110,10 @@ def _ticks(flown: Flown, cycle: int) -> tuple[np.ndarray, np.ndarray]:
 
 
 def decaying_dipole(flown: Flown, cycle: int, time_ms: np.ndarray) -> np.ndarray:
-    """Dipole of each coil's current (K, 3), A m², at times (K,) from the start of a cycle: its own pulse and the one before."""
+    """Dipole of each coil's current (K, 3), A m², at times (K,) from the start of a cycle.
+
+    That of its own pulse, and what is left of the one before.
+    """
     timeline = flown.scaling.timeline
     coils = Coils([flown.scaling.mission])
     since_window_s = (time_ms * 1e3 - timeline.drive_start_us) * 1e-6
@@ -122,7 +135,11 @@ def _currents(axes: Axes, flown: Flown, cycle: int, span: tuple[float, float]) -
         count = int(ticks[axis, 0])
         width_ms = (abs(count) + int(late[axis, 0])) * timeline.tick_us / 1e3
         saturated = ", demand saturated" if flown.saturated[cycle, axis] else ""
-        text = f"coil {name}: {'+' if count > 0 else '−'}{width_ms:g} ms{saturated}" if count else f"coil {name}: no pulse"
+        text = (
+            f"coil {name}: {'+' if count > 0 else '−'}{width_ms:g} ms{saturated}"
+            if count
+            else f"coil {name}: no pulse"
+        )
         axes.plot(time, current[:, axis], label=text, **AXIS_STYLE[axis])
     axes.axhline(0, color=GREY, linewidth=0.6)
     axes.set_xlim(*span)
@@ -159,11 +176,27 @@ def _stray(axes: Axes, flown: Flown, cycle: int, span: tuple[float, float]) -> N
     for axis, name in enumerate(AXES):
         seen = np.where(dipole[:, axis] * stray[axis] >= floor, dipole[:, axis] * stray[axis], np.nan)
         axes.plot(time, seen, label=f"coil {name}, current", **AXIS_STYLE[axis])
-    axes.axhline(count_nt, color=INK, linewidth=1.1, linestyle=(0, (4, 2)), label=f"one magnetometer count, {count_nt:g} nT")
+    axes.axhline(
+        count_nt,
+        color=INK,
+        linewidth=1.1,
+        linestyle=(0, (4, 2)),
+        label=f"one magnetometer count, {count_nt:g} nT",
+    )
     for axis, name in enumerate(AXES):
-        kept = flown.scaling.mission.coil[axis].remanence_fraction * flown.scaling.mission.coil[axis].dipole_a_m2 * stray[axis]
+        kept = (
+            flown.scaling.mission.coil[axis].remanence_fraction
+            * flown.scaling.mission.coil[axis].dipole_a_m2
+            * stray[axis]
+        )
         if kept > 0:
-            axes.axhline(kept, color=AXIS_STYLE[axis]["color"], linewidth=1.2, linestyle=(0, (1, 1.6)), label=f"coil {name}, remanence of a full pulse")
+            axes.axhline(
+                kept,
+                color=AXIS_STYLE[axis]["color"],
+                linewidth=1.2,
+                linestyle=(0, (1, 1.6)),
+                label=f"coil {name}, remanence of a full pulse",
+            )
     axes.set_yscale("log")
     top = max(stray * [coil.dipole_a_m2 for coil in flown.scaling.mission.coil])
     axes.set_ylim(floor, max(top, count_nt) * 3)
@@ -172,7 +205,11 @@ def _stray(axes: Axes, flown: Flown, cycle: int, span: tuple[float, float]) -> N
     axes.yaxis.set_minor_formatter(NullFormatter())
     axes.set_xlim(*span)
     axes.set_ylabel("[nT]")
-    axes.set_title("Stray field at the magnetometer, on its worst axis: from the end of the last pulses to the next")
+    axes.set_title(
+        "Stray field at the magnetometer, on its worst axis: from the end of the last pulses to the next"
+    )
     axes.figure.legend(*axes.get_legend_handles_labels(), loc="outside lower left", ncols=3)
     for name, at_us in (("blanking", timeline.blanking_us / 2), ("sample", timeline.mid_sample_us)):
-        axes.annotate(name, (at_us / 1e3, 0.96), xycoords=axes.get_xaxis_transform(), ha="center", va="top", fontsize=8)
+        axes.annotate(
+            name, (at_us / 1e3, 0.96), xycoords=axes.get_xaxis_transform(), ha="center", va="top", fontsize=8
+        )

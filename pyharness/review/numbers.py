@@ -35,7 +35,11 @@ def _slow(flown: Flown) -> str:
 
 def _settled(flown: Flown) -> str:
     index = flown.settled_at
-    return NEVER if index is None else f"{_moment(flown, index)}; true ‖ω‖ then {flown.record.true_rate_deg_s[index]:.3f} °/s"
+    return (
+        NEVER
+        if index is None
+        else f"{_moment(flown, index)}; true ‖ω‖ then {flown.record.true_rate_deg_s[index]:.3f} °/s"
+    )
 
 
 def _moment(flown: Flown, index: int) -> str:
@@ -94,7 +98,8 @@ def _ticks_error(flown: Flown) -> str:
 
 
 def _used(flown: Flown) -> str:
-    return f"{percent(flown.comparison.used)} of the dipole's, {percent(flown.comparison.used_ticks)} of the pulse's"
+    comparison = flown.comparison
+    return f"{percent(comparison.used)} of the dipole's, {percent(comparison.used_ticks)} of the pulse's"
 
 
 _ROWS: tuple[tuple[str, Callable[[Flown], str]], ...] = (
@@ -107,7 +112,7 @@ _ROWS: tuple[tuple[str, Callable[[Flown], str]], ...] = (
     ("Damping cycles without any saturation", _headroom),
     ("Mean duty", _duty),
     ("Samples rejected", _rejected),
-    ("of these inside a blanking time", _blanked),
+    ("of these blanked (also the first after a reset)", _blanked),
     ("Short pulses dropped while damping", _dropped),
     ("Largest error of the mean dipole against truth", _error),
     ("Largest error of a pulse width against truth", _ticks_error),

@@ -15,7 +15,7 @@ from pyharness.mission import Mission
 from pyharness.review.blanking import blanking_margins
 from pyharness.review.checks import Check, checks
 from pyharness.review.flown import Flown
-from pyharness.review.gallery import PLOTS, Plot
+from pyharness.review.figures import PLOTS, Plot
 from pyharness.review.numbers import numbers
 from pyharness.review.style import inline_svg
 from pyharness.review.tables import configuration_rows, mission_rows, size_rows, status_rows, timeline_rows
@@ -62,7 +62,7 @@ class ReviewData:
 def review_data(
     flights: Sequence[Flown], vectors: Sequence[Verdict], command: str, settle_within_s: float | None = None
 ) -> ReviewData:
-    """Data with the checks worked out. `settle_within_s` as `checks` has it. Raises ValueError without a flight."""
+    """Data with the checks worked out. `settle_within_s` as in `checks`. Raises ValueError without a flight."""
     if not flights:
         raise ValueError("flights: none, the page needs at least one")
     worked_out = checks(flights, vectors, settle_within_s)
@@ -82,11 +82,13 @@ def _pictures(flights: Sequence[Flown]) -> Iterator[_Picture]:
             if index == 0 or plot.name in _FURTHER_PLOTS:
                 name = f"flight{index + 1}-{plot.name}"
                 svg = inline_svg(plot.draw(flown), name, f"{plot.title}, {flown.title}")
-                yield _Picture(plot, flown, Markup(svg))  # noqa: S704 - made by matplotlib, which escapes its texts
+                yield _Picture(
+                    plot, flown, Markup(svg)
+                )  # noqa: S704 - made by matplotlib, which escapes its texts
 
 
 def render(data: ReviewData) -> str:
-    """The page as text. The same data give the same text: there is no clock in it, digests say what was shown."""
+    """The page as text. The same data give the same text: it holds no date, digests say what was shown."""
     environment = Environment(
         loader=FileSystemLoader(Path(__file__).parent), autoescape=True, undefined=StrictUndefined,
         trim_blocks=True, lstrip_blocks=True, keep_trailing_newline=True,

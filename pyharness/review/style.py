@@ -1,6 +1,6 @@
 """How all figures look, and how they become PNG or SVG: same inputs, same bytes.
 
-Colours are the Okabe–Ito set, told apart by colour-blind people; every line also has a pattern or a label of its own.
+Colours follow the Okabe–Ito set, which colour-blind people can tell apart; lines also differ in pattern.
 """
 
 from __future__ import annotations
@@ -17,7 +17,14 @@ from matplotlib.figure import Figure
 from matplotlib.style import context
 
 INK, GREY, PALE = "#222222", "#777777", "#d8d8d8"
-BLUE, VERMILLION, GREEN, ORANGE, SKY, PURPLE = "#0072b2", "#d55e00", "#007a5a", "#e69f00", "#56b4e9", "#a0407a"
+BLUE, VERMILLION, GREEN, ORANGE, SKY, PURPLE = (
+    "#0072b2",
+    "#d55e00",
+    "#007a5a",
+    "#e69f00",
+    "#56b4e9",
+    "#a0407a",
+)
 
 AXIS_STYLE = (
     {"color": BLUE, "linestyle": "-"},
@@ -78,7 +85,9 @@ def new_figure(height_in: float, title: str) -> Figure:
 
 def legend_above(axes: Axes, columns: int) -> None:
     """The legend on the right above the axes, on the line of their title, where it hides nothing."""
-    axes.legend(loc="lower right", bbox_to_anchor=(1.0, 0.985), ncols=columns, borderaxespad=0.0, columnspacing=1.4)
+    axes.legend(
+        loc="lower right", bbox_to_anchor=(1.0, 0.985), ncols=columns, borderaxespad=0.0, columnspacing=1.4
+    )
 
 
 _METADATA = {"svg": dict.fromkeys(("Date", "Creator", "Format", "Type")), "png": {"Software": None}}
@@ -100,7 +109,9 @@ def inline_svg(figure: Figure, name: str, label: str) -> str:
     root = ElementTree.fromstring(buffer.getvalue())
     for element in root.iter():
         element.tag = _local(element.tag)
-        element.attrib = {_local(key): _renamed(_local(key), value, name) for key, value in element.attrib.items()}
+        element.attrib = {
+            _local(key): _renamed(_local(key), value, name) for key, value in element.attrib.items()
+        }
         if element.tag == "style":
             element.text = (element.text or "").replace("*{", f"#{name} *{{")
     root.attrib = {"id": name, "viewBox": root.attrib["viewBox"], "role": "img", "aria-label": label}

@@ -28,7 +28,9 @@ class Row:
 def mission_rows(mission: Mission) -> list[Row]:
     """Every key of the mission with its value as parsed, defaults filled in, and its unit."""
     paths = [path for key in KEYS for path in each_axis(key.path)]
-    paths.sort(key=lambda path: (_TABLES.index(path.partition(".")[0]), path[:6] if path.startswith("coil.") else ""))
+    paths.sort(
+        key=lambda path: (_TABLES.index(path.partition(".")[0]), path[:6] if path.startswith("coil.") else "")
+    )
     values = {path: _mission_value(mission, path) for path in paths}
     return [
         Row(path, _shown(value), "" if BY_PATH[path].kind == "text" else BY_PATH[path].unit)
@@ -113,7 +115,10 @@ def _physical(scaling: Scaling, header: Header, name: str, value: Any) -> str:
         raw = scaling.raw_field_t * 1e6 if sensor == "mag" else math.degrees(scaling.raw_rate_rad_s)
         return _each(value, raw, "µT" if sensor == "mag" else "°/s")
     if sensor.endswith("_gain") and leaf == "mantissa":
-        return joined([f"{m / 2.0**s:.5g}" for m, s in zip(value, path[sensor]["shift"], strict=True)]) + " (mantissa / 2^shift)"
+        return (
+            joined([f"{m / 2.0**s:.5g}" for m, s in zip(value, path[sensor]["shift"], strict=True)])
+            + " (mantissa / 2^shift)"
+        )
     return ""
 
 
@@ -135,19 +140,39 @@ def size_rows(scaling: Scaling) -> list[Row]:
         Row("tick of the pulse timer", f"{scaling.timeline.tick_us:g} µs"),
     ]
     for axis, name in enumerate(AXES):
-        full, limit = scaling.mission.coil[axis].dipole_a_m2, scaling.dipole_a_m2[axis]
-        rows.append(Row(f"command count, coil {name}", f"{scaling.command_a_m2(axis) * 1e6:.5g} µA m²",
-                        f"limit of the mean {limit * 1e3:.5g} mA m², full dipole {full * 1e3:.5g} mA m²"))  # fmt: skip
+        full, limit = scaling.mission.coil[axis].dipole_a_m2 * 1e3, scaling.dipole_a_m2[axis] * 1e3
+        step = f"{scaling.command_a_m2(axis) * 1e6:.5g} µA m²"
+        limits = f"limit of the mean {limit:.5g} mA m², full dipole {full:.5g} mA m²"
+        rows.append(Row(f"command count, coil {name}", step, limits))
     gain = scaling.gain
-    rows.append(Row("gain k", f"{gain.k_am2_s_per_t:.5g} A m² s/T", f"K = {gain.K_n_m_s:.5g} N m s, from {gain.origin}"))
+    rows.append(
+        Row(
+            "gain k",
+            f"{gain.k_am2_s_per_t:.5g} A m² s/T",
+            f"K = {gain.K_n_m_s:.5g} N m s, from {gain.origin}",
+        )
+    )
     return rows
 
 
 def timeline_rows(scaling: Scaling) -> list[tuple[str, float, float]]:
     """(window, from, to) in ms from the start of the cycle."""
     t = scaling.timeline
-    edges = (0, t.sample_start_us, t.sample_start_us + t.sample_us, t.drive_start_us, t.drive_end_us, t.period_us)
-    names = ("blanking: coils off, currents decay", "sample", "compute delay", "drive window", "rest: coils off")
+    edges = (
+        0,
+        t.sample_start_us,
+        t.sample_start_us + t.sample_us,
+        t.drive_start_us,
+        t.drive_end_us,
+        t.period_us,
+    )
+    names = (
+        "blanking: coils off, currents decay",
+        "sample",
+        "compute delay",
+        "drive window",
+        "rest: coils off",
+    )
     return [(name, a / 1e3, b / 1e3) for name, a, b in zip(names, edges[:-1], edges[1:], strict=True)]
 
 
@@ -164,6 +189,8 @@ class StatusRow:
 def status_rows(flights: Sequence[Flown], header: Header) -> list[StatusRow]:
     """The dictionary of the status word, with its text from the header."""
     return [
-        StatusRow(bit, name, header.texts[f"MRD_S_{name}"], tuple(int(f.record.bit(bit).sum()) for f in flights))
+        StatusRow(
+            bit, name, header.texts[f"MRD_S_{name}"], tuple(int(f.record.bit(bit).sum()) for f in flights)
+        )
         for bit, name in sorted(header.named("MRD_S_").items())
     ]

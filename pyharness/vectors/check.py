@@ -17,19 +17,35 @@ from pyharness.truth import TruthController
 from pyharness.vectors.files import VectorError, VectorFile, find_vectors, read_vector
 from pyharness.vectors.verdict import Verdict
 
-_AFTER_STAGES = {"rate": "estimate", "rate_valid": "estimate", "mode": "modes", "handover": "modes", "ticks": "commanded pulses",
-                 "status": "status word", "digest": "configuration", "counters": "counters"}  # fmt: skip
+_AFTER_STAGES = {
+    "rate": "estimate",
+    "rate_valid": "estimate",
+    "mode": "modes",
+    "handover": "modes",
+    "ticks": "commanded pulses",
+    "status": "status word",
+    "counters": "counters",
+    "digest": "configuration",
+}
+"""What follows the stages of the trace, in the order in which a step works it out."""
 
 
 def stage_of(column: str) -> str:
     """The stage that a column of the outputs belongs to: "outputs.trace.derivative.factor" → "derivative"."""
-    parts = column.removeprefix("outputs.").partition("[")[0].split(".")
-    return parts[1].replace("_", "-") if parts[0] == "trace" else _AFTER_STAGES[parts[0]]
+    top, stage = _top_and_stage(column)
+    return stage.replace("_", "-") if top == "trace" else _AFTER_STAGES[top]
 
 
 def in_stage_order(names: list[str]) -> list[int]:
-    """Indices of the output columns in the order in which a step works them out: the stages first, then what follows."""
-    return sorted(range(len(names)), key=lambda i: not names[i].startswith("outputs.trace."))
+    """Indices of the output columns in the order in which a step works them out."""
+    after = list(_AFTER_STAGES)
+    tops = [_top_and_stage(name)[0] for name in names]
+    return sorted(range(len(names)), key=lambda i: -1 if tops[i] == "trace" else after.index(tops[i]))
+
+
+def _top_and_stage(column: str) -> tuple[str, str]:
+    parts = column.removeprefix("outputs.").partition("[")[0].split(".")
+    return parts[0], parts[1] if len(parts) > 1 else ""
 
 
 def check_folder(

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -34,7 +35,7 @@ def digest_text(scenario: Scenario, record: Record, command: str) -> str:
         "seed": scenario.seed,
         "overrides": scenario.overrides,
         "command": command,
-        "config_digest": f"{record.flight.scaling.config['digest']:08x}",
+        "config_digest": config_digest(record),
         "cycles": len(record.inputs),
         "checkpoint_every": CHECKPOINT,
         "checkpoints": hashes(record),
@@ -56,17 +57,32 @@ def hashes(record: Record) -> list[str]:
 
 
 def check_digests(folder: Path, controller: Controller, mission_path: str, bar: tqdm) -> list[Verdict]:
-    """Fly every long flight that the folder has a digest of, and compare. Raises NoVectors if there is none."""
-    contents = [read_digest(path) for path in sorted((folder / "digests").glob("*.json"))]
-    if not contents:
+    """Fly every long flight and compare it with its digest. Raises NoVectors if the folder has none."""
+    contents = {scenario.name: folder / "digests" / f"{scenario.name}.json" for scenario in LONG}
+    present = [scenario for scenario in LONG if contents[scenario.name].is_file()]
+    if not present:
         raise NoVectors(f"{folder}: no digests here; write them with: slackwater vectors write --out {folder}")
-    known = {scenario.name: scenario for scenario in LONG}
-    if unknown := [content["name"] for content in contents if content["name"] not in known]:
-        raise VectorError(f"{folder}: digests of unknown flights: {', '.join(unknown)}")
-    flights = [known[content["name"]].flight(mission_path) for content in contents]
+    flights = [scenario.flight(mission_path) for scenario in present]
     bar.total = max(flight.cycles for flight in flights)
     records = fly(flights, controller, bar.update)
-    return [verdict(content, record) for content, record in zip(contents, records, strict=True)]
+    return [verdict(read_digest(contents[s.name]), record) for s, record in zip(present, records, strict=True)]
+
+
+def known_digests(folder: Path, records: Sequence[Record]) -> list[tuple[dict[str, Any], Record]]:
+    """The digests that a folder has of the flights of `LONG`, for flights of the configuration they are of."""
+    known = []
+    for scenario, record in zip(LONG, records, strict=True):
+        path = folder / "digests" / f"{scenario.name}.json"
+        if path.is_file():
+            content = read_digest(path)
+            if content["config_digest"] == config_digest(record):
+                known.append((content, record))
+    return known
+
+
+def config_digest(record: Record) -> str:
+    """The digest of the configuration that flew, as the files have it."""
+    return f"{record.flight.scaling.config['digest']:08x}"
 
 
 def verdict(content: dict[str, Any], record: Record) -> Verdict:
@@ -93,9 +109,8 @@ def read_digest(path: Path) -> dict[str, Any]:
 
 def first_difference(content: dict[str, Any], record: Record) -> str | None:
     """Where a flight departs from a digest file, in words; None if it does not."""
-    digest = f"{record.flight.scaling.config['digest']:08x}"
-    if content["config_digest"] != digest:
-        return f"configuration {digest}, the digest is for {content['config_digest']}"
+    if content["config_digest"] != config_digest(record):
+        return f"configuration {config_digest(record)}, the digest is for {content['config_digest']}"
     found = hashes(record)
     if len(record.inputs) != content["cycles"]:
         return f"{len(record.inputs)} cycles, the digest has {content['cycles']}"

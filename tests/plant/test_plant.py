@@ -161,6 +161,19 @@ def test_reading_twice_gives_the_same_counts():
     assert not np.array_equal(first.mag_counts, plant.sample().mag_counts)
 
 
+def test_the_sensors_noises_are_their_own():
+    noisy = ideal_with(noise_nt=1000.0)
+    noisy = replace(noisy, gyro=replace(noisy.gyro, noise_deg_s=0.3))
+    plant = Plant([noisy], [5], field=ConstantField(0.0 * FIELD), rate_rad_s=np.zeros((3, 1)))
+    log = []
+    for _ in range(200):
+        sample = plant.sample()
+        log.append(np.concatenate((sample.mag_counts, sample.gyro_counts))[:, 0])
+        plant.drive(np.zeros((3, 1), int))
+    assert np.std(log, axis=0) == pytest.approx([80.0] * 3 + [72.0] * 3, rel=0.2)
+    assert np.abs(np.corrcoef(log, rowvar=False) - np.eye(6)).max() < 0.3
+
+
 def test_a_pulse_is_seen_by_the_magnetometer_only_while_it_decays():
     loud = ideal_with(stray_ut_per_a_m2=((100.0, 0.0, 0.0), (0.0, 100.0, 0.0), (0.0, 0.0, 100.0)))
     still = {"field": ConstantField(0.0 * FIELD), "attitude": ALIGNED, "rate_rad_s": np.zeros((3, 1))}

@@ -1,4 +1,4 @@
-"""One short flight of the demo for all tests of the review: it saturates, loses samples and has coils switched off late."""
+"""A short flight of the demo for all tests of the review: it saturates, loses samples, and switches coils off late."""
 
 import pytest
 
@@ -19,8 +19,13 @@ LATE = range(300, 330)
 def flights() -> list[Flown]:
     scaling = scale(load_mission(demo_path()))
     controller = load_controller("c")
-    events = (DropSample(DROPPED.start, DROPPED.stop), LateSwitchOff(LATE.start, LATE.stop, coil=0, ticks=600))
-    records = fly([Flight(scaling, 900, events=events), Flight(scaling, 300, along_field=True, seed=2)], controller)
+    events = (
+        DropSample(DROPPED.start, DROPPED.stop),
+        LateSwitchOff(LATE.start, LATE.stop, coil=0, ticks=600),
+    )
+    records = fly(
+        [Flight(scaling, 900, events=events), Flight(scaling, 300, along_field=True, seed=2)], controller
+    )
     interface = controller.interface
     return [
         Flown(title, r, compare_with_truth(scaling, r.inputs, r.outputs, interface.header), interface)

@@ -46,4 +46,6 @@ def test_chased_remanence_is_what_the_law_makes_of_a_reversal(scaling, coil):
 
 def test_low_pass_lessens_the_chase(scaling):
     half = {**scaling.config, "path": {**scaling.config["path"], "filter_gain": 16384}}
-    assert chased_remanence(replace(scaling, config=half), 0) == pytest.approx(chased_remanence(scaling, 0) / 2)
+    assert chased_remanence(replace(scaling, config=half), 0) == pytest.approx(
+        chased_remanence(scaling, 0) / 2
+    )

@@ -26,6 +26,11 @@ def with_outputs(flown, change):
     return with_record(flown, outputs=outputs)
 
 
+def blanked_late(flown):
+    """Cycles with a blanked sample but for the first, in which nothing is known of the coils."""
+    return 1 + np.flatnonzero(flown.bit("BLANKED")[1:])
+
+
 def test_every_flight_and_every_promise_has_its_check(flights, vectors):
     names = [check.name for check in checks(flights, vectors)]
     assert len(set(names)) == len(names) == 3 * len(flights) + 4
@@ -70,14 +75,16 @@ def test_a_comparison_in_which_no_law_acted_proves_nothing(flown, vectors):
 
 
 def test_late_switch_off_leads_to_blanked_samples_that_are_not_used(flown, vectors):
-    blanked = np.flatnonzero(flown.bit("BLANKED"))
+    blanked = blanked_late(flown)
     assert len(blanked) > 5 and set(blanked) <= set(range(LATE.start + 1, LATE.stop + 1))
     assert found("blanking", [flown], vectors).passed
 
 
 @pytest.mark.parametrize("gate_lies", [False, True])
-def test_a_blanked_sample_that_is_used_is_found_also_when_the_gate_reports_it_as_old(flown, vectors, gate_lies):
-    cycle = np.flatnonzero(flown.bit("BLANKED"))[0]
+def test_a_blanked_sample_that_is_used_is_found_also_when_the_gate_reports_it_as_old(
+    flown, vectors, gate_lies
+):
+    cycle = blanked_late(flown)[0]
 
     def trust(outputs):
         outputs["trace"]["gate"]["trusted"][cycle] = 1

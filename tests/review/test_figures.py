@@ -10,11 +10,14 @@ import pytest
 from matplotlib.figure import Figure
 from review.conftest import DROPPED
 
-from pyharness.review import gallery, save_figures
+from pyharness.review import figures, save_figures
 from pyharness.review.bins import Bins
-from pyharness.review.figures import dipole_figure, duty_figure, error_figure, rates_figure, samples_figure
-from pyharness.review.gallery import PLOTS
+from pyharness.review.dipole import dipole_figure, duty_figure
+from pyharness.review.error import error_figure
+from pyharness.review.figures import PLOTS
 from pyharness.review.magnifier import cycle_figure, decaying_dipole, default_cycle
+from pyharness.review.rates import rates_figure
+from pyharness.review.samples import samples_figure
 from pyharness.review.style import inline_svg, save
 
 SVG = "{http://www.w3.org/2000/svg}"
@@ -55,7 +58,9 @@ def test_saturated_cycles_are_marked_one_by_one(flown):
         assert np.array_equal(shown, window[flown.saturated[window, axis]]) and len(shown) > 5
         limit = flown.scaling.dipole_a_m2[axis] * 1e3
         assert np.abs(mark.get_ydata()).max() == pytest.approx(limit, rel=2e-3)
-    assert all(mark.get_xdata().size == 0 for mark in lines(dipole_figure(without_saturation(flown)), "saturated"))
+    assert all(
+        mark.get_xdata().size == 0 for mark in lines(dipole_figure(without_saturation(flown)), "saturated")
+    )
 
 
 def test_share_of_saturated_cycles_is_that_of_the_status_words(flown):
@@ -70,7 +75,9 @@ def test_share_of_saturated_cycles_is_that_of_the_status_words(flown):
 
 
 def test_applied_dipole_follows_the_pulses_not_the_command(flown):
-    assert not flown.duty[:60].any() and flown.commanded_a_m2[1:60].any()  # hold-off: the law asks, no pulse leaves
+    assert (
+        not flown.duty[:60].any() and flown.commanded_a_m2[1:60].any()
+    )  # hold-off: the law asks, no pulse leaves
     assert not flown.applied_a_m2[:60].any()
     as_asked = (flown.record.outputs["ticks"] == flown.record.applied_ticks).all(axis=1)
     damping = flown.driven & as_asked & ~flown.bit_per_axis("SHORT_PULSE").any(axis=1)
@@ -107,7 +114,9 @@ def test_error_figure_reaches_the_largest_error_and_bound(flown):
     assert dipole.get_ydata().max() == pytest.approx(comparison.command_error_a_m2.max() * 1e3)
     assert ticks.get_ydata().max() == pytest.approx(comparison.ticks_error.max())
     bound, _ = lines(figure, "bound (band: its least to its greatest)")
-    assert bound.get_ydata().max() == pytest.approx((comparison.command_bound / 32768 * comparison.dipole_a_m2).max() * 1e3)
+    assert bound.get_ydata().max() == pytest.approx(
+        (comparison.command_bound / 32768 * comparison.dipole_a_m2).max() * 1e3
+    )
 
 
 def test_rates_figure_names_the_moments_only_when_they_came(flown):
@@ -133,7 +142,11 @@ def test_tail_of_the_cycle_before_reaches_into_the_blanking(flown):
     width_ms = abs(int(flown.record.applied_ticks[cycle - 1, axis])) * 0.1
     time_ms = np.array([1.0, 20.0, 60.0])
     since_off = time_ms + 500.0 - 90.0 - width_ms
-    expected = coil.dipole_a_m2 * (1 - np.exp(-width_ms / coil.time_constant_ms)) * np.exp(-since_off / coil.time_constant_ms)
+    expected = (
+        coil.dipole_a_m2
+        * (1 - np.exp(-width_ms / coil.time_constant_ms))
+        * np.exp(-since_off / coil.time_constant_ms)
+    )
     shown = np.abs(decaying_dipole(flown, cycle, time_ms)[:, axis])
     assert shown == pytest.approx(expected, rel=1e-9) and shown[0] > 1e-3
 
@@ -152,7 +165,9 @@ def test_a_cycle_that_was_not_flown(flown, cycle):
 def test_inline_svg_keeps_text_and_has_ids_of_its_own(flown):
     name = 'id="x" <b>$a$ & url(#c)'
     mission = replace(flown.scaling.mission, name=name)
-    record = replace(flown.record, flight=replace(flown.record.flight, scaling=replace(flown.scaling, mission=mission)))
+    record = replace(
+        flown.record, flight=replace(flown.record.flight, scaling=replace(flown.scaling, mission=mission))
+    )
     svg = inline_svg(duty_figure(replace(flown, record=record)), "abc", 'a "label" & <more>')
     root = ElementTree.fromstring(svg)
     assert root.attrib["aria-label"] == 'a "label" & <more>'
@@ -167,7 +182,7 @@ def test_inline_svg_keeps_text_and_has_ids_of_its_own(flown):
 @pytest.mark.parametrize("kind", ["svg", "png"])
 def test_saved_figures_have_the_same_bytes_each_time(flown, tmp_path, kind, monkeypatch):
     plots = [plot for plot in PLOTS if plot.name in ("cycle", "samples")]
-    monkeypatch.setattr(gallery, "PLOTS", plots)
+    monkeypatch.setattr(figures, "PLOTS", plots)
     paths = save_figures(flown, tmp_path / "new" / "folder", kind)
     assert [path.name for path in paths] == [f"{plot.name}.{kind}" for plot in plots]
     for path, plot in zip(paths, plots, strict=True):
@@ -179,7 +194,9 @@ def test_saved_figures_have_the_same_bytes_each_time(flown, tmp_path, kind, monk
 
 def test_settings_of_the_user_have_no_influence_and_stay(flown):
     plain = inline_svg(duty_figure(flown), "a", "a")
-    with matplotlib.rc_context({"axes.grid": True, "font.size": 20, "svg.fonttype": "path", "lines.linewidth": 7}):
+    with matplotlib.rc_context(
+        {"axes.grid": True, "font.size": 20, "svg.fonttype": "path", "lines.linewidth": 7}
+    ):
         before = dict(matplotlib.rcParams)
         assert inline_svg(duty_figure(flown), "a", "a") == plain
         assert dict(matplotlib.rcParams) == before

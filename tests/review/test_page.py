@@ -12,7 +12,18 @@ from pyharness.review import page, render, review_data, write_page
 from pyharness.review.blanking import blanking_margins
 
 COMMAND = "slackwater review --out page.html"
-SECTIONS = ("verdict", "caution", "numbers", "figures", "timeline", "vectors", "mission", "configuration", "status", "reproduce")
+SECTIONS = (
+    "verdict",
+    "caution",
+    "numbers",
+    "figures",
+    "timeline",
+    "vectors",
+    "mission",
+    "configuration",
+    "status",
+    "reproduce",
+)
 VOID = {"meta", "br", "link", "img", "hr", "input"}
 
 
@@ -83,7 +94,11 @@ def test_html_is_well_formed_and_self_contained(text, reader):
     assert len(reader.ids) == len(set(reader.ids))
     assert all(link.startswith("#") and link[1:] in reader.ids for link in reader.links)
     assert not {"script", "link", "iframe", "object", "img"} & reader.tags
-    assert "@import" not in text and "http" not in text and all(u.startswith("url(#") for u in re.findall(r"url\([^)]*\)", text))
+    assert (
+        "@import" not in text
+        and "http" not in text
+        and all(u.startswith("url(#") for u in re.findall(r"url\([^)]*\)", text))
+    )
     assert set(re.findall(r"url\(#([^)]*)\)", text)) <= set(reader.ids)
     assert len(text.encode()) < 2_500_000
 
@@ -95,8 +110,11 @@ def test_every_section_is_there_in_order(reader):
 
 def test_caution(reader):
     caution = rows(reader, "caution")
-    for words in ("not flight-qualified", "polarity of every coil and of every sensor axis must be shown on the hardware",
-                  "licensed or delegated authority"):  # fmt: skip
+    for words in (
+        "not flight-qualified",
+        "polarity of every coil and of every sensor axis must be shown on the hardware",
+        "licensed or delegated authority",
+    ):
         assert words in caution
 
 
@@ -110,7 +128,9 @@ def test_numbers_are_those_of_the_records(flights, reader):
         record = flown.record
         assert f"{np.degrees(np.linalg.norm(record.rate_rad_s[-1])):.3f} °/s" in shown
         duty = np.abs(record.applied_ticks).mean(axis=0) * 1e-4 / 0.5
-        assert ", ".join(f"{axis} {share * 100:.1f} %" for axis, share in zip("xyz", duty, strict=True)) in shown
+        assert (
+            ", ".join(f"{axis} {share * 100:.1f} %" for axis, share in zip("xyz", duty, strict=True)) in shown
+        )
         error = np.abs(flown.comparison.command_error * flown.comparison.dipole_a_m2 / 32768).max() * 1e3
         assert f"{error:.3f} mA m² where" in shown
         used = (flown.comparison.command_error / np.maximum(flown.comparison.command_bound, 1e-9)).max()
@@ -121,8 +141,12 @@ def test_numbers_are_those_of_the_records(flights, reader):
 
 def test_timeline_and_margins(data, reader):
     shown = rows(reader, "timeline")
-    for words in ("blanking: coils off, currents decay 0.000 60.000 60.000", "sample 60.000 80.000 20.000",
-                  "compute delay 80.000 90.000 10.000", "drive window 90.000 490.000 400.000"):  # fmt: skip
+    for words in (
+        "blanking: coils off, currents decay 0.000 60.000 60.000",
+        "sample 60.000 80.000 20.000",
+        "compute delay 80.000 90.000 10.000",
+        "drive window 90.000 490.000 400.000",
+    ):
         assert words in shown
     for margin in blanking_margins(data.scaling):
         assert f"{margin.needed_ms:.1f} 60.0 70.0 {margin.margin_ms:+.1f} yes" in shown
@@ -131,7 +155,10 @@ def test_timeline_and_margins(data, reader):
 def test_a_coil_that_needs_more_blanking_is_called_out(data, flights, one_figure):
     slow = replace(data.mission.coil[0], time_constant_ms=20.0)
     scaling = replace(data.scaling, mission=replace(data.mission, coil=(slow, *data.mission.coil[1:])))
-    flown = replace(flights[0], record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)))
+    flown = replace(
+        flights[0],
+        record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)),
+    )
     shown = rows(Reader(render(replace(data, flights=(flown,)))), "timeline")
     assert "163.1 60.0 70.0 -103.1 NO" in shown  # 20 ms × ln(43.59 µT / 12.5 nT)
 
@@ -143,11 +170,22 @@ def test_mission_configuration_and_digests(data, reader):
     assert mission.index("coil.x.polarity") < mission.index("coil.y.core")
     assert all(key.path.partition(".")[0] in mission for key in KEYS)
     configuration = rows(reader, "configuration")
-    for words in ("path.window_ticks 4000 400 ms", "path.blanking_us 60000, 60000, 60000 60, 60, 60 ms", "path.polarity 1, -1, 1",
-                  "path.saturation 2 keep direction", "supervisor.settle_by 2 gyro", "path.norm_max_sq 1073676289 ‖B‖ = 62.40 µT"):  # fmt: skip
+    for words in (
+        "path.window_ticks 4000 400 ms",
+        "path.blanking_us 60000, 60000, 60000 60, 60, 60 ms",
+        "path.polarity 1, -1, 1",
+        "path.saturation 2 keep direction",
+        "supervisor.settle_by 2 gyro",
+        "path.norm_max_sq 1073676289 ‖B‖ = 62.40 µT",
+    ):
         assert words in configuration
     reproduce = rows(reader, "reproduce")
-    for words in (COMMAND, data.mission.digest, data.interface.sources.digest, f"{data.scaling.config['digest']:08x}"):
+    for words in (
+        COMMAND,
+        data.mission.digest,
+        data.interface.sources.digest,
+        f"{data.scaling.config['digest']:08x}",
+    ):
         assert words in reproduce
 
 
@@ -162,7 +200,10 @@ def test_status_dictionary_has_the_header_s_texts_and_the_counts(data, reader):
 
 def test_vectors_with_their_verdicts(reader):
     shown = rows(reader, "vectors")
-    assert "PASS loop/nominal tip-off with saturated coils 1200 equal in all columns" in shown and "FAIL" not in shown
+    assert (
+        "PASS loop/nominal tip-off with saturated coils 1200 equal in all columns" in shown
+        and "FAIL" not in shown
+    )
 
 
 def test_verdict_says_which_checks_fail(data, reader):
@@ -185,16 +226,25 @@ def test_verdict_passes_only_when_every_check_does(data, vectors, one_figure):
 def test_failed_and_missing_vectors(data, flights, vectors, one_figure):
     failed = replace(vectors[1], passed=False, detail="row 17, trace.gate.trusted: 1, expected 0")
     shown = Reader(render(review_data(flights, [vectors[0], failed], COMMAND)))
-    assert "FAIL unit/gate ages at the edge of the blanking time 37 row 17, trace.gate.trusted: 1, expected 0" in rows(shown, "vectors")
+    assert (
+        "FAIL unit/gate ages at the edge of the blanking time 37 row 17, trace.gate.trusted: 1, expected 0"
+        in rows(shown, "vectors")
+    )
     assert "Golden vectors: every file replayed without a difference: 1 of 2 files" in rows(shown, "verdict")
-    assert "FAIL No vectors were replayed." in rows(Reader(render(review_data(flights, [], COMMAND))), "vectors")
+    assert "FAIL No vectors were replayed." in rows(
+        Reader(render(review_data(flights, [], COMMAND))), "vectors"
+    )
 
 
 def test_hostile_texts_stay_texts(data, flights, vectors, one_figure):
     evil = "</title><script>alert('$x$')</script>&amp;\"'><b id=\"verdict\">"
     mission = replace(data.mission, name=evil, source=evil)
     scaling = replace(data.scaling, mission=mission)
-    flown = replace(flights[0], title=evil, record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)))
+    flown = replace(
+        flights[0],
+        title=evil,
+        record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)),
+    )
     verdict = replace(vectors[0], name=evil, purpose=evil, detail=evil)
     shown = Reader(render(review_data([flown], [verdict], evil)))
     assert "script" not in shown.tags and "b" not in shown.tags and len(shown.ids) == len(set(shown.ids))
