@@ -12,11 +12,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from pyharness.mission import Mission
-from pyharness.plant.orbit import EARTH_RADIUS_M, inclination_rad, orbital_rate, semi_major_axis_m
-
-DIPOLE_FIELD_T = 29733.37e-9
-"""Field of the centred dipole at its equator and the reference radius; degree-1 terms of IGRF-14, epoch 2025.0."""
-DIPOLE_RADIUS_M = 6371.2e3
+from pyharness.mission.orbit import equatorial_field_ut
+from pyharness.plant.orbit import inclination_rad, orbital_rate, semi_major_axis_m
 
 
 @dataclass(frozen=True)
@@ -35,8 +32,8 @@ def rms_field_t(mission: Mission) -> float:
     Mean of 1 + 3 sin² λ over a circular orbit, sin λ = sin i sin u.
     """
     sine = math.sin(inclination_rad(mission.orbit))
-    ratio = DIPOLE_RADIUS_M / semi_major_axis_m(mission.orbit)
-    return DIPOLE_FIELD_T * ratio**3 * math.sqrt(1.0 + 1.5 * sine * sine)
+    equator_ut = equatorial_field_ut(semi_major_axis_m(mission.orbit) * 1e-3)
+    return equator_ut * 1e-6 * math.sqrt(1.0 + 1.5 * sine * sine)
 
 
 def recommended_gain_n_m_s(mission: Mission) -> float:

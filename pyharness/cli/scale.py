@@ -10,6 +10,7 @@ from pyharness.cli.common import add_mission, add_sources, announce_sources, tab
 from pyharness.describe import c_header, describe_config, describe_resolution
 from pyharness.flight import Interface, find_sources
 from pyharness.mission import load_mission
+from pyharness.mission.schema import KEYS
 from pyharness.scaling import scale
 from pyharness.whole_files import write_whole
 
@@ -24,12 +25,16 @@ def add_to(commands) -> None:
     add_mission(parser)
     parser.add_argument("--header", metavar="FILE", help="also write the configuration as a C header")
     parser.add_argument("--json", action="store_true", help="print the bare integers as JSON, for other tools")
+    parser.add_argument("--keys", action="store_true", help="print every key of a mission file instead: unit, legal values, default, meaning")
     add_sources(parser)
     parser.set_defaults(run=run)
 
 
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
+    if options.keys:
+        print("\n".join(f"{key.path}\n    {key.expected()}; default: {key.default_text}\n    {key.meaning}" for key in KEYS))
+        return 0
     mission = load_mission(options.mission)
     scaling = scale(mission)
     if options.json:

@@ -14,11 +14,12 @@ from sgp4.api import SGP4_ERRORS, WGS72, Satrec, jday
 from sgp4.propagation import gstime
 
 from pyharness.mission.model import Orbit
+from pyharness.mission.orbit import EQUATORIAL_RADIUS_KM, MU_KM3_S2
 
-EARTH_MU = 3.986004418e14
-"""Gravitational parameter of the Earth, m³/s² (WGS 84)."""
-EARTH_RADIUS_M = 6378137.0
-"""Equatorial radius of the Earth, m (WGS 84)."""
+EARTH_MU = MU_KM3_S2 * 1e9
+"""Gravitational parameter of the Earth, m³/s²."""
+EARTH_RADIUS_M = EQUATORIAL_RADIUS_KM * 1e3
+"""Equatorial radius of the Earth, m."""
 
 _DAYS_1949 = 2433281.5
 """Julian date of 1949-12-31 00:00 UT, from which SGP4 counts epochs."""

@@ -84,8 +84,8 @@ def sample_gaps_us(flown: Flown) -> tuple[np.ndarray, np.ndarray]:
     """Time between coils and samples from what really happened, µs.
 
     First (cycles − 1, 3): from each coil's actual switch-off to the start of the next sample; the largest
-    integer for a coil that was off in that cycle. Second (cycles,): from the end of a sample to the start of the
-    pulses that follow.
+    integer for a coil that was off in that cycle. Second (cycles,): from the end of a sample to the start of
+    the pulses that follow.
     """
     timeline, record = flown.scaling.timeline, flown.record
     path = record.inputs["path"]

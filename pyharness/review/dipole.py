@@ -27,7 +27,7 @@ _CLOSE_UP_CYCLES = 60
 
 
 def dipole_figure(flown: Flown) -> Figure:
-    """Mean dipole per coil, commanded and applied, over the flight, and cycle by cycle around the first saturation.
+    """Mean dipole per coil, commanded and applied: the whole flight, and single cycles at the first saturation.
 
     Saturated cycles are marked: as a share under the whole flight, one by one beside it.
     """

@@ -1,7 +1,7 @@
 """The figures of a flight by name, with what to look for in each.
 
 Each is drawn from a `Flown` by a function of its own, and can stand alone. Flights of thousands of cycles are
-drawn as bands from the smallest to the largest value of a few hundred runs of cycles: what stands out stays visible.
+drawn as bands from the smallest to the largest value of some hundred runs of cycles: no peak is lost.
 """
 
 from __future__ import annotations

@@ -62,14 +62,14 @@ class Flown:
 
     @cached_property
     def commanded_a_m2(self) -> np.ndarray:
-        """(cycles, 3) mean dipole over the cycle that the law asks for, whatever the mode, after saturation."""
+        """(cycles, 3) mean dipole that the law asks for, after saturation, whatever the mode."""
         return (
             self.record.outputs["trace"]["saturation"]["command"] / Q15 * np.array(self.scaling.dipole_a_m2)
         )
 
     @cached_property
     def applied_a_m2(self) -> np.ndarray:
-        """(cycles, 3) mean dipole over the cycle of the pulses as they really were, at the nominal voltage."""
+        """(cycles, 3) mean dipole of the pulses as they really were, at the nominal voltage."""
         coils = self.scaling.mission.coil
         full = np.array([coil.polarity * coil.dipole_a_m2 for coil in coils])
         timeline = self.scaling.timeline

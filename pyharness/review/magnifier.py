@@ -1,4 +1,4 @@
-"""One cycle under the magnifier: windows, coil currents with their edges, and what the magnetometer sees of them."""
+"""One cycle under the magnifier: windows, coil currents with their edges, and the stray field they leave."""
 
 from __future__ import annotations
 
@@ -22,7 +22,7 @@ _WINDOWS = (
 
 
 def default_cycle(flown: Flown) -> int:
-    """The first saturated cycle after one with pulses; if there is none, the first with pulses; else the second."""
+    """The first saturated cycle after one with pulses; else the first with pulses; else the second."""
     on = flown.duty.any(axis=1)
     after_pulses = np.append(False, on[:-1])
     for flags in (flown.saturated.any(axis=1) & after_pulses, on):
@@ -33,7 +33,7 @@ def default_cycle(flown: Flown) -> int:
 
 
 def cycle_figure(flown: Flown, cycle: int | None = None) -> Figure:
-    """Currents over a cycle, and the stray field from the end of the pulses before it to the start of its own.
+    """Currents over a cycle; the stray field from the end of the pulses before it to the start of its own.
 
     Raises IndexError for a cycle that was not flown.
     """
@@ -152,7 +152,7 @@ def _currents(axes: Axes, flown: Flown, cycle: int, span: tuple[float, float]) -
 
 
 def _fine_times(flown: Flown, cycle: int, span: tuple[float, float]) -> np.ndarray:
-    """Times that resolve every edge: a coarse grid, and eight L/R after the start and the end of each pulse."""
+    """Times that show every edge: a coarse grid, and eight L/R from the start and the end of each pulse."""
     timeline = flown.scaling.timeline
     times = [np.linspace(*span, 200)]
     taus = [coil.time_constant_ms for coil in flown.scaling.mission.coil]

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -10,6 +9,7 @@ from pathlib import Path
 from jinja2 import Environment, FileSystemLoader, StrictUndefined
 from markupsafe import Markup
 
+from pyharness.describe import describe_config, describe_resolution
 from pyharness.flight import Interface
 from pyharness.mission import Mission
 from pyharness.review.blanking import blanking_margins
@@ -18,10 +18,11 @@ from pyharness.review.flown import Flown
 from pyharness.review.figures import PLOTS, Plot
 from pyharness.review.numbers import numbers
 from pyharness.review.style import inline_svg
-from pyharness.review.tables import configuration_rows, mission_rows, size_rows, status_rows, timeline_rows
+from pyharness.review.tables import mission_rows, status_rows, timeline_rows
 from pyharness.review.wording import tied
 from pyharness.scaling import Scaling
 from pyharness.vectors.verdict import Verdict
+from pyharness.whole_files import write_whole
 
 _TEMPLATE = "page.html.jinja"
 _FURTHER_PLOTS = ("rates", "duty", "error")
@@ -62,7 +63,7 @@ class ReviewData:
 def review_data(
     flights: Sequence[Flown], vectors: Sequence[Verdict], command: str, settle_within_s: float | None = None
 ) -> ReviewData:
-    """Data with the checks worked out. `settle_within_s` as in `checks`. Raises ValueError without a flight."""
+    """Data, checks worked out. `settle_within_s` as in `checks`. Raises ValueError without a flight."""
     if not flights:
         raise ValueError("flights: none, the page needs at least one")
     worked_out = checks(flights, vectors, settle_within_s)
@@ -82,19 +83,20 @@ def _pictures(flights: Sequence[Flown]) -> Iterator[_Picture]:
             if index == 0 or plot.name in _FURTHER_PLOTS:
                 name = f"flight{index + 1}-{plot.name}"
                 svg = inline_svg(plot.draw(flown), name, f"{plot.title}, {flown.title}")
-                yield _Picture(
-                    plot, flown, Markup(svg)
-                )  # noqa: S704 - made by matplotlib, which escapes its texts
+                yield _Picture(plot, flown, Markup(svg))  # its texts are escaped as XML already
 
 
 def render(data: ReviewData) -> str:
     """The page as text. The same data give the same text: it holds no date, digests say what was shown."""
     environment = Environment(
-        loader=FileSystemLoader(Path(__file__).parent), autoescape=True, undefined=StrictUndefined,
-        trim_blocks=True, lstrip_blocks=True, keep_trailing_newline=True,
-    )  # fmt: skip
+        loader=FileSystemLoader(Path(__file__).parent),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+        keep_trailing_newline=True,
+    )
     environment.filters["tied"] = tied
-    header = data.interface.header
     return environment.get_template(_TEMPLATE).render(
         data=data,
         mission=data.mission,
@@ -105,17 +107,12 @@ def render(data: ReviewData) -> str:
         timeline=timeline_rows(data.scaling),
         margins=blanking_margins(data.scaling),
         mission_rows=mission_rows(data.mission),
-        size_rows=size_rows(data.scaling),
-        configuration_rows=configuration_rows(data.scaling, header),
-        status_rows=status_rows(data.flights, header),
+        resolution=describe_resolution(data.scaling),
+        configuration=describe_config(data.scaling, data.interface),
+        status_rows=status_rows(data.flights, data.interface.header),
     )
 
 
 def write_page(data: ReviewData, path: Path) -> None:
-    """Write the page as a whole or not at all: under another name in the same folder, then put in place."""
-    unfinished = path.with_name(f".{path.name}.{os.getpid()}.tmp")
-    try:
-        unfinished.write_text(render(data), encoding="utf-8", newline="\n")
-        os.replace(unfinished, path)
-    finally:
-        unfinished.unlink(missing_ok=True)
+    """Write the page whole or not at all."""
+    write_whole(path, render(data))

@@ -100,7 +100,7 @@ def save(figure: Figure, target: Any, kind: str) -> None:
 
 
 def inline_svg(figure: Figure, name: str, label: str) -> str:
-    """The figure as an <svg> element for HTML: without prolog, scaled by the page, its ids and styles its own.
+    """The figure as an <svg> element for HTML: no prolog, scaled by the page, ids and styles its own.
 
     `name` goes before every id, so that several figures can stand in one page.
     """

@@ -16,8 +16,3 @@ _UNIT = re.compile(r"(?<=\d) (?=[^\W\d_]{1,2}\b|[%°])")
 def tied(text: str) -> str:
     """The text with each number tied to the unit behind it, so that no line breaks between them."""
     return _UNIT.sub("\u00a0", text)
-
-
-def joined(values: object) -> str:
-    """A number, or the numbers of a tuple with commas between them."""
-    return ", ".join(map(str, values)) if isinstance(values, (tuple, list)) else str(values)

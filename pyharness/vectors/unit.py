@@ -182,6 +182,19 @@ def _pulses(inputs: np.ndarray, config: Config, seed: int) -> None:
         inputs["path"]["gyro_raw"][row, (axis + 1) % 3] = (row % 60) - 30
 
 
+def _estimate(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Turns of the field from nothing to more than half a turn a period, where the chord is twice the norm."""
+    raw = inputs["path"]["mag_raw"]
+    for row in range(len(inputs)):
+        sign = -1 if row % 2 else 1
+        if row < 40:  # half a turn, give or take some counts
+            raw[row] = (sign * (1500 + row // 4), -sign * 1200, sign * (1800 - row % 3))
+        elif row < 60:  # from strong to weak and back: the chord is many times the norm
+            raw[row] = (4200, 0, 0) if row % 2 else (-1300 - row, 0, 0)
+        else:  # slow turns, count by count
+            raw[row] = (1500 + (row - 60) // 2 * (row % 2), -1200, 1800)
+
+
 def _modes(inputs: np.ndarray, config: Config, seed: int) -> None:
     """Every command in every mode, with and without low power; the field moves, so that pulses are asked for."""
     key, limit = config["supervisor"]["bench_key"], config["supervisor"]["bench_limit_ticks"]
@@ -274,6 +287,8 @@ UNIT = (
     Unit("saturation-keep-direction", "stages 6 and 7: the same demands, keeping the direction", _saturation_rows(), _saturation,
          overrides={"control": {"law": "rate", "K_n_m_s": 4.0e-5}}),
     Unit("pulses", "stage 8: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
+    Unit("estimate", "stage 9: the rate from the field's turn, from nothing to its saturation", 120, _estimate,
+         overrides={"gyro": None, "control": {"settle_by": "field"}}),
     Unit("modes", "modes: every command in every mode, with and without low power; hold-off runs out at the end", 360, _modes),
     Unit("random-derivative", "whole steps of the derivative law, drawn", 500, _random, seed=101),
     Unit("random-rate", "whole steps of the rate-damping law, drawn", 500, _random, seed=102, overrides=_RATE),

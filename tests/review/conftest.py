@@ -1,4 +1,4 @@
-"""A short flight of the demo for all tests of the review: it saturates, loses samples, and switches coils off late."""
+"""A short flight of the demo for all tests of the review: saturated, with lost samples, late switch-offs."""
 
 import pytest
 
