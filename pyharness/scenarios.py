@@ -9,16 +9,20 @@ from typing import Any
 from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateSwitchOff, LowPower
 from pyharness.exact import constants as mrd
 from pyharness.loop import Flight
-from pyharness.mission import load_mission
+from pyharness.mission import Mission, load_mission
 from pyharness.mission.model import Vector
 from pyharness.plant.orbit import orbital_period
 from pyharness.scaling import Scaling, scale
 
 
+def settling_time_s(mission: Mission) -> float:
+    """By when a mission should have settled: an orbit to stop the tumble, and its hold-off and dwell, s."""
+    return orbital_period(mission.orbit) + mission.control.hold_off_s + mission.control.dwell_s
+
+
 def long_cycles(scaling: Scaling) -> int:
-    """Cycles until a mission should have settled: an orbit, the hold-off and the dwell, in full cycles."""
-    control = scaling.mission.control
-    return math.ceil((orbital_period(scaling.mission.orbit) + control.hold_off_s + control.dwell_s) / scaling.period_s)
+    """That time in full cycles."""
+    return math.ceil(settling_time_s(scaling.mission) / scaling.period_s)
 
 
 @dataclass(frozen=True)

@@ -18,7 +18,11 @@ from hypothesis import strategies as st
 from pyharness.exact import config_digest
 from pyharness.exact.calibration import calibrate_sensor
 from pyharness.exact.constants import (
-    MRD_COMMAND_ARM, MRD_COMMAND_BENCH, MRD_COMMAND_NONE, MRD_COMMAND_RESUME, MRD_COMMAND_SAFE,
+    MRD_COMMAND_ARM,
+    MRD_COMMAND_BENCH,
+    MRD_COMMAND_NONE,
+    MRD_COMMAND_RESUME,
+    MRD_COMMAND_SAFE,
     MRD_GAIN_CONSTANT,
 )
 

@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_S_GYRO_MISSING, MRD_S_GYRO_RANGE, MRD_S_MAG_RANGE, MRD_S_SAMPLE_MISSING,
+    MRD_S_GYRO_MISSING,
+    MRD_S_GYRO_RANGE,
+    MRD_S_MAG_RANGE,
+    MRD_S_SAMPLE_MISSING,
 )
 from pyharness.exact.num import INT16_MAX, Record, Vector, bit, clamp, exceeds, flag, round_shift
 from pyharness.exact.ranges import check3

@@ -3,10 +3,23 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_S_DERIVATIVE_CLAMPED, MRD_S_INTERVAL_LONG, MRD_S_INTERVAL_SHORT, MRD_S_NO_PREVIOUS,
+    MRD_S_DERIVATIVE_CLAMPED,
+    MRD_S_INTERVAL_LONG,
+    MRD_S_INTERVAL_SHORT,
+    MRD_S_NO_PREVIOUS,
 )
 from pyharness.exact.num import (
-    INT16_MAX, WRAP, Record, Vector, bit, clamp, exceeds, norm_shift, round_div, round_shift, vmin,
+    INT16_MAX,
+    WRAP,
+    Record,
+    Vector,
+    bit,
+    clamp,
+    exceeds,
+    norm_shift,
+    round_div,
+    round_shift,
+    vmin,
 )
 from pyharness.exact.ranges import check, check3
 

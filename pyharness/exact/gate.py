@@ -3,7 +3,11 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_S_BLANKED, MRD_S_FIELD_IMPLAUSIBLE, MRD_S_MAG_RANGE, MRD_S_SAMPLE_MISSING, MRD_S_SAMPLE_OFF_TIME,
+    MRD_S_BLANKED,
+    MRD_S_FIELD_IMPLAUSIBLE,
+    MRD_S_MAG_RANGE,
+    MRD_S_SAMPLE_MISSING,
+    MRD_S_SAMPLE_OFF_TIME,
     MRD_S_SWITCH_OFF_UNSTAMPED,
 )
 from pyharness.exact.num import WRAP, Record, Vector, bit, flag

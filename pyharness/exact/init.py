@@ -5,9 +5,25 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from pyharness.exact.constants import (
-    MRD_E_BENCH, MRD_E_CHOICE, MRD_E_DIGEST, MRD_E_ESTIMATE, MRD_E_FILTER, MRD_E_GAIN, MRD_E_GYRO,
-    MRD_E_MAG, MRD_E_NORM, MRD_E_PERIOD, MRD_E_POLARITY, MRD_E_SAMPLE, MRD_E_SETTLE, MRD_E_TIMELINE,
-    MRD_E_WINDOW, MRD_GAIN_CONSTANT, MRD_LAW_RATE, MRD_OK, MRD_SETTLE_BY_GYRO,
+    MRD_E_BENCH,
+    MRD_E_CHOICE,
+    MRD_E_DIGEST,
+    MRD_E_ESTIMATE,
+    MRD_E_FILTER,
+    MRD_E_GAIN,
+    MRD_E_GYRO,
+    MRD_E_MAG,
+    MRD_E_NORM,
+    MRD_E_PERIOD,
+    MRD_E_POLARITY,
+    MRD_E_SAMPLE,
+    MRD_E_SETTLE,
+    MRD_E_TIMELINE,
+    MRD_E_WINDOW,
+    MRD_GAIN_CONSTANT,
+    MRD_LAW_RATE,
+    MRD_OK,
+    MRD_SETTLE_BY_GYRO,
 )
 from pyharness.exact.integrity import config_digest
 from pyharness.exact.num import Record, bits

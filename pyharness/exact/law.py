@@ -3,7 +3,11 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_GAIN_CONSTANT, MRD_LAW_DERIVATIVE, MRD_LAW_NONE, MRD_LAW_RATE, MRD_S_FELL_BACK,
+    MRD_GAIN_CONSTANT,
+    MRD_LAW_DERIVATIVE,
+    MRD_LAW_NONE,
+    MRD_LAW_RATE,
+    MRD_S_FELL_BACK,
 )
 from pyharness.exact.num import Record, Vector, floor_div, limit, norm_shift, round_shift, vmin
 from pyharness.exact.ranges import check, check3

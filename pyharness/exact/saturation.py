@@ -3,10 +3,23 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_S_SATURATED_X, MRD_S_SATURATED_Y, MRD_S_SATURATED_Z, MRD_SATURATE_PER_AXIS,
+    MRD_S_SATURATED_X,
+    MRD_S_SATURATED_Y,
+    MRD_S_SATURATED_Z,
+    MRD_SATURATE_PER_AXIS,
 )
 from pyharness.exact.num import (
-    INT16_MAX, Record, Vector, bit, clamp, exceeds, largest, norm_shift, round_div, vmin, with_sign,
+    INT16_MAX,
+    Record,
+    Vector,
+    bit,
+    clamp,
+    exceeds,
+    largest,
+    norm_shift,
+    round_div,
+    vmin,
+    with_sign,
 )
 from pyharness.exact.ranges import check, check3
 

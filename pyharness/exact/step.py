@@ -3,8 +3,16 @@
 from __future__ import annotations
 
 from pyharness.exact.constants import (
-    MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_SAFE, MRD_MODE_SETTLED, MRD_S_BLANKED,
-    MRD_S_COMMAND_REFUSED, MRD_S_CONFIG_CORRUPT, MRD_S_FELL_BACK, MRD_S_STATE_RESTARTED,
+    MRD_MODE_BENCH,
+    MRD_MODE_DAMPING,
+    MRD_MODE_HOLD_OFF,
+    MRD_MODE_SAFE,
+    MRD_MODE_SETTLED,
+    MRD_S_BLANKED,
+    MRD_S_COMMAND_REFUSED,
+    MRD_S_CONFIG_CORRUPT,
+    MRD_S_FELL_BACK,
+    MRD_S_STATE_RESTARTED,
 )
 from pyharness.exact.estimate import estimate
 from pyharness.exact.fields import STATE, zeros

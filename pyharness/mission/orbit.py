@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 import re
 from dataclasses import dataclass
-from datetime import datetime, timedelta, timezone
+from datetime import UTC, datetime, timedelta
 
 from sgp4.api import SGP4_ERRORS, Satrec
 from sgp4.io import compute_checksum
@@ -110,7 +110,7 @@ def _epoch(line: str) -> datetime:
     """Epoch of the first line; two-digit years from 57 on are of the twentieth century."""
     found = _LINES[0].fullmatch(line)
     year = int(found["year"])
-    start = datetime(1900 + year if year >= 57 else 2000 + year, 1, 1, tzinfo=timezone.utc)
+    start = datetime(1900 + year if year >= 57 else 2000 + year, 1, 1, tzinfo=UTC)
     return start + timedelta(days=float(found["day"]) - 1.0)
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import difflib
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 
 from pyharness.mission.schema import BY_PATH, OPTIONAL_TABLES, Depends, Key
 from pyharness.mission.wording import dotted, quantity, shown
@@ -123,7 +123,7 @@ def _checked(key: Key, path: str, value: object, shape: tuple[int, ...], problem
         return None
     if key.kind == "number":
         return float(value)
-    return value.astimezone(timezone.utc) if key.kind == "time" else value
+    return value.astimezone(UTC) if key.kind == "time" else value
 
 
 _TYPE_NAMES = {bool: " (a flag)", int: " (an integer)", float: " (a float)", str: " (a text)"}

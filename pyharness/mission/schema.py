@@ -7,7 +7,7 @@ other is in `checks`, what chooses between alternative keys in `defaults`.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 from typing import Literal
 
 from pyharness.mission.model import AXES
@@ -137,7 +137,7 @@ def _within(size: float) -> Range:
 
 
 def _new_year(year: int) -> datetime:
-    return datetime(year, 1, 1, tzinfo=timezone.utc)
+    return datetime(year, 1, 1, tzinfo=UTC)
 
 
 _ZERO = (0.0, 0.0, 0.0)

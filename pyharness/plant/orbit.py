@@ -7,7 +7,7 @@ of a detumble it is taken as inertial: precession and nutation turn it by about 
 from __future__ import annotations
 
 import math
-from datetime import datetime, timedelta, timezone
+from datetime import UTC, datetime, timedelta
 
 import numpy as np
 from sgp4.api import SGP4_ERRORS, WGS72, Satrec, jday
@@ -65,7 +65,7 @@ def _satellite(orbit: Orbit) -> Satrec:
     """
     if orbit.two_line_elements is not None:
         return Satrec.twoline2rv(*orbit.two_line_elements, WGS72)
-    epoch = orbit.epoch_utc if orbit.epoch_utc.tzinfo is None else orbit.epoch_utc.astimezone(timezone.utc)
+    epoch = orbit.epoch_utc if orbit.epoch_utc.tzinfo is None else orbit.epoch_utc.astimezone(UTC)
     day, fraction = jday(epoch.year, epoch.month, epoch.day, epoch.hour, epoch.minute,
                          epoch.second + epoch.microsecond * 1e-6)
     satellite = Satrec()

@@ -7,9 +7,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pyharness.plant.orbit import orbital_period
 from pyharness.review.flown import Flown
 from pyharness.review.wording import percent
+from pyharness.scenarios import settling_time_s
 from pyharness.vectors.verdict import Verdict
 
 DETUMBLED_DEG_S = 0.5
@@ -30,7 +30,7 @@ def checks(
 ) -> list[Check]:
     """All checks over all flights.
 
-    `settle_within_s`: time for the handover flag; None: as `default_settle_within_s` has it.
+    `settle_within_s`: time for the handover flag; None: as `settling_time_s` has it.
     """
     return [
         *(_detumbled(flown) for flown in flights),
@@ -52,14 +52,8 @@ def _detumbled(flown: Flown) -> Check:
     )
 
 
-def default_settle_within_s(flown: Flown) -> float:
-    """One orbit to stop the tumble, and the dwell and hold-off that the mission asks for, s."""
-    mission = flown.scaling.mission
-    return orbital_period(mission.orbit) + mission.control.dwell_s + mission.control.hold_off_s
-
-
 def _settled(flown: Flown, within_s: float | None) -> Check:
-    within_s = default_settle_within_s(flown) if within_s is None else within_s
+    within_s = settling_time_s(flown.scaling.mission) if within_s is None else within_s
     name = f"Settled, {flown.title}: handover flag within {within_s:.0f} s"
     if flown.settled_at is None:
         return Check(name, False, f"no handover flag in {flown.record.time_s[-1]:.0f} s")

@@ -97,7 +97,7 @@ def _error_against_bound(
 
 def _dropped(axes: Axes, flown: Flown, time: np.ndarray) -> None:
     """A row of ticks per coil: pulses too short to be made, which are left out and so outside the bound."""
-    for axis, name in enumerate(AXES):
+    for axis in range(3):
         flags = flown.comparison.dropped[:, axis]
         starts = [a for a, _ in Bins(flown.cycles, 600).spans(flags)]
         axes.plot(

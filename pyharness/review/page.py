@@ -14,8 +14,8 @@ from pyharness.flight import Interface
 from pyharness.mission import Mission
 from pyharness.review.blanking import blanking_margins
 from pyharness.review.checks import Check, checks
-from pyharness.review.flown import Flown
 from pyharness.review.figures import PLOTS, Plot
+from pyharness.review.flown import Flown
 from pyharness.review.numbers import numbers
 from pyharness.review.style import inline_svg
 from pyharness.review.tables import mission_rows, status_rows, timeline_rows

@@ -8,12 +8,11 @@ from pathlib import Path
 import numpy as np
 
 from pyharness.compare import compare_with_truth
-from pyharness.controllers import Controller, ControllerError
+from pyharness.controllers import Controller, ControllerError, TruthController
 from pyharness.flight import Interface
 from pyharness.flight.records import columns, to_columns
 from pyharness.mission import load_mission
 from pyharness.scaling import Integers, scale
-from pyharness.truth import TruthController
 from pyharness.vectors.files import VectorError, VectorFile, find_vectors, read_vector
 from pyharness.vectors.verdict import Verdict
 

@@ -10,7 +10,12 @@ from typing import Any
 
 from pyharness.exact import config_digest, path_reset, reset, state_digest, step
 from pyharness.exact.constants import (
-    MRD_GAIN_CONSTANT, MRD_LAW_DERIVATIVE, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_SATURATE_PER_AXIS, MRD_SETTLE_BY_FIELD,
+    MRD_GAIN_CONSTANT,
+    MRD_LAW_DERIVATIVE,
+    MRD_MODE_DAMPING,
+    MRD_MODE_HOLD_OFF,
+    MRD_SATURATE_PER_AXIS,
+    MRD_SETTLE_BY_FIELD,
 )
 
 Record = dict[str, Any]

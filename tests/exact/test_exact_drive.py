@@ -3,22 +3,35 @@
 from fractions import Fraction
 
 import pytest
+from exact.samples import SUPERVISOR, path_config
 from hypothesis import given
 from hypothesis import strategies as st
 
 from pyharness.exact import path_commit, path_drive, path_reset
 from pyharness.exact.constants import (
-    MRD_GAIN_CONSTANT, MRD_GAIN_NORMALISED, MRD_LAW_DERIVATIVE, MRD_LAW_NONE, MRD_LAW_RATE,
-    MRD_S_ESTIMATE_FELL_BACK, MRD_S_FELL_BACK, MRD_S_SATURATED_X, MRD_S_SATURATED_Y, MRD_S_SATURATED_Z,
-    MRD_S_SHORT_PULSE_X, MRD_S_SHORT_PULSE_Y, MRD_S_SHORT_PULSE_Z, MRD_SATURATE_KEEP_DIRECTION,
-    MRD_SATURATE_PER_AXIS, MRD_SETTLE_BY_FIELD, MRD_SETTLE_BY_GYRO,
+    MRD_GAIN_CONSTANT,
+    MRD_GAIN_NORMALISED,
+    MRD_LAW_DERIVATIVE,
+    MRD_LAW_NONE,
+    MRD_LAW_RATE,
+    MRD_S_ESTIMATE_FELL_BACK,
+    MRD_S_FELL_BACK,
+    MRD_S_SATURATED_X,
+    MRD_S_SATURATED_Y,
+    MRD_S_SATURATED_Z,
+    MRD_S_SHORT_PULSE_X,
+    MRD_S_SHORT_PULSE_Y,
+    MRD_S_SHORT_PULSE_Z,
+    MRD_SATURATE_KEEP_DIRECTION,
+    MRD_SATURATE_PER_AXIS,
+    MRD_SETTLE_BY_FIELD,
+    MRD_SETTLE_BY_GYRO,
 )
 from pyharness.exact.estimate import estimate, rate_across_field
 from pyharness.exact.law import cross_product, gain_used, rate_law
 from pyharness.exact.path import zero_trace
 from pyharness.exact.pulses import make_pulses
 from pyharness.exact.saturation import saturate
-from exact.samples import SUPERVISOR, path_config
 
 UNIT = ((32768,) * 3, (15,) * 3)
 COUNT16 = st.integers(-32767, 32767)

@@ -3,18 +3,35 @@
 from collections import Counter
 from copy import deepcopy
 
+from exact.samples import fly, make_config, make_inputs, make_state, with_changes
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from strategies import Seeded, any_config, any_inputs, configs, flights, inputs_sequences, path_configs
 
 from pyharness.exact import (
-    FIELDS, RANGES, init, path_check, path_commit, path_drive, path_reset, path_sense, reset,
+    FIELDS,
+    RANGES,
+    init,
+    path_check,
+    path_commit,
+    path_drive,
+    path_reset,
+    path_sense,
+    reset,
 )
 from pyharness.exact.constants import (
-    MRD_GAIN_NORMALISED, MRD_LAW_RATE, MRD_MODE_BENCH, MRD_MODE_DAMPING, MRD_OK, MRD_S_BLANKED,
-    MRD_S_COMMAND_REFUSED, MRD_S_CONFIG_CORRUPT, MRD_S_COUNT, MRD_S_FELL_BACK, MRD_S_STATE_RESTARTED,
+    MRD_GAIN_NORMALISED,
+    MRD_LAW_RATE,
+    MRD_MODE_BENCH,
+    MRD_MODE_DAMPING,
+    MRD_OK,
+    MRD_S_BLANKED,
+    MRD_S_COMMAND_REFUSED,
+    MRD_S_CONFIG_CORRUPT,
+    MRD_S_COUNT,
+    MRD_S_FELL_BACK,
+    MRD_S_STATE_RESTARTED,
 )
-from exact.samples import fly, make_config, make_inputs, make_state, with_changes
-from strategies import Seeded, any_config, any_inputs, configs, flights, inputs_sequences, path_configs
 
 
 def elements(record, fields):

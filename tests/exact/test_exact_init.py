@@ -1,14 +1,30 @@
 """The configuration check: every boundary from both sides, and the order of the codes."""
 
 import pytest
+from exact.samples import make_config
 
 from pyharness.exact import init, path_check
 from pyharness.exact.constants import (
-    MRD_E_BENCH, MRD_E_CHOICE, MRD_E_DIGEST, MRD_E_ESTIMATE, MRD_E_FILTER, MRD_E_GAIN, MRD_E_GYRO,
-    MRD_E_MAG, MRD_E_NORM, MRD_E_PERIOD, MRD_E_POLARITY, MRD_E_SAMPLE, MRD_E_SETTLE, MRD_E_TIMELINE,
-    MRD_E_WINDOW, MRD_GAIN_NORMALISED, MRD_LAW_RATE, MRD_OK, MRD_SETTLE_BY_GYRO,
+    MRD_E_BENCH,
+    MRD_E_CHOICE,
+    MRD_E_DIGEST,
+    MRD_E_ESTIMATE,
+    MRD_E_FILTER,
+    MRD_E_GAIN,
+    MRD_E_GYRO,
+    MRD_E_MAG,
+    MRD_E_NORM,
+    MRD_E_PERIOD,
+    MRD_E_POLARITY,
+    MRD_E_SAMPLE,
+    MRD_E_SETTLE,
+    MRD_E_TIMELINE,
+    MRD_E_WINDOW,
+    MRD_GAIN_NORMALISED,
+    MRD_LAW_RATE,
+    MRD_OK,
+    MRD_SETTLE_BY_GYRO,
 )
-from exact.samples import make_config
 
 
 def matrix(*entries):

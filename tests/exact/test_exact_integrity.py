@@ -1,15 +1,19 @@
 """Digests against published vectors and single flipped bits; what a failed digest leads to."""
 
 import pytest
+from exact.samples import fly, make_config, make_inputs, make_state, with_changes
 
 from pyharness.exact import FIELDS, config_digest, init, reset, state_digest, step
 from pyharness.exact.constants import (
-    MRD_E_DIGEST, MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF, MRD_MODE_SAFE, MRD_S_CONFIG_CORRUPT,
+    MRD_E_DIGEST,
+    MRD_MODE_DAMPING,
+    MRD_MODE_HOLD_OFF,
+    MRD_MODE_SAFE,
+    MRD_S_CONFIG_CORRUPT,
     MRD_S_STATE_RESTARTED,
 )
 from pyharness.exact.integrity import fnv1a
 from pyharness.exact.path import path_reset, zero_trace
-from exact.samples import fly, make_config, make_inputs, make_state, with_changes
 
 
 # Fowler, Noll and Vo, FNV-1a, 32 bits, test vectors of the authors' reference code (from memory). Fields of

@@ -4,6 +4,16 @@ import re
 from pathlib import Path
 
 import pytest
+from exact.samples import (
+    SENSOR,
+    SUPERVISOR,
+    make_config,
+    make_inputs,
+    make_state,
+    path_config,
+    path_inputs,
+    path_state,
+)
 
 from pyharness.exact import FIELDS, RANGES, RangeError, constants, path_drive, path_sense, step
 from pyharness.exact.derivative import factor_of
@@ -11,10 +21,6 @@ from pyharness.exact.estimate import rate_across_field
 from pyharness.exact.law import gain_used
 from pyharness.exact.path import path_reset, zero_trace
 from pyharness.exact.ranges import check, check3
-from exact.samples import path_state
-from exact.samples import (
-    SENSOR, SUPERVISOR, make_config, make_inputs, make_state, path_config, path_inputs,
-)
 
 HEADER = Path(__file__).parents[2] / "fsw_c" / "include" / "mrd.h"
 

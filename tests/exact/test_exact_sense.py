@@ -1,17 +1,26 @@
 """Stages 1 to 5 on numbers worked out by hand from the arithmetic document, on both sides of comparisons."""
 
 import pytest
+from exact.samples import FIELD, SENSOR, path_config, path_inputs, path_state
 
 from pyharness.exact import path_reset, path_sense
 from pyharness.exact.calibration import calibrate_sensor
 from pyharness.exact.constants import (
-    MRD_S_BLANKED, MRD_S_DERIVATIVE_CLAMPED, MRD_S_FIELD_IMPLAUSIBLE, MRD_S_GYRO_MISSING, MRD_S_GYRO_RANGE,
-    MRD_S_INTERVAL_LONG, MRD_S_INTERVAL_SHORT, MRD_S_MAG_RANGE, MRD_S_NO_PREVIOUS, MRD_S_SAMPLE_MISSING,
-    MRD_S_SAMPLE_OFF_TIME, MRD_S_SWITCH_OFF_UNSTAMPED,
+    MRD_S_BLANKED,
+    MRD_S_DERIVATIVE_CLAMPED,
+    MRD_S_FIELD_IMPLAUSIBLE,
+    MRD_S_GYRO_MISSING,
+    MRD_S_GYRO_RANGE,
+    MRD_S_INTERVAL_LONG,
+    MRD_S_INTERVAL_SHORT,
+    MRD_S_MAG_RANGE,
+    MRD_S_NO_PREVIOUS,
+    MRD_S_SAMPLE_MISSING,
+    MRD_S_SAMPLE_OFF_TIME,
+    MRD_S_SWITCH_OFF_UNSTAMPED,
 )
 from pyharness.exact.derivative import factor_of
 from pyharness.exact.low_pass import follow
-from exact.samples import FIELD, SENSOR, path_config, path_inputs, path_state
 
 
 def sense(state=None, config=None, inputs=None, waive_norm=0):

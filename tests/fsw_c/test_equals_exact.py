@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
 from fsw_c.runs import Bank
+from hypothesis import given, settings
 from strategies import Seeded, any_config, any_inputs, any_path_config, flights
 
 from pyharness import exact

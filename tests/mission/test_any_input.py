@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import copy
 import tomllib
-from datetime import date, datetime, time, timedelta, timezone
+from datetime import UTC, date, datetime, time, timedelta, timezone
 from pathlib import Path
 
 import pytest
@@ -42,7 +42,7 @@ ENDS = [
     for value in (*key.choices, *((key.limits.low, key.limits.high) if key.limits else ()))
 ]
 PATCHES = [b"[", b"=", b'"', b"\n", b"0", b"-", b"e9", b" = { }"]
-ZONES = st.sampled_from([timezone.utc, timezone(timedelta(hours=14)), timezone(timedelta(hours=-12)), None])
+ZONES = st.sampled_from([UTC, timezone(timedelta(hours=14)), timezone(timedelta(hours=-12)), None])
 SCALARS = st.one_of(
     st.sampled_from(ENDS),
     st.floats(),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from dataclasses import fields
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 from pathlib import Path
 
 import pytest
@@ -33,7 +33,7 @@ def test_a_mission_says_what_its_file_says():
         (0.0007, 0.0312, 0.0004),
         (-0.0005, 0.0004, 0.0330),
     )
-    assert mission.orbit.epoch_utc == datetime(2027, 3, 14, 9, 30, tzinfo=timezone.utc)
+    assert mission.orbit.epoch_utc == datetime(2027, 3, 14, 9, 30, tzinfo=UTC)
     assert mission.orbit.two_line_elements is None
     assert [coil.core for coil in mission.coil] == ["cored", "cored", "air"]
     assert [coil.polarity for coil in mission.coil] == [1, -1, 1]

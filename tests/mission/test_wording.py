@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 
 import pytest
 
@@ -21,7 +21,7 @@ from pyharness.mission.wording import dotted, joined, quantity, rounded, shown
         ("x" * 60, '"' + "x" * 60 + '"'),
         ("x" * 61, '"' + "x" * 60 + "…" + '"'),
         ("a\nb\u2028", '"a\\nb\\u2028"'),
-        (datetime(2027, 3, 14, 9, 30, tzinfo=timezone.utc), "2027-03-14T09:30:00Z"),
+        (datetime(2027, 3, 14, 9, 30, tzinfo=UTC), "2027-03-14T09:30:00Z"),
         ([1, 2], "a list of 2"),
         ({"a": 1}, "a table"),
     ],

@@ -1,7 +1,7 @@
 """Geomagnetic field against published models and points, and its path through axes and interpolation."""
 
 import math
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 from functools import partial
 
 import numpy as np
@@ -15,7 +15,7 @@ from pyharness.plant.field import FIELD, FLIGHT, GRADIENT, _hermite, _knots, geo
 from pyharness.plant.orbit import EARTH_MU, EARTH_RADIUS_M, Trajectory, orbital_period
 
 DATE = datetime(2027, 3, 14, 9, 30)
-EPOCH = DATE.replace(tzinfo=timezone.utc)
+EPOCH = DATE.replace(tzinfo=UTC)
 WGS84_FLATTENING = 1.0 / 298.257223563
 
 

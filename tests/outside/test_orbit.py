@@ -1,7 +1,7 @@
 """Orbit and time against published examples."""
 
 import math
-from datetime import datetime, timedelta, timezone
+from datetime import UTC, datetime, timedelta
 from importlib import resources
 
 import numpy as np
@@ -10,10 +10,14 @@ from sgp4.propagation import gstime
 
 from pyharness.mission.model import Orbit
 from pyharness.plant.orbit import (
-    Trajectory, circular_rate, inclination_rad, orbital_period, semi_major_axis_m,
+    Trajectory,
+    circular_rate,
+    inclination_rad,
+    orbital_period,
+    semi_major_axis_m,
 )
 
-EPOCH = datetime(2027, 3, 14, 9, 30, tzinfo=timezone.utc)
+EPOCH = datetime(2027, 3, 14, 9, 30, tzinfo=UTC)
 
 
 def circular(altitude_km=550.0, inclination_deg=97.6, node_deg=40.0, latitude_deg=0.0, epoch=EPOCH) -> Orbit:
@@ -74,7 +78,7 @@ def julian(*date) -> float:
     ],
 )
 def test_greenwich_sidereal_time(date, degrees, source):
-    orbit = circular(epoch=datetime(*date, tzinfo=timezone.utc))
+    orbit = circular(epoch=datetime(*date, tzinfo=UTC))
     # A Julian date in one double resolves 40 µs, 1.7e-7°.
     angle = Trajectory(orbit).sidereal_angle([0.0])[0]
     assert math.degrees(angle) == pytest.approx(degrees, abs=3e-7), source

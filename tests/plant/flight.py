@@ -5,8 +5,8 @@ import hashlib
 from dataclasses import replace
 
 import numpy as np
-
 from plant.tern_mission import IDEAL, MISSION
+
 from pyharness.plant import Plant
 
 

@@ -2,10 +2,18 @@
 
 import math
 from dataclasses import replace
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 
 from pyharness.mission.model import (
-    Body, Coil, Control, Cycle, Gyro, Magnetometer, Mission, Orbit, Supply,
+    Body,
+    Coil,
+    Control,
+    Cycle,
+    Gyro,
+    Magnetometer,
+    Mission,
+    Orbit,
+    Supply,
 )
 
 _CORED = Coil("cored", 0.24, None, False, 6.0, 0.004, 1, 60.0)
@@ -19,7 +27,7 @@ MISSION = Mission(
         drag_force_n=3.0e-6,
         pressure_centre_m=(0.012, 0.006, -0.004),
     ),
-    orbit=Orbit(datetime(2027, 3, 14, 9, 30, tzinfo=timezone.utc), 550.0, 97.6, 40.0, 0.0, None),
+    orbit=Orbit(datetime(2027, 3, 14, 9, 30, tzinfo=UTC), 550.0, 97.6, 40.0, 0.0, None),
     supply=Supply(6.6, 7.4, 8.4),
     coil=(_CORED, replace(_CORED, polarity=-1), Coil("air", 0.2, None, False, 0.9, 0.0, 1, 60.0)),
     magnetometer=Magnetometer(

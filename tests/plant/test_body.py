@@ -3,10 +3,10 @@ tests/outside/test_rigid_body.py."""
 
 import numpy as np
 import pytest
+from plant.tern_mission import MISSION
 from scipy.integrate._ivp import dop853_coefficients
 from scipy.spatial.transform import Rotation
 
-from plant.tern_mission import MISSION
 from pyharness.plant import body as body_module
 from pyharness.plant.body import RigidBody, inverse, rotation, to_body, to_inertial
 from pyharness.plant.dop853 import NODES, STAGES, WEIGHTS

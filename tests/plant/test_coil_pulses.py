@@ -5,8 +5,8 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from scipy.integrate import quad
 from plant.tern_mission import IDEAL, MISSION
+from scipy.integrate import quad
 
 from pyharness.mission.model import Cycle
 from pyharness.plant.coils import Coils
@@ -40,7 +40,7 @@ def test_the_cubic_has_the_moments_of_the_exact_pulse(ticks, power):
     for axis, coil in enumerate(IDEAL.coil):
         seconds = np.array((0.0, width, width + 40 * coil.time_constant_ms * 1e-3))
         exact = sum(
-            quad(lambda t: Coils([IDEAL]).waveform(column(ticks, -ticks, ticks), np.array([t]))[0, axis, 0]
+            quad(lambda t, axis=axis: Coils([IDEAL]).waveform(column(ticks, -ticks, ticks), np.array([t]))[0, axis, 0]
                  * ((t + delay) / period) ** power, *piece, epsabs=1e-13, epsrel=1e-11)[0]
             for piece in zip(seconds, seconds[1:])
         ) / period

@@ -9,11 +9,11 @@ from pathlib import Path
 import numpy as np
 import pytest
 from numpy._core._multiarray_umath import __cpu_dispatch__ as DISPATCHED
+from plant.flight import alone, batch, digest, fly
+from plant.tern_mission import FREE_BODY, IDEAL, MISSION, ideal_with
 from scipy.integrate import solve_ivp
 from scipy.spatial.transform import Rotation
 
-from plant.flight import alone, batch, digest, fly
-from plant.tern_mission import FREE_BODY, IDEAL, MISSION, ideal_with
 from pyharness.plant import ConstantField, Plant
 from pyharness.plant.plant import attitude_from_seed
 

@@ -5,8 +5,8 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from scipy.spatial.transform import Rotation
 from plant.tern_mission import IDEAL, MISSION, ideal_with, rad
+from scipy.spatial.transform import Rotation
 
 from pyharness.plant.noise import SIGMA
 from pyharness.plant.sensors import GyroModel, MagnetometerModel, rotation_matrix

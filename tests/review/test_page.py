@@ -161,7 +161,7 @@ def test_a_coil_that_needs_more_blanking_is_called_out(data, flights, one_figure
         record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)),
     )
     shown = rows(Reader(render(replace(data, flights=(flown,)))), "timeline")
-    assert "163.1 60.0 70.0 -103.1 NO" in shown  # 20 ms × ln(43.59 µT / 12.5 nT)
+    assert "141.8 60.0 70.0 -81.8 NO" in shown  # 20 ms × ln(14.98 µT / 12.5 nT)
 
 
 def test_mission_configuration_and_digests(data, reader):

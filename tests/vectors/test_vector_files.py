@@ -15,7 +15,15 @@ from hypothesis import strategies as st
 from pyharness.controllers import load_controller
 from pyharness.flight import Interface, find_sources
 from pyharness.flight.records import columns, to_columns
-from pyharness.vectors import NoVectors, VectorError, check_vector, find_vectors, read_vector, tell_folders_apart, to_text
+from pyharness.vectors import (
+    NoVectors,
+    VectorError,
+    check_vector,
+    find_vectors,
+    read_vector,
+    tell_folders_apart,
+    to_text,
+)
 from pyharness.vectors.files import HEADER_KEYS
 
 FOLDER = Path(__file__).parents[2] / "vectors"
