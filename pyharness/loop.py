@@ -14,7 +14,8 @@ import numpy as np
 from pyharness.controllers import Controller
 from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateSwitchOff, LowPower, jitter_us
 from pyharness.mission.model import Vector
-from pyharness.plant import Plant
+from pyharness.plant import Plant, Sample
+from pyharness.plant.field import Environment
 from pyharness.scaling import Scaling
 
 WRAP = 2**32
@@ -58,26 +59,34 @@ class Record:
         return (self.outputs["status"] >> np.uint32(number) & 1).astype(bool)
 
 
-def fly(flights: Sequence[Flight], controller: Controller, progress: Callable[[int], None] | None = None) -> list[Record]:
+def fly(
+    flights: Sequence[Flight],
+    controller: Controller,
+    progress: Callable[[int], None] | None = None,
+    environment: Environment | None = None,
+) -> list[Record]:
     """Fly all flights in one batch with one controller. `progress(n)` is told of n more cycles of the longest flight.
 
-    The result of a flight does not depend on the others. All missions must have the same period (ValueError).
+    `environment` takes the place of the orbits' (a `ConstantField`, say). The result of a flight does not depend on the
+    others. All missions must have the same period (ValueError).
     """
     # Longest first: the flights that are still on are always the first of the batch.
     order = sorted(range(len(flights)), key=lambda i: -flights[i].cycles)
     ordered = [flights[i] for i in order]
-    records = _fly_ordered(ordered, controller, progress or (lambda n: None))
+    records = _fly_ordered(ordered, controller, progress or (lambda n: None), environment)
     result: list[Record | None] = [None] * len(flights)
     for place, record in zip(order, records, strict=True):
         result[place] = record
     return result
 
 
-def _fly_ordered(flights: list[Flight], controller: Controller, progress: Callable[[int], None]) -> list[Record]:
+def _fly_ordered(
+    flights: list[Flight], controller: Controller, progress: Callable[[int], None], environment: Environment | None
+) -> list[Record]:
     scalings = [flight.scaling for flight in flights]
     controller.configure(scalings)
     n, longest = len(flights), flights[0].cycles
-    plant = _plant(flights, longest)
+    plant = _plant(flights, longest, environment)
     host = _Host(flights, controller)
     lengths = np.array([flight.cycles for flight in flights])
 
@@ -115,7 +124,7 @@ def _fly_ordered(flights: list[Flight], controller: Controller, progress: Callab
     ]  # fmt: skip
 
 
-def _plant(flights: list[Flight], cycles: int) -> Plant:
+def _plant(flights: list[Flight], cycles: int, environment: Environment | None) -> Plant:
     missions = [flight.scaling.mission for flight in flights]
     rates = [
         flight.scaling.mission.body.tip_off_deg_s if flight.rate_deg_s is None else flight.rate_deg_s for flight in flights
@@ -125,6 +134,7 @@ def _plant(flights: list[Flight], cycles: int) -> Plant:
         [flight.seed for flight in flights],
         rate_rad_s=np.radians(np.array(rates, dtype=float).T),
         start_s=np.array([flight.orbit_s for flight in flights]),
+        field=environment,
         duration_s=(cycles + 2) * missions[0].cycle.period_ms * 1e-3,
     )
     speed = np.sqrt(np.add.reduce(plant.rate * plant.rate, axis=0))
@@ -170,7 +180,7 @@ class _Host:
             offset[i] = jitter_us(event, cycle)
         return offset
 
-    def fill(self, inputs: np.ndarray, sample, offset_us: np.ndarray, cycle: int) -> None:
+    def fill(self, inputs: np.ndarray, sample: Sample, offset_us: np.ndarray, cycle: int) -> None:
         """Fill the inputs (N,) of one cycle."""
         start_us = self._start_us + cycle * self._period_us
         path = inputs["path"]

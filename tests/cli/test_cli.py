@@ -135,7 +135,7 @@ def test_no_vectors_is_a_failure(capsys, tmp_path):
         ("derivative.c", "change * (int32_t)factor, 14)", "change * (int32_t)factor, 13)", "derivative"),
         ("low_pass.c", "+ MRD_BIT(14)) >> 8", "+ MRD_BIT(13)) >> 8", "low-pass"),
         ("law.c", "-(int32_t)trace->low_pass", "(int32_t)trace->low_pass", "law"),
-        ("saturation.c", "+ 32768u) >> 16", "+ 32767u) >> 16", "saturation"),
+        ("saturation.c", "+ 32768u) >> 16", "+ 16384u) >> 16", "saturation"),
         ("pulses.c", "config->window_ticks), 15)", "config->window_ticks), 14)", "pulses"),
         ("gate.c", "age_us >= config->blanking_us[i]", "age_us > config->blanking_us[i]", "gate"),
         ("estimate.c", "(uint32_t)change << 15", "(uint32_t)change << 14", "estimate"),
