@@ -50,6 +50,10 @@ def flatten(config: dict, prefix: str = "") -> Iterator[tuple[str, tuple[int, ..
             yield f"{prefix}{key}", value if isinstance(value, tuple) else (value,)
 
 
+_CHOICES = {"law": "MRD_LAW_", "gain_scaling": "MRD_GAIN_", "saturation": "MRD_SATURATE_", "settle_by": "MRD_SETTLE_BY_"}
+"""Fields that hold a named constant, and how its name begins."""
+
+
 def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interface) -> str:
     leaf = name.rpartition(".")[2]
     number = integers[0]
@@ -57,9 +61,8 @@ def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interfac
         return _all(integers, 1e-3, "ms")
     if leaf.endswith("_ticks"):
         return _all(integers, s.timeline.tick_us * 1e-3, "ms")
-    if leaf in ("law", "gain_scaling", "saturation", "settle_by"):
-        prefix = {"law": "MRD_LAW_", "gain_scaling": "MRD_GAIN_", "saturation": "MRD_SATURATE_", "settle_by": "MRD_SETTLE_BY_"}[leaf]
-        return interface.header.named(prefix)[number].lower().replace("_", " ")
+    if leaf in _CHOICES:
+        return interface.header.named(_CHOICES[leaf])[number].lower().replace("_", " ")
     if leaf in ("settled_rate", "wake_rate"):
         return _all(integers, math.degrees(s.rate_rad_s), "°/s")
     if leaf in ("settle_dwell", "wake_dwell"):
@@ -75,6 +78,8 @@ def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interfac
     if name.startswith("path.gyro.") and s.raw_rate_rad_s is not None:
         raw, count = math.degrees(s.raw_rate_rad_s), math.degrees(s.rate_rad_s)
         return _sensor(leaf, integers, s.config["path"]["gyro"]["shift"], raw, count, "°/s")
+    if name.startswith("path.rate_gain.") and s.mission.control.law != "rate":
+        return "not used by this law"
     if leaf == "mantissa" and "_gain." in name:
         shifts = s.config["path"][name.split(".")[1]]["shift"]
         return "  ".join(f"{m / 2.0**h:.5g}" for m, h in zip(integers, shifts, strict=True)) + " in counts"
@@ -109,10 +114,10 @@ def c_header(scaling: Scaling, interface: Interface) -> str:
         "",
         '#include "mrd.h"',
         "",
-        *(f"/* {what}: {text} */" for what, text in describe_resolution(scaling)),
+        *(f"/* {what}: {_comment(text)} */" for what, text in describe_resolution(scaling)),
         "",
         "static const mrd_config mission_config = {",
-        *_initialiser(scaling.config, rows, ""),
+        *_initialiser(scaling.config, rows, interface),
         "};",
         "",
         "#endif",
@@ -121,14 +126,16 @@ def c_header(scaling: Scaling, interface: Interface) -> str:
     return "\n".join(lines)
 
 
-def _initialiser(config: dict, rows: dict[str, Row], prefix: str) -> Iterator[str]:
+def _initialiser(config: dict, rows: dict[str, Row], interface: Interface, prefix: str = "") -> Iterator[str]:
     indent = "    " * (prefix.count(".") + 1)
     for key, value in config.items():
         name = f"{prefix}{key}"
         if isinstance(value, dict):
             yield f"{indent}.{key} = {{"
-            yield from _initialiser(value, rows, f"{name}.")
+            yield from _initialiser(value, rows, interface, f"{name}.")
             yield f"{indent}}},"
+        elif key in _CHOICES:
+            yield f"{indent}.{key} = {_CHOICES[key]}{interface.header.named(_CHOICES[key])[value]},"
         else:
             integers = [_literal(i) for i in (value if isinstance(value, tuple) else (value,))]
             body = f"{{{', '.join(integers)}}}" if isinstance(value, tuple) else integers[0]
@@ -140,5 +147,9 @@ def _literal(value: int) -> str:
     return f"{value}u" if value > 32767 else str(value)  # only unsigned fields hold more
 
 
+_ASCII = str.maketrans({"µ": "u", "°": "deg", "²": "^2", "·": "*", "–": "-", "−": "-"})
+
+
 def _comment(text: str) -> str:
-    return text.replace("*/", "* /").replace("\n", " ")
+    """Text that may stand in a C comment: ASCII, on one line, without an end of comment."""
+    return text.translate(_ASCII).encode("ascii", "replace").decode().replace("*/", "* /").replace("\n", " ")

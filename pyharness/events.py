@@ -41,6 +41,16 @@ class LateSwitchOff(Span):
 
 
 @dataclass(frozen=True)
+class LoseStamps(Span):
+    """The host does not stamp what is switched off; afterwards it stamps every coil, which is off, at the start of the cycle."""
+
+
+@dataclass(frozen=True)
+class LateStamps(Span):
+    """The host hands the stamps of a cycle in one cycle late."""
+
+
+@dataclass(frozen=True)
 class Jitter(Span):
     """The sample is taken, and stamped, off its nominal time by up to ±`us`, drawn anew each cycle."""
 
@@ -71,7 +81,7 @@ class Kick:
     rate_deg_s: Vector
 
 
-Event = DropSample | DropGyro | LateSwitchOff | Jitter | LowPower | Command | Kick
+Event = DropSample | DropGyro | LateSwitchOff | LoseStamps | LateStamps | Jitter | LowPower | Command | Kick
 
 
 def jitter_us(event: Jitter, cycle: int) -> int:

@@ -12,7 +12,19 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from pyharness.controllers import Controller
-from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateSwitchOff, LowPower, jitter_us
+from pyharness.events import (
+    Command,
+    DropGyro,
+    DropSample,
+    Event,
+    Jitter,
+    Kick,
+    LateStamps,
+    LateSwitchOff,
+    LoseStamps,
+    LowPower,
+    jitter_us,
+)
 from pyharness.mission.model import Vector
 from pyharness.plant import Plant, Sample
 from pyharness.plant.field import Environment
@@ -157,6 +169,7 @@ class _Host:
         self._gyro = np.array([c["gyro_fitted"] for c in config])
         # Until the first pulse, the stamps say that the coils went off a cycle ago.
         self._switch_off_us = np.repeat(self._start_us[:, None] - self._period_us, 3, axis=1)
+        self._before_us = self._switch_off_us
         self._events = [(i, event) for i, flight in enumerate(flights) for event in flight.events]
 
     def _of(self, kind: type, cycle: int) -> list[tuple[int, Event]]:
@@ -186,7 +199,7 @@ class _Host:
         path = inputs["path"]
         path["cycle_start_us"] = start_us % WRAP
         path["sample_us"] = (start_us + self._phase_us + offset_us) % WRAP
-        path["switch_off_us"] = self._switch_off_us % WRAP
+        path["switch_off_us"] = self._stamps(cycle, start_us) % WRAP
         path["mag_raw"] = sample.mag_counts.T
         path["gyro_raw"] = sample.gyro_counts.T
         path["mag_valid"] = 1
@@ -204,6 +217,16 @@ class _Host:
             inputs["command"][i], inputs["command_key"][i] = event.code, event.key
             inputs["command_coil"][i], inputs["command_ticks"][i] = event.coil, event.ticks
 
+    def _stamps(self, cycle: int, start_us: np.ndarray) -> np.ndarray:
+        """The stamps that the host hands in, (N, 3)."""
+        for i, event in self._events:
+            if isinstance(event, LoseStamps) and cycle == event.end:
+                self._switch_off_us[i] = start_us[i]
+        stamps = self._switch_off_us.copy()
+        for i, _ in self._of(LateStamps, cycle):
+            stamps[i] = self._before_us[i]
+        return stamps
+
     def late_ticks(self, late: np.ndarray, ticks: np.ndarray, cycle: int) -> None:
         """Fill how late each coil (3, N) is switched off."""
         late[...] = 0
@@ -213,5 +236,9 @@ class _Host:
 
     def stamp(self, switch_off_us: np.ndarray, ticks: np.ndarray, cycle: int) -> None:
         """Take the actual switch-offs, µs after the start of the drive window, (3, N)."""
+        self._before_us = self._switch_off_us
         actual = (self._start_us + cycle * self._period_us + self._window_us)[:, None] + switch_off_us.T
-        self._switch_off_us = np.where(ticks.T != 0, actual, self._switch_off_us)
+        stamped = ticks.T != 0
+        for i, _ in self._of(LoseStamps, cycle):
+            stamped[i] = False
+        self._switch_off_us = np.where(stamped, actual, self._switch_off_us)

@@ -189,10 +189,10 @@ def _supervisor(s: Scaling, problems: list[str]) -> Config:
 
 def _rate_count(s: Scaling, key: str, deg_s: float, problems: list[str]) -> int:
     count = round(math.radians(deg_s) / s.rate_rad_s)
-    if not 1 <= count <= 65535:
+    if not 1 <= count <= 65534:
         problems.append(
             f"control.{key}: {deg_s:g} °/s, must be in [{math.degrees(s.rate_rad_s):.2g}, "
-            f"{math.degrees(s.rate_rad_s) * 65535:.4g}] °/s, the range of the rate at this tip-off rate"
+            f"{math.degrees(s.rate_rad_s) * 65534:.4g}] °/s, the range of the rate at this tip-off rate"
         )
     return count
 
@@ -234,7 +234,7 @@ def _fits(rotation: Matrix, factor: float) -> bool:
 
 def _filter_gain(time_constant_s: float, period_s: float) -> int:
     """1 − pole of the sampled first-order low-pass, pole = exp(−T/τ), in Q15."""
-    return Q15 if time_constant_s == 0 else max(1, round(Q15 * -math.expm1(-period_s / time_constant_s)))
+    return Q15 if time_constant_s == 0 else max(128, round(Q15 * -math.expm1(-period_s / time_constant_s)))
 
 
 def _mantissa(value: float) -> tuple[int, int]:

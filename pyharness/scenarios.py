@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass, field
 from typing import Any
 
-from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateSwitchOff, LowPower
+from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateStamps, LateSwitchOff, LoseStamps, LowPower
 from pyharness.exact import constants as mrd
 from pyharness.loop import Flight
 from pyharness.mission import Mission, load_mission
@@ -74,6 +74,8 @@ LOOP = (
     Scenario("blanked", "coils that switch off late: samples inside the blanking time are rejected, then trusted again", 400, 6,
              events=(LateSwitchOff(40, 120, coil=0, ticks=500), LateSwitchOff(100, 200, every=5, coil=1, ticks=300),
                      LateSwitchOff(220, 300, every=3, coil=2, ticks=101), LateSwitchOff(300, 340, coil=2, ticks=100))),
+    Scenario("stamps", "switch-offs that are stamped late, or not at all until the host knows the coils to be off", 300, 20, _RATE_LAW,
+             events=(LateStamps(60, 70), LoseStamps(120, 150), LateStamps(200, 201), LoseStamps(240, 241))),
     Scenario("dropped-samples", "field samples missing, singly and in runs: no derivative across a gap, no pulse", 400, 7,
              events=(DropSample(50, 51), DropSample(80, 120, every=2), DropSample(150, 180))),
     Scenario("stamp-wrap", "the host's clock wraps through 2^32 µs during the flight", 300, 8, start_us=2**32 - 70_000_000),

@@ -74,6 +74,7 @@ class Truth:
         self._window = last(c["window_ticks"] for c in config)
         self._polarity = last(c["polarity"] for c in config)
         self._normalised = np.array([c["gain_scaling"] == mrd.MRD_GAIN_NORMALISED for c in config])
+        self._norm_range = tuple(last(c[key] for c in config) for key in ("norm_min_sq", "norm_max_sq"))
         self._keep = np.array([c["saturation"] == mrd.MRD_SATURATE_KEEP_DIRECTION for c in config])
         self._gain = {
             law: last([m / 2.0**h for m, h in zip(c[key]["mantissa"], c[key]["shift"], strict=True)] for c in config)
@@ -168,7 +169,7 @@ class Truth:
 
     def _normalise(self, gain: np.ndarray, field: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """The gain over ‖B‖² where it is normalised, and its largest relative error."""
-        norm_sq = np.maximum(np.add.reduce(field * field, axis=0), 1.0)
+        norm_sq = np.clip(np.add.reduce(field * field, axis=0), *self._norm_range)
         slack = np.add.reduce(2 * np.abs(field) * error + error * error, axis=0) / norm_sq
         relative = 2.0**-14 + slack / np.maximum(1 - slack, 0.5) * (1 + 2.0**-14)
         return np.where(self._normalised, gain / norm_sq, gain), np.where(self._normalised, relative, 0.0)
@@ -176,12 +177,13 @@ class Truth:
     def _saturate(self, demand: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         share = demand / Q15
         command = np.where(self._keep, saturate_keep_direction(share), saturate_per_axis(share)) * Q15
-        # Scaling to the limit: its own error, that of the largest axis in proportion, and two counts of rounding.
-        largest = np.abs(demand).max(axis=0)
-        scaled = self._keep & (largest + error.max(axis=0) > FULL_SCALE)
-        shrink = FULL_SCALE / np.maximum(largest, FULL_SCALE)
-        part = np.abs(demand) / np.maximum(largest, 1.0)
-        bound = np.where(scaled, shrink * (error + part * error.max(axis=0)) + 2.0, error)
+        # Scaling to the limit: its own error, that of the largest axis in proportion, and two counts of rounding. The
+        # integers divide by their own largest axis, which may be smaller than the truth's by the worst error.
+        largest, worst = np.abs(demand).max(axis=0), error.max(axis=0)
+        scaled = self._keep & (largest + worst > FULL_SCALE)
+        shrink = FULL_SCALE / np.maximum(largest - worst, FULL_SCALE)
+        part = np.abs(demand) / np.maximum(largest, FULL_SCALE)
+        bound = np.where(scaled, shrink * (error + part * worst) + 2.0, error)
         return command, np.minimum(bound, 2.0 * FULL_SCALE)
 
 

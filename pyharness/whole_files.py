@@ -12,7 +12,6 @@ from pathlib import Path
 @contextmanager
 def replacing(path: Path) -> Iterator[Path]:
     """A temporary path to write to, which takes the place of `path` at the end; after an error the old file stays."""
-    path.parent.mkdir(parents=True, exist_ok=True)
     handle, name = tempfile.mkstemp(dir=path.parent, prefix=".", suffix=f".{path.name}")
     os.close(handle)
     try:

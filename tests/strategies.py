@@ -30,6 +30,7 @@ Record = dict[str, Any]
 Item = TypeVar("Item")
 
 WRAP = 2**32
+HALF = 2**31  # of the wrap: a difference from here on lies in the future
 NORM_MAX = 3 * 32767**2
 ROW_SUM_MAX = 65535
 
@@ -188,7 +189,7 @@ def any_path_config(source: Source) -> Record:
         "norm_max_sq": norm_max_sq,
         **_timeline(source),
         "polarity": tuple(pick(source, (1, -1)) for _ in range(3)),
-        "filter_gain": pick(source, (2**15, span(source, 1, 2**15))),
+        "filter_gain": pick(source, (2**15, span(source, 128, 2**15))),
         "derivative_gain": _gain(source, *shifts),
         "rate_gain": _gain(source, *shifts),
     }
@@ -197,7 +198,7 @@ def any_path_config(source: Source) -> Record:
 def any_config(source: Source) -> Record:
     """Any legal configuration, its digest filled."""
     path = any_path_config(source)
-    settled_rate = spread(source, 0, 65535)
+    settled_rate = spread(source, 0, 65534)
     config = {
         "path": path,
         "supervisor": {
@@ -206,7 +207,7 @@ def any_config(source: Source) -> Record:
             "hold_off_s": spread(source, 0, WRAP - 1),
             "settle_by": source.integer(1, 1 + path["gyro_fitted"]),
             "settled_rate": settled_rate,
-            "wake_rate": span(source, settled_rate, 65535),
+            "wake_rate": span(source, settled_rate, 65534),
             "estimate_mantissa": span(source, 32768, 65535),
             "estimate_shift": span(source, 1, 31),
             "bench_key": span(source, 1, 65535),
@@ -252,16 +253,60 @@ def _near(source: Source, raw: tuple[int, ...], most: int) -> tuple[int, ...]:
     return tuple(max(-32768, min(32767, r + source.integer(-most, most))) for r in raw)
 
 
-def _switch_off(source: Source, before: int, start: int, blanking_us: int) -> int:
-    """A coil's stamp: mostly new and old enough, now and then as before, too young, or anything."""
-    kind = source.integer(0, 31)
-    if kind < 27:
-        return (start - blanking_us - spread(source, 0, 2**20)) % WRAP
-    if kind < 30:
-        return before
-    if kind == 30:
+def _good_stamp(source: Source, drive: int, start: int, blanking_us: int) -> int:
+    """A switch-off after the last drive window opened that is old enough for the sample, if there is one."""
+    latest = (start - blanking_us) % WRAP
+    since_drive = (latest - drive) % WRAP
+    return (latest - source.integer(0, since_drive if since_drive < HALF else 0)) % WRAP
+
+
+def _disturbed_stamp(source: Source, drive: int, period: int, start: int, blanking_us: int) -> int:
+    """A new stamp that is good, stale, too young, on an edge, or anything."""
+    kind = source.integer(0, 15)
+    if kind < 6:
+        return _good_stamp(source, drive, start, blanking_us)
+    if kind < 11:  # of an earlier pulse
+        return (drive - span(source, 1, 3 * period)) % WRAP
+    if kind < 13:
         return (start - spread(source, 0, blanking_us) + 1) % WRAP
+    if kind == 13:
+        return (drive + pick(source, (0, -1, HALF - 1, HALF))) % WRAP
+    if kind == 14:
+        return (start - pick(source, (HALF, HALF - 1))) % WRAP
     return span(source, 0, WRAP - 1)
+
+
+class _Stamps:
+    """A host's stamps in a row of cycles: refreshed in each, unless a coil's stay frozen for a while.
+
+    Half of the frozen ones end late: with the stamp that was due when they froze.
+    """
+
+    def __init__(self, source: Source, path: Record, calm: int) -> None:
+        self._source, self._path, self._calm = source, path, calm
+        self._stamps = [source.integer(0, WRAP - 1) if once_in(source, calm) else 0 for _ in range(3)]
+        self._frozen = [0, 0, 0]  # cycles left
+        self._due = [0, 0, 0]
+
+    def next(self, drive: int, start: int) -> tuple[int, int, int]:
+        """The stamps of a cycle: last drive window opened at `drive`, the sample begins at `start`."""
+        for i, blanking_us in enumerate(self._path["blanking_us"]):
+            self._stamps[i] = self._coil(i, drive, start, blanking_us)
+        return tuple(self._stamps)
+
+    def _coil(self, i: int, drive: int, start: int, blanking_us: int) -> int:
+        source = self._source
+        if self._frozen[i]:
+            self._frozen[i] -= 1
+            late = not self._frozen[i] and source.integer(0, 1)
+            return self._due[i] if late else self._stamps[i]
+        good = _good_stamp(source, drive, start, blanking_us)
+        if not once_in(source, self._calm):
+            return good
+        if once_in(source, 3):
+            self._frozen[i], self._due[i] = pick(source, (1, 2, 3, 20)), good
+            return self._stamps[i]
+        return _disturbed_stamp(source, drive, self._path["period_us"], start, blanking_us)
 
 
 def _command(source: Source, config: Record) -> Record:
@@ -279,9 +324,12 @@ def _command(source: Source, config: Record) -> Record:
 
 
 def _path_inputs(
-    source: Source, path: Record, cycle_start: int, before: Record | None, pool: list, calm: int,
+    source: Source, path: Record, cycle_start: int, drive: int, stamps: _Stamps, pool: list, calm: int,
 ) -> Record:
-    """One cycle's inputs of a path; `calm` is how rarely something is disturbed."""
+    """One cycle's inputs of a path; `calm` is how rarely something is disturbed.
+
+    `drive` is when the drive window of the cycle before opened.
+    """
     tolerance = path["tolerance_us"]
     sample = (cycle_start + path["phase_us"] + span(source, -min(tolerance, 50), min(tolerance, 50))) % WRAP
     if once_in(source, 4 * calm):
@@ -290,14 +338,7 @@ def _path_inputs(
     if once_in(source, 8 * calm):
         sample = span(source, 0, WRAP - 1)
     start = (sample - path["half_sample_us"]) % WRAP
-    if once_in(source, calm):
-        switch_off = tuple(
-            _switch_off(source, before["switch_off_us"][i] if before else 0, start, path["blanking_us"][i])
-            for i in range(3)
-        )
-    else:
-        switch_off = tuple(
-            (start - blanking_us - source.integer(0, 9999)) % WRAP for blanking_us in path["blanking_us"])
+    switch_off = stamps.next(drive, start)
     mag_raw = _near(source, pick(source, pool), pick(source, (0, 3, 30)))
     gyro_raw = _gyro_raw(source, path)
     if once_in(source, 4 * calm):
@@ -316,27 +357,35 @@ def _path_inputs(
 
 
 def any_inputs(source: Source, config: Record, n: int) -> list[Record]:
-    """The inputs of n cycles in a row."""
+    """The inputs of n cycles in a row.
+
+    Nobody knows here which coils are driven: the stamps are those of a host that refreshes all in each cycle.
+    """
     path, supervisor = config["path"], config["supervisor"]
     calm = pick(source, (1000, 16, 4))
     pool = [_plausible_raw(source, path) for _ in range(3)]
     period, hold_off_s = path["period_us"], supervisor["hold_off_s"]
     before_wrap = WRAP - period * source.integer(1, max(1, n))
     cycle_start = pick(source, (0, before_wrap, span(source, 0, WRAP - 1)))
+    held = once_in(source, 8)  # in hold-off throughout: no pulse, hence stamps that may grow old
+    opens = path["phase_us"] + path["delay_us"]
+    drive = (cycle_start - period + opens) % WRAP
+    stamps = _Stamps(source, path, calm)
     sequence: list[Record] = []
     for _ in range(n):
         cycle_start %= WRAP
-        before = sequence[-1]["path"] if sequence else None
-        commanded, early = once_in(source, calm), once_in(source, calm)
+        commanded, early = once_in(source, calm), held or once_in(source, calm)
         sequence.append({
-            "path": _path_inputs(source, path, cycle_start, before, pool, calm),
+            "path": _path_inputs(source, path, cycle_start, drive, stamps, pool, calm),
             "separation_s": max(0, hold_off_s - 1) if early else span(source, hold_off_s, WRAP - 1),
             "low_power": pick(source, (1, 65535)) if once_in(source, calm) else 0,
             **(_command(source, config) if commanded else {
                 "command": MRD_COMMAND_NONE, "command_key": 0, "command_coil": 0, "command_ticks": 0}),
         })
+        drive = (cycle_start + opens) % WRAP
         late = once_in(source, calm)
-        cycle_start += pick(source, (period // 2, period + period // 2, 2 * period)) if late else period
+        lapse = pick(source, (period // 2, period + period // 2, 2 * period, HALF)) if late else period
+        cycle_start += lapse
     return sequence
 
 

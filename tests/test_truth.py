@@ -29,7 +29,7 @@ VARIANTS = {
 
 
 def test_signs_of_the_laws():
-    """checks.md section 4, first row (closed form): ω, B, k → m, torque, power."""
+    """ω, B, k → m, torque, power, worked out in closed form."""
     rate, field, k = np.array([[0.1], [-0.2], [0.3]]), np.array([[20e-6], [-30e-6], [10e-6]]), 1e4
     dipole = rate_law(k, rate, field)
     np.testing.assert_allclose(dipole[:, 0], (0.07, 0.05, 0.01), rtol=1e-12)

@@ -56,11 +56,15 @@ enum {
  *   settled     | safe > SAFE, inhibit > INHIBIT                   | low power > INHIBIT, fast for the wake dwell > DAMPING
  *   safe        | safe, resume > HOLD_OFF, arm with the key > BENCH | -
  *   inhibit     | safe > SAFE, inhibit, resume > HOLD_OFF          | neither low power nor commanded > HOLD_OFF
- *   bench       | safe > SAFE, resume > HOLD_OFF, bench (one pulse)  | -
+ *   bench       | safe > SAFE, resume > HOLD_OFF, bench (one pulse,  | -
+ *               | not with low power)                             |
  *
  * The command comes first, then the row of the mode it leads to, once, in the same step; HOLD_OFF passes straight
  * on to DAMPING where the separation time has been reached. Pulses of the law leave in DAMPING only, pulses of a
  * bench command in BENCH only; in all other modes every coil is off. Any other mode value leads to SAFE.
+ *
+ * A state that fails its digest is restarted: SAFE, BENCH and values that are no mode become SAFE, a commanded INHIBIT
+ * stays, the others go through HOLD_OFF.
  */
 enum {
     MRD_MODE_HOLD_OFF = 3,
@@ -76,7 +80,7 @@ enum {
     MRD_COMMAND_NONE = 0,
     MRD_COMMAND_ARM = 1,     /* SAFE > BENCH, with command_key */
     MRD_COMMAND_INHIBIT = 2, /* coils off until resume */
-    MRD_COMMAND_SAFE = 3,    /* coils off until resume, or bench */
+    MRD_COMMAND_SAFE = 3,    /* coils off until resume, or arm */
     MRD_COMMAND_RESUME = 4,
     MRD_COMMAND_BENCH = 5    /* one pulse of command_ticks on command_coil, in this cycle */
 };
@@ -87,7 +91,7 @@ enum {
     MRD_S_MAG_RANGE = 1,             /* a magnetometer count at its limit, or the field beyond 32767 counts */
     MRD_S_FIELD_IMPLAUSIBLE = 2,     /* norm of the field outside its plausible range */
     MRD_S_SAMPLE_OFF_TIME = 3,       /* sample not at its place in the cycle */
-    MRD_S_SWITCH_OFF_UNSTAMPED = 4,  /* a coil was commanded and its switch-off never stamped */
+    MRD_S_SWITCH_OFF_UNSTAMPED = 4,  /* a coil was commanded and its switch-off not stamped since */
     MRD_S_BLANKED = 5,               /* sample inside the blanking time of a coil, or nothing known of the coils yet */
     MRD_S_NO_PREVIOUS = 6,           /* trusted sample without a trusted one before it */
     MRD_S_INTERVAL_SHORT = 7,        /* samples less than half a period apart */
@@ -95,7 +99,7 @@ enum {
     MRD_S_DERIVATIVE_CLAMPED = 9,    /* derivative of the field beyond its range, clamped */
     MRD_S_GYRO_MISSING = 10,         /* no gyro sample from the host */
     MRD_S_GYRO_RANGE = 11,           /* a gyro count at its limit, or the rate beyond 32767 counts */
-    MRD_S_FELL_BACK = 12,            /* rate-damping law without a gyro: the derivative law takes its place */
+    MRD_S_FELL_BACK = 12,            /* rate-damping law without a gyro: the derivative law takes its place, if there is a derivative */
     MRD_S_SATURATED_X = 13,          /* demand on x beyond its limit */
     MRD_S_SATURATED_Y = 14,          /* demand on y beyond its limit */
     MRD_S_SATURATED_Z = 15,          /* demand on z beyond its limit */
@@ -119,11 +123,11 @@ enum {
     MRD_E_SAMPLE = 5,       /* half_sample_us up to phase_us, phase_us below period_us, tolerance_us below a quarter of period_us, rounded down */
     MRD_E_WINDOW = 6,       /* tick_us at least 1, window_ticks in [1, 16384], shortest_ticks in [1, window_ticks] */
     MRD_E_TIMELINE = 7,     /* delay_us at least half_sample_us, the drive window ends within the period and leaves every coil its blanking_us before the next sample */
-    MRD_E_FILTER = 8,       /* filter_gain: in [1, 32768] */
+    MRD_E_FILTER = 8,       /* filter_gain: in [128, 32768] */
     MRD_E_CHOICE = 9,       /* law, gain_scaling and saturation: one of the named values; the rate law needs gyro_fitted */
     MRD_E_POLARITY = 10,    /* polarity: 1 or -1 */
     MRD_E_GAIN = 11,        /* gains: mantissa in [32768, 65535]; shift in [1, 31], or normalised by the field: within it for every plausible norm */
-    MRD_E_SETTLE = 12,      /* settle_by one of the named values (gyro: needs gyro_fitted), settled_rate <= wake_rate, dwells at least 1 */
+    MRD_E_SETTLE = 12,      /* settle_by one of the named values (gyro: needs gyro_fitted), settled_rate <= wake_rate <= 65534, dwells at least 1 */
     MRD_E_ESTIMATE = 13,    /* estimate_mantissa in [32768, 65535], estimate_shift in [1, 31] */
     MRD_E_BENCH = 14,       /* bench_limit_ticks in [1, window_ticks], bench_key not 0 */
     MRD_E_DIGEST = 15       /* digest is not that of the fields */
@@ -164,7 +168,7 @@ typedef struct {
     int16_t window_ticks;            /* ticks in the drive window: 1..16384 */
     int16_t shortest_ticks;          /* ticks: shorter pulses are dropped; 1 drops none */
     int16_t polarity[3];             /* 1, or -1 where positive current makes a negative dipole */
-    uint16_t filter_gain;            /* Q15, 1..32768: 1 - pole of the low-pass; 32768: no low-pass */
+    uint16_t filter_gain;            /* Q15, 128..32768: 1 - pole of the low-pass; 32768: no low-pass */
     mrd_gain_config derivative_gain; /* command per field count per period */
     mrd_gain_config rate_gain;       /* command per 2^16 field count x rate count; checked also where not used */
 } mrd_path_config;
@@ -172,10 +176,10 @@ typedef struct {
 typedef struct {
     uint32_t settle_dwell;      /* cycles at or below settled_rate until SETTLED: about a quarter orbit */
     uint32_t wake_dwell;        /* cycles above wake_rate until DAMPING again */
-    uint32_t hold_off_s;        /* s after separation until the first pulse */
+    uint32_t hold_off_s;        /* s after separation until the first pulse of the law */
     uint16_t settle_by;         /* MRD_SETTLE_BY_* */
     uint16_t settled_rate;      /* rate count */
-    uint16_t wake_rate;         /* rate count; at least settled_rate */
+    uint16_t wake_rate;         /* rate count; settled_rate..65534 */
     uint16_t estimate_mantissa; /* 32768..65535: rate count per 2^-15 rad a period = mantissa / 2^shift */
     uint16_t estimate_shift;    /* 1..31 */
     uint16_t bench_key;         /* what the arm command must carry; not 0 */
@@ -193,7 +197,8 @@ typedef struct {
 typedef struct {
     uint32_t cycle_start_us;   /* us, wraps */
     uint32_t sample_us;        /* us, wraps: mid-sample; ignored where mag_valid is 0 */
-    uint32_t switch_off_us[3]; /* us, wraps: last actual switch-off of each coil; may be set anew while it is off */
+    uint32_t switch_off_us[3]; /* us, wraps: last actual switch-off of each coil. May be set anew while the coil is off, and must be
+                                  at the host's start, after MRD_S_STATE_RESTARTED, and in place of a pulse that was left out */
     int16_t mag_raw[3];        /* raw counts */
     int16_t gyro_raw[3];       /* raw counts */
     uint16_t mag_valid;        /* 0: no sample */
@@ -216,12 +221,13 @@ typedef struct {
     int32_t filter[3];         /* Q8 field count per period */
     uint32_t sample_us;        /* us: of field */
     uint32_t switch_off_us[3]; /* us: as of the last step */
+    uint32_t drive_us[3];      /* us: while pending, earliest time at which a stamp is one of that pulse */
     int16_t field[3];          /* field counts: last trusted sample */
-    int16_t ticks[3];          /* pulses commanded in the last step */
     uint16_t field_valid;      /* 0 or 1 */
     uint16_t filter_valid;     /* 0 or 1 */
     uint16_t off_known;        /* 0 or 1: switch_off_us holds stamps */
     uint16_t off_clear[3];     /* 0 or 1: this switch-off was once old enough */
+    uint16_t pending[3];       /* 0 or 1: a pulse was commanded and its switch-off is not stamped yet */
 } mrd_path_state;
 
 typedef struct {
@@ -237,7 +243,7 @@ typedef struct {
     mrd_path_state path;
     uint32_t dwell;             /* cycles: towards settled, or towards waking */
     uint16_t mode;              /* MRD_MODE_* */
-    uint16_t inhibit_commanded; /* 0 or 1 */
+    uint16_t inhibit_commanded; /* 0, or 65535: no flipped bit takes it back */
     mrd_counters counters;
     uint32_t digest;            /* of all fields above, as mrd_state_digest has it */
 } mrd_state;
@@ -304,9 +310,9 @@ typedef struct {
     int16_t ticks[3];      /* signed ticks of coil current, to be started together at the start of the drive window */
     uint16_t mode;         /* MRD_MODE_* */
     uint32_t status;       /* bits MRD_S_* */
-    uint16_t rate;         /* rate counts: the estimate; 65535: that or more; 0 where not valid */
+    uint16_t rate;         /* rate counts: the estimate, no more than 65535; from the field also no more than 2 rad a period; 0 where not valid */
     uint16_t rate_valid;   /* 0 or 1 */
-    uint16_t handover;     /* 1 in SETTLED: the attitude control may take over */
+    uint16_t handover;     /* 1 in SETTLED: the attitude control may take over; rate_valid says whether the rate is known now */
     uint32_t digest;       /* of the configuration in use */
     mrd_counters counters;
     mrd_trace trace;
@@ -322,11 +328,12 @@ void mrd_reset(mrd_state *state);
 
 /*
  * One cycle. config must have passed mrd_init; a config that changed since leads to SAFE. Any inputs are legal. state is
- * what mrd_reset or the last mrd_step left; anything else fails its digest and is restarted.
+ * what mrd_reset or the last mrd_step left; one flipped bit always fails its digest, and it is restarted. After mrd_reset the
+ * host must set switch_off_us to a time at which it knows the coils to be off.
  */
 void mrd_step(mrd_state *state, const mrd_config *config, const mrd_inputs *inputs, mrd_outputs *outputs);
 
-/* FNV-1a over the fields in declared order, digest itself left out. Wraps by definition (mod 2^32). */
+/* Fold of the fields in declared order, digest itself left out. Wraps by definition (mod 2^32). */
 uint32_t mrd_config_digest(const mrd_config *config);
 uint32_t mrd_state_digest(const mrd_state *state);
 
@@ -345,8 +352,9 @@ uint32_t mrd_path_sense(mrd_path_state *state, const mrd_path_config *config, co
 /* Law to pulses. Reads the first five parts of trace, fills the rest and returns status bits. */
 uint32_t mrd_path_drive(const mrd_path_config *config, mrd_trace *trace);
 
-/* Tells the path which pulses are really to be made in this cycle. */
-void mrd_path_commit(mrd_path_state *state, const int16_t ticks[3]);
+/* Tells the path which pulses are really to be made in this cycle: each must be stamped before a sample is trusted again. */
+void mrd_path_commit(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
+                     const int16_t ticks[3]);
 
 /*
  * Layout, for whoever loads a build: MRD_VERSION, then for each structure its size and the offset of each field as this

@@ -7,7 +7,7 @@ static uint16_t period_over_interval(uint32_t period_us, uint32_t interval_us)
 {
     uint16_t down = (uint16_t)(mrd_bits_u32(period_us) - 15u);
     uint32_t period = period_us >> down;                    /* 16384..32767 */
-    uint16_t interval = (uint16_t)(interval_us >> down);    /* 8192..49150 */
+    uint16_t interval = (uint16_t)(interval_us >> down);    /* 8192..49151 */
     uint32_t rounded = (period << 14) + (interval >> 1);    /* below 2^30 */
 
     /* interval >= (period - 1) / 2: the quotient passes 2^15 by rounding only, and the division is exact to 2^16. */

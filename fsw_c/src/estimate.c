@@ -23,11 +23,13 @@ uint32_t mrd_estimate_rate(const mrd_config *config, const mrd_trace *trace, mrd
 
     estimate->rate = 0;
     estimate->valid = 1;
+    estimate->fell_back = 0;
     if (config->supervisor.settle_by == MRD_SETTLE_BY_GYRO) {
         if (trace->calibration.rate_valid) {
             estimate->rate = mrd_isqrt_u32(mrd_norm_sq(trace->calibration.rate)); /* at most 56754 */
             return 0;
         }
+        estimate->fell_back = 1;
         status |= MRD_BIT(MRD_S_ESTIMATE_FELL_BACK);
     }
     if (trace->derivative.valid) {

@@ -1,8 +1,8 @@
 /*
  * Stage 3: gate. Stamps in us, which wrap after 71.6 min: every difference is unsigned and wraps with them. An age of
- * 2^31 or more is a switch-off that lies ahead of the sample. A switch-off that was once old enough stays old while
- * its stamp does not change, so a coil at rest for hours is never taken for one just switched off. In the first cycle
- * after a reset nothing is known of the coils, and no sample is trusted.
+ * 2^31 or more is a switch-off that lies ahead of the sample, unless the same switch-off was old enough before. A pulse
+ * stays pending until a stamp says that it ended after its drive window opened. In the first cycle after a reset nothing
+ * is known of the coils, and no sample is trusted.
  */
 #include "arith.h"
 #include "stages.h"
@@ -17,38 +17,69 @@ static uint16_t in_place(const mrd_path_config *config, const mrd_path_inputs *i
     return late_us <= config->tolerance_us || early_us <= config->tolerance_us;
 }
 
+/* A stamp that is new, and not from before the pulse. */
+static uint16_t stamps_pulse(const mrd_path_state *state, uint32_t stamp_us, uint16_t i)
+{
+    return stamp_us != state->switch_off_us[i] && stamp_us - state->drive_us[i] <= age_saturated_us;
+}
+
+/* A pulse that began more than 2^30 us ago is over: a stamp of the present time is taken however late it comes. */
+static void age_pending(mrd_path_state *state, uint32_t cycle_start_us)
+{
+    uint16_t i;
+
+    for (i = 0; i < 3u; i++) {
+        uint32_t since_us = cycle_start_us - state->drive_us[i];
+
+        if (state->pending[i] && since_us > MRD_BIT(30) && since_us <= age_saturated_us) {
+            state->drive_us[i] = cycle_start_us - MRD_BIT(30);
+        }
+    }
+}
+
+/* One coil: returns status bits, and whether it is clear. timed: the sample is there and at its place. */
+static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t blanking_us, uint16_t timed, uint16_t i,
+                          uint32_t *age_us, uint16_t *clear)
+{
+    uint16_t was_clear = stamp_us == state->switch_off_us[i] && state->off_clear[i];
+
+    *clear = 0;
+    if (state->pending[i] && stamps_pulse(state, stamp_us, i)) {
+        state->pending[i] = 0;
+    }
+    state->switch_off_us[i] = stamp_us;
+    if (!state->off_known || state->pending[i]) {
+        state->off_clear[i] = 0;
+        return state->off_known ? MRD_BIT(MRD_S_SWITCH_OFF_UNSTAMPED) : 0u;
+    }
+    if (was_clear && *age_us > age_saturated_us) {
+        *age_us = age_saturated_us;
+    }
+    *clear = *age_us >= blanking_us && *age_us <= age_saturated_us;
+    state->off_clear[i] = was_clear || (*clear && timed);
+    return 0;
+}
+
 uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
                   uint16_t have_sample, mrd_gate_trace *trace)
 {
     uint32_t start_us = have_sample ? inputs->sample_us - config->half_sample_us : inputs->cycle_start_us;
+    uint16_t timed = have_sample && in_place(config, inputs);
     uint32_t status = 0;
     uint16_t i;
 
-    if (have_sample && !in_place(config, inputs)) {
+    if (have_sample && !timed) {
         status |= MRD_BIT(MRD_S_SAMPLE_OFF_TIME);
     }
+    age_pending(state, inputs->cycle_start_us);
     for (i = 0; i < 3u; i++) {
-        uint16_t fresh = inputs->switch_off_us[i] != state->switch_off_us[i];
-        uint32_t age_us = start_us - inputs->switch_off_us[i];
         uint16_t clear;
 
-        if (!state->off_known) {
-            clear = 0;
-        } else if (!fresh && state->ticks[i] != 0) {
-            status |= MRD_BIT(MRD_S_SWITCH_OFF_UNSTAMPED);
-            clear = 0;
-        } else if (!fresh && state->off_clear[i]) {
-            age_us = age_saturated_us;
-            clear = 1;
-        } else {
-            clear = age_us >= config->blanking_us[i] && age_us <= age_saturated_us;
-        }
+        trace->age_us[i] = start_us - inputs->switch_off_us[i];
+        status |= gate_coil(state, inputs->switch_off_us[i], config->blanking_us[i], timed, i, &trace->age_us[i], &clear);
         if (!clear && have_sample) {
             status |= MRD_BIT(MRD_S_BLANKED);
         }
-        trace->age_us[i] = age_us;
-        state->off_clear[i] = clear;
-        state->switch_off_us[i] = inputs->switch_off_us[i];
     }
     state->off_known = 1;
     return status;

@@ -114,7 +114,7 @@ static uint16_t settle_ok(const mrd_config *config)
     const mrd_supervisor_config *s = &config->supervisor;
 
     return (s->settle_by == MRD_SETTLE_BY_FIELD || (s->settle_by == MRD_SETTLE_BY_GYRO && config->path.gyro_fitted))
-           && s->settled_rate <= s->wake_rate && s->settle_dwell >= 1u && s->wake_dwell >= 1u;
+           && s->settled_rate <= s->wake_rate && s->wake_rate <= 65534u && s->settle_dwell >= 1u && s->wake_dwell >= 1u;
 }
 
 static uint16_t estimate_ok(const mrd_supervisor_config *s)
@@ -152,7 +152,7 @@ uint16_t mrd_path_check(const mrd_path_config *config)
     if (!timeline_ok(config)) {
         return MRD_E_TIMELINE;
     }
-    if (!within(config->filter_gain, 1, 32768)) {
+    if (!within(config->filter_gain, 128, 32768)) {
         return MRD_E_FILTER;
     }
     if (!choice_ok(config)) {

@@ -1,12 +1,14 @@
 /*
- * Integrity: FNV-1a over field values, not bytes, so that padding, byte order and word size do not matter. Each step
- * h' = (h ^ w) p is one-to-one in h and in w (p is odd): a change in any one field always changes the digest.
+ * Integrity: a fold over field values, not bytes, so that padding, byte order and word size do not matter. Each step, that
+ * of FNV-1a and a xor-shift for the high bits, is one-to-one in h and in the field: a change in any one field always
+ * changes the digest.
  */
 #include "arith.h"
 
 static uint32_t mix(uint32_t h, uint32_t field)
 {
-    return (h ^ field) * 16777619u;
+    h = (h ^ field) * 16777619u;
+    return h ^ (h >> 15);
 }
 
 static uint32_t mix_s16s(uint32_t h, const int16_t *fields, uint16_t count)
@@ -109,12 +111,13 @@ uint32_t mrd_state_digest(const mrd_state *state)
     }
     h = mix(h, path->sample_us);
     h = mix_u32s(h, path->switch_off_us, 3);
+    h = mix_u32s(h, path->drive_us, 3);
     h = mix_s16s(h, path->field, 3);
-    h = mix_s16s(h, path->ticks, 3);
     h = mix(h, path->field_valid);
     h = mix(h, path->filter_valid);
     h = mix(h, path->off_known);
     h = mix_u16s(h, path->off_clear, 3);
+    h = mix_u16s(h, path->pending, 3);
     h = mix(h, state->dwell);
     h = mix(h, state->mode);
     h = mix(h, state->inhibit_commanded);

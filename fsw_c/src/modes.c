@@ -2,7 +2,7 @@
 #include "arith.h"
 #include "supervisor.h"
 
-static uint16_t is_mode(uint16_t mode)
+uint16_t mrd_is_mode(uint16_t mode)
 {
     switch (mode) {
     case MRD_MODE_HOLD_OFF:
@@ -25,7 +25,7 @@ static uint16_t command_inhibit(mrd_state *state)
         return 0;
     }
     state->mode = MRD_MODE_INHIBIT;
-    state->inhibit_commanded = 1;
+    state->inhibit_commanded = 65535u;
     return 1;
 }
 
@@ -63,8 +63,8 @@ static uint16_t command_bench(const mrd_state *state, const mrd_supervisor_confi
            && ticks <= (uint32_t)config->bench_limit_ticks;
 }
 
-static uint16_t obey(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
-                     uint16_t *bench_pulse)
+static uint16_t accept(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                       uint16_t *bench_pulse)
 {
     switch (inputs->command) {
     case MRD_COMMAND_NONE:
@@ -83,6 +83,28 @@ static uint16_t obey(mrd_state *state, const mrd_supervisor_config *config, cons
     default:
         return 0;
     }
+}
+
+uint32_t mrd_obey(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs, uint16_t *bench_pulse)
+{
+    uint16_t before = state->mode;
+    uint32_t status = 0;
+
+    *bench_pulse = 0;
+    if (!mrd_is_mode(state->mode)) {
+        state->mode = MRD_MODE_SAFE;
+    }
+    if (!accept(state, config, inputs, bench_pulse)) {
+        status |= MRD_BIT(MRD_S_COMMAND_REFUSED);
+    }
+    if (state->mode != before) {
+        state->dwell = 0;
+        if (before == MRD_MODE_BENCH) { /* what was measured while the norm was waived is not used */
+            state->path.field_valid = 0;
+            state->path.filter_valid = 0;
+        }
+    }
+    return status;
 }
 
 /* ---- transitions: each returns the mode that follows ---- */
@@ -109,10 +131,15 @@ static uint16_t from_damping(mrd_state *state, const mrd_supervisor_config *conf
     if (inputs->low_power) {
         return MRD_MODE_INHIBIT;
     }
-    if (estimate->valid) {
-        state->dwell = estimate->rate <= config->settled_rate ? mrd_count_u32(state->dwell) : 0u;
+    if (estimate->valid && estimate->rate > config->settled_rate) {
+        state->dwell = 0;
+    } else if (estimate->valid && !estimate->fell_back) {
+        state->dwell = mrd_count_u32(state->dwell);
+        if (state->dwell >= config->settle_dwell) {
+            return MRD_MODE_SETTLED;
+        }
     }
-    return state->dwell >= config->settle_dwell ? MRD_MODE_SETTLED : MRD_MODE_DAMPING;
+    return MRD_MODE_DAMPING;
 }
 
 static uint16_t from_settled(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
@@ -121,25 +148,22 @@ static uint16_t from_settled(mrd_state *state, const mrd_supervisor_config *conf
     if (inputs->low_power) {
         return MRD_MODE_INHIBIT;
     }
-    if (estimate->valid) {
-        state->dwell = estimate->rate > config->wake_rate ? mrd_count_u32(state->dwell) : 0u;
+    if (estimate->valid && estimate->rate <= config->wake_rate) {
+        state->dwell = 0;
+    } else if (estimate->valid) {
+        state->dwell = mrd_count_u32(state->dwell);
+        if (state->dwell >= config->wake_dwell) {
+            return MRD_MODE_DAMPING;
+        }
     }
-    return state->dwell >= config->wake_dwell ? MRD_MODE_DAMPING : MRD_MODE_SETTLED;
+    return MRD_MODE_SETTLED;
 }
 
-uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
-                         const mrd_estimate *estimate, uint16_t *bench_pulse)
+void mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                     const mrd_estimate *estimate)
 {
     uint16_t before = state->mode;
-    uint32_t status = 0;
 
-    *bench_pulse = 0;
-    if (!is_mode(state->mode)) {
-        state->mode = MRD_MODE_SAFE;
-    }
-    if (!obey(state, config, inputs, bench_pulse)) {
-        status |= MRD_BIT(MRD_S_COMMAND_REFUSED);
-    }
     switch (state->mode) {
     case MRD_MODE_HOLD_OFF:
         state->mode = from_hold_off(config, inputs);
@@ -159,5 +183,4 @@ uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, 
     if (state->mode != before) {
         state->dwell = 0;
     }
-    return status;
 }

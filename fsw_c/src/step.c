@@ -11,18 +11,22 @@ void mrd_reset(mrd_state *state)
     state->digest = mrd_state_digest(state);
 }
 
-/* A state that cannot be trusted starts anew, but for SAFE, which only a command leaves. */
+/* A state that cannot be trusted starts anew; of its mode remains what keeps coils off. */
 static uint32_t restart_if_corrupt(mrd_state *state)
 {
     uint16_t mode = state->mode;
+    uint16_t inhibited = mode == MRD_MODE_INHIBIT && state->inhibit_commanded;
     uint16_t restarts = state->counters.restarts;
 
     if (state->digest == mrd_state_digest(state)) {
         return 0;
     }
     mrd_reset(state);
-    if (mode == MRD_MODE_SAFE) {
+    if (mode == MRD_MODE_SAFE || mode == MRD_MODE_BENCH || !mrd_is_mode(mode)) {
         state->mode = MRD_MODE_SAFE;
+    } else if (inhibited) {
+        state->mode = MRD_MODE_INHIBIT;
+        state->inhibit_commanded = 65535u;
     }
     state->counters.restarts = mrd_count_u16(restarts);
     return MRD_BIT(MRD_S_STATE_RESTARTED);
@@ -73,11 +77,12 @@ static void run(mrd_state *state, const mrd_config *config, const mrd_inputs *in
     mrd_estimate estimate;
     uint16_t bench_pulse;
 
+    outputs->status |= mrd_obey(state, &config->supervisor, inputs, &bench_pulse);
     outputs->status |= mrd_path_sense(&state->path, &config->path, &inputs->path, state->mode == MRD_MODE_BENCH,
                                       &outputs->trace);
     outputs->status |= mrd_estimate_rate(config, &outputs->trace, &estimate);
     outputs->status |= mrd_path_drive(&config->path, &outputs->trace);
-    outputs->status |= mrd_change_mode(state, &config->supervisor, inputs, &estimate, &bench_pulse);
+    mrd_change_mode(state, &config->supervisor, inputs, &estimate);
     outputs->rate = estimate.rate;
     outputs->rate_valid = estimate.valid;
     choose_pulses(state, inputs, bench_pulse, outputs);
@@ -96,7 +101,7 @@ void mrd_step(mrd_state *state, const mrd_config *config, const mrd_inputs *inpu
     } else {
         run(state, config, inputs, outputs);
     }
-    mrd_path_commit(&state->path, outputs->ticks);
+    mrd_path_commit(&state->path, &config->path, &inputs->path, outputs->ticks);
     outputs->mode = state->mode;
     outputs->handover = state->mode == MRD_MODE_SETTLED;
     outputs->digest = config->digest;

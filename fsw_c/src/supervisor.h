@@ -8,12 +8,19 @@
 typedef struct {
     uint16_t rate;  /* rate counts */
     uint16_t valid; /* 0 or 1 */
+    uint16_t fell_back; /* 0 or 1: from the field in the gyro's place */
 } mrd_estimate;
 
 uint32_t mrd_estimate_rate(const mrd_config *config, const mrd_trace *trace, mrd_estimate *estimate);
 
-/* The command, then one transition. bench_pulse becomes 1 where the bench command of this cycle is accepted. */
-uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
-                         const mrd_estimate *estimate, uint16_t *bench_pulse);
+/* 1 for MRD_MODE_*, 0 for any other value. */
+uint16_t mrd_is_mode(uint16_t mode);
+
+/* The command. bench_pulse becomes 1 where the bench command of this cycle is accepted. Returns status bits. */
+uint32_t mrd_obey(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs, uint16_t *bench_pulse);
+
+/* One transition. */
+void mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                     const mrd_estimate *estimate);
 
 #endif

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import sys
+import tempfile
 from collections.abc import Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
@@ -13,8 +14,11 @@ from tqdm import tqdm
 from pyharness.controllers import NAMES
 from pyharness.flight import Sources, find_sources
 from pyharness.mission import demo_path
+from pyharness.scaling import Scaling
 
 SHOW_AFTER_S = 2.0
+MOST_CYCLES = 1_000_000
+"""Longest flight of a command: its records are kept in memory."""
 
 
 class UsageError(Exception):
@@ -43,8 +47,36 @@ def add_controller(parser: argparse.ArgumentParser) -> None:
 def announce_sources(options: argparse.Namespace) -> Sources:
     """Find the C sources and say which."""
     sources = find_sources(options.sources)
-    print(f"sources   {sources.root} ({sources.digest})")
+    print(f"sources   {shown(sources.root)} ({sources.digest})")
     return sources
+
+
+def announce_mission(scaling: Scaling) -> None:
+    """Say which mission and which configuration."""
+    mission = scaling.mission
+    print(f"mission   {mission.name} ({shown(mission.source)}, {mission.digest}), config 0x{scaling.config['digest']:08x}")
+
+
+def shown(path: str | Path) -> str:
+    """A path as people read it: relative to the current folder where it lies below it."""
+    path, here = Path(path).absolute(), Path.cwd()
+    return str(path.relative_to(here)) if path.is_relative_to(here) else str(path)
+
+
+def check_writable(option: str, path: Path, make_folder: bool = False) -> None:
+    """Raise UsageError if a file cannot be written there: before the work, not after it."""
+    folder = path.parent
+    try:
+        if make_folder:
+            folder.mkdir(parents=True, exist_ok=True)
+        if not folder.is_dir():
+            raise UsageError(f"{option} {path}: there is no folder {folder}")
+        if path.is_dir():
+            raise UsageError(f"{option} {path}: is a folder")
+        with tempfile.TemporaryFile(dir=folder):
+            pass
+    except OSError as error:
+        raise UsageError(f"{option} {path}: cannot be written: {error.strerror}") from None
 
 
 @contextmanager
@@ -69,7 +101,7 @@ def table(rows: Iterable[Sequence[str]], indent: str = "") -> str:
 
 
 def find_vector_folder(given: str | None) -> Path:
-    """--vectors, ./vectors, or those of the checkout. Raises NoVectors with the remedy if there are none."""
+    """--vectors, ./vectors, or those of the checkout. Whether it holds any is for others to find."""
     if given is not None:
         return Path(given)
     here = Path("vectors")

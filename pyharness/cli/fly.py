@@ -8,11 +8,23 @@ from pathlib import Path
 
 import numpy as np
 
-from pyharness.cli.common import UsageError, add_controller, add_mission, add_sources, announce_sources, progress, table
+from pyharness.cli.common import (
+    MOST_CYCLES,
+    UsageError,
+    add_controller,
+    add_mission,
+    add_sources,
+    announce_mission,
+    announce_sources,
+    check_writable,
+    progress,
+    table,
+)
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import load_controller
 from pyharness.loop import Flight, fly
 from pyharness.mission import load_mission
+from pyharness.mission.schema import BY_PATH
 from pyharness.review import Flown, save_figures
 from pyharness.review.numbers import numbers
 from pyharness.scaling import scale
@@ -45,19 +57,17 @@ def add_to(commands) -> None:
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
     scaling = scale(load_mission(options.mission))
-    cycles = _cycles(options, scaling)
-    if options.seed < 0:
-        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
+    flight = Flight(scaling, _cycles(options, scaling), options.seed, _rate(options), options.along_field)
+    for option, path in (("--csv", options.csv), ("--plot", options.plot and Path(options.plot) / "x")):
+        if path:
+            check_writable(option, Path(path), make_folder=option == "--plot")
     controller = load_controller(options.controller, announce_sources(options))
-    rate = tuple(options.rate) if options.rate else None
-    if rate and not np.isfinite(rate).all():
-        raise UsageError("--rate: must be three finite numbers in °/s")
-    with progress("flying", cycles) as bar:
-        (record,) = fly([Flight(scaling, cycles, options.seed, rate, options.along_field)], controller, bar.update)
+    announce_mission(scaling)
+    with progress("flying", flight.cycles) as bar:
+        (record,) = fly([flight], controller, bar.update)
     comparison = compare_with_truth(scaling, record.inputs, record.outputs, controller.interface.header)
     flown = Flown(scaling.mission.name, record, comparison, controller.interface)
-    print(f"mission   {scaling.mission.name} ({scaling.mission.digest}), config 0x{scaling.config['digest']:08x}")
-    print(f"flight    {cycles} cycles, {cycles * scaling.period_s:g} s, seed {options.seed}, controller {controller.name}\n")
+    print(f"flight    {flight.cycles} cycles, {flight.cycles * scaling.period_s:g} s, seed {options.seed}, controller {controller.name}\n")
     print(table((label, value) for label, (value,) in numbers([flown])))
     if options.csv:
         write_whole(Path(options.csv), _csv(flown))
@@ -68,6 +78,16 @@ def run(options: argparse.Namespace) -> int:
     return 0
 
 
+def _rate(options: argparse.Namespace) -> tuple[float, ...] | None:
+    limits = BY_PATH["body.tip_off_deg_s"].limits
+    for value in options.rate or ():
+        if value not in limits:
+            raise UsageError(f"--rate: {value:g} °/s, each must be in {limits} °/s")
+    if options.seed < 0:
+        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
+    return tuple(options.rate) if options.rate else None
+
+
 def _cycles(options: argparse.Namespace, scaling) -> int:
     if options.cycles is not None:
         cycles = options.cycles
@@ -75,8 +95,8 @@ def _cycles(options: argparse.Namespace, scaling) -> int:
         cycles = int(np.ceil(options.duration / scaling.period_s))
     else:
         cycles = long_cycles(scaling)
-    if not 1 <= cycles <= 1_000_000:
-        raise UsageError(f"length: {cycles} cycles, must be in [1, 1000000]")
+    if not 1 <= cycles <= MOST_CYCLES:
+        raise UsageError(f"length: {cycles} cycles, must be in [1, {MOST_CYCLES}]")
     return cycles
 
 
@@ -97,6 +117,6 @@ def _csv(flown: Flown) -> str:
     text = io.StringIO()
     text.write(",".join([*columns, "mode", "status"]) + "\n")
     for i, row in enumerate(zip(*columns.values(), strict=True)):
-        cells = ["" if np.isnan(value) else f"{value:.9g}" for value in row]
+        cells = ["" if np.isnan(value) else f"{value + 0.0:.9g}" for value in row]  # + 0.0: no negative zero
         text.write(",".join([*cells, modes[i], f"0x{record.outputs['status'][i]:06x}"]) + "\n")
     return text.getvalue()

@@ -7,7 +7,16 @@ import shlex
 import sys
 from pathlib import Path
 
-from pyharness.cli.common import add_mission, add_sources, announce_sources, find_vector_folder, progress
+from pyharness.cli.common import (
+    add_mission,
+    add_sources,
+    announce_mission,
+    announce_sources,
+    check_writable,
+    find_vector_folder,
+    progress,
+    shown,
+)
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import CController, load_controller
 from pyharness.loop import fly
@@ -37,6 +46,7 @@ def add_to(commands) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
+    check_writable("--out", Path(options.out))
     controller = load_controller("c", announce_sources(options))
     folder = find_vector_folder(options.vectors)
     find_vectors(folder)  # before the long flight: without vectors there is nothing to sign
@@ -44,7 +54,7 @@ def run(options: argparse.Namespace) -> int:
     data = review_data(flights, [*_replay(folder, controller), *digests], _command(options))
     write_page(data, Path(options.out))
     _tell(data, folder)
-    print(f"page      {Path(options.out).resolve()}")
+    print(f"page      {shown(options.out)}")
     return 0 if data.passed else 1
 
 
@@ -79,14 +89,14 @@ def _command(options: argparse.Namespace) -> str:
 
 
 def _tell(data: ReviewData, folder: Path) -> None:
-    scaling = data.scaling
-    print(f"mission   {data.mission.name} ({data.mission.source}, {data.mission.digest}), config 0x{scaling.config['digest']:08x}")
+    announce_mission(data.scaling)
     for flown in data.flights:
         rate, settled = flown.record.true_rate_deg_s, flown.settled_at
         when = "never settled" if settled is None else f"settled at {flown.record.time_s[settled]:.0f} s"
-        print(f"flight    {flown.title}: {rate[0]:.1f} to {rate[-1]:.3f} °/s in {flown.cycles * scaling.period_s:.0f} s, {when}")
+        print(f"flight    {flown.title}: {rate[0]:.1f} to {rate[-1]:.3f} °/s in {flown.cycles * flown.scaling.period_s:.0f} s, {when}")
     rows = sum(v.rows for v in data.vectors)
-    print(f"vectors   {folder}: {sum(v.passed for v in data.vectors)} of {len(data.vectors)} files passed, {rows} rows")
+    passed = sum(v.passed for v in data.vectors)
+    print(f"vectors   {passed} of {len(data.vectors)} passed, long flights included, {rows} rows, from {shown(folder)}")
     for check in data.failed:
         print(f"FAIL      {check.name}: {check.figure}")
     passed = len(data.checks) - len(data.failed)

@@ -6,7 +6,7 @@ import argparse
 import json
 from pathlib import Path
 
-from pyharness.cli.common import add_mission, add_sources, announce_sources, table
+from pyharness.cli.common import add_mission, add_sources, announce_mission, announce_sources, check_writable, table
 from pyharness.describe import c_header, describe_config, describe_resolution
 from pyharness.flight import Interface, find_sources
 from pyharness.mission import load_mission
@@ -35,16 +35,16 @@ def run(options: argparse.Namespace) -> int:
     if options.keys:
         print("\n".join(f"{key.path}\n    {key.expected()}; default: {key.default_text}\n    {key.meaning}" for key in KEYS))
         return 0
-    mission = load_mission(options.mission)
-    scaling = scale(mission)
+    scaling = scale(load_mission(options.mission))
+    if options.header:
+        check_writable("--header", Path(options.header))
     if options.json:
         interface = Interface(find_sources(options.sources))
         print(json.dumps(scaling.config, indent=2))
     else:
         interface = Interface(announce_sources(options))
-        print(f"mission   {mission.name} ({mission.source}, {mission.digest})")
-        print(f"config    0x{scaling.config['digest']:08x}\n")
-        print(table(describe_resolution(scaling)), "\n")
+        announce_mission(scaling)
+        print("\n" + table(describe_resolution(scaling)) + "\n")
         rows = [(row.name, " ".join(map(str, row.integers)), row.value) for row in describe_config(scaling, interface)]
         print(table([("field", "integers", "meaning"), *rows]))
     if options.header:

@@ -4,8 +4,19 @@ from __future__ import annotations
 
 import argparse
 
-from pyharness.cli.common import UsageError, add_controller, add_mission, add_sources, announce_sources, progress, table
+from pyharness.cli.common import (
+    MOST_CYCLES,
+    UsageError,
+    add_controller,
+    add_mission,
+    add_sources,
+    announce_mission,
+    announce_sources,
+    progress,
+    table,
+)
 from pyharness.controllers import load_controller
+from pyharness.flight import Interface
 from pyharness.flight.records import columns, to_columns
 from pyharness.loop import Flight, Record, fly
 from pyharness.mission import load_mission
@@ -33,25 +44,29 @@ def add_to(commands) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
-    if options.cycle < 0 or options.seed < 0:
-        raise UsageError("--cycle and --seed: must be 0 or more")
+    if not 0 <= options.cycle < MOST_CYCLES:
+        raise UsageError(f"--cycle: {options.cycle}, must be in [0, {MOST_CYCLES - 1}]")
+    if options.seed < 0:
+        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
     scaling = scale(load_mission(options.mission))
     controller = load_controller(options.controller, announce_sources(options))
     flight = Flight(scaling, options.cycle + 1, seed=options.seed, along_field=options.along_field)
     with progress("flying", flight.cycles) as bar:
         (record,) = fly([flight], controller, bar.update)
     truth = Truth([scaling])
-    for i in range(flight.cycles):
-        step = truth.step(record.inputs[i : i + 1], record.outputs[i : i + 1])
-    print(f"mission   {scaling.mission.name} ({scaling.mission.digest}), controller {controller.name}")
-    print(f"cycle     {options.cycle}, {record.time_s[-1]:.6g} s after the first sample; true rate {record.true_rate_deg_s[-1]:.4g} °/s\n")
-    print(table(_rows(record, scaling)))
+    with progress("following with the truth", flight.cycles) as bar:
+        for i in range(flight.cycles):
+            step = truth.step(record.inputs[i : i + 1], record.outputs[i : i + 1])
+            bar.update()
+    announce_mission(scaling)
+    print(f"cycle     {options.cycle} through {controller.name}, {record.time_s[-1]:.6g} s after the first sample; true rate {record.true_rate_deg_s[-1]:.4g} °/s\n")
+    print(table(_rows(record, scaling, controller.interface)))
     print("\n" + table(_truth_rows(record, scaling, step)))
     print("\n" + "\n".join(_told(record, controller.interface)))
     return 0
 
 
-def _rows(record: Record, scaling: Scaling) -> list[tuple[str, str, str, str]]:
+def _rows(record: Record, scaling: Scaling, interface: Interface) -> list[tuple[str, str, str, str]]:
     rows = [("stage", "value", "integers", "physical")]
     for title, records in (("inputs", record.inputs), ("outputs", record.outputs)):
         names = [f"{title}.{c}" for c in columns(records.dtype)]
@@ -63,13 +78,26 @@ def _rows(record: Record, scaling: Scaling) -> list[tuple[str, str, str, str]]:
         previous = ""
         for group, indices in groups.items():
             stage = "inputs" if title == "inputs" else stage_of(group)
-            sizes = [scaling.size_of(names[i].partition(".")[2]) for i in indices]
-            physical = "  ".join(f"{s.value(values[i]):.5g}" for i, s in zip(indices, sizes, strict=True) if s)
-            unit = f" {sizes[0].unit}" if sizes[0] else ""
+            physical = _physical(group, names, values, indices, scaling, interface)
             integers = "  ".join(str(values[i]) for i in indices)
-            rows.append((stage if stage != previous else "", group.rpartition(".")[2], integers, physical + unit))
+            rows.append((stage if stage != previous else "", group.rpartition(".")[2], integers, physical))
             previous = stage
     return rows
+
+
+def _physical(group: str, names: list[str], values: list[int], indices: list[int], scaling: Scaling, interface: Interface) -> str:
+    """What the integers of a field stand for: quantities with their unit, codes by name, words of bits in hexadecimal."""
+    leaf, value = group.rpartition(".")[2], values[indices[0]]
+    if leaf == "mode":
+        return interface.mode_name(value)
+    if leaf == "active":
+        return interface.header.named("MRD_LAW_")[value].lower()
+    if leaf in ("status", "digest"):
+        return f"0x{value:08x}"
+    sizes = [scaling.size_of(names[i].partition(".")[2]) for i in indices]
+    if sizes[0] is None:
+        return ""
+    return "  ".join(f"{size.value(values[i]):.7g}" for i, size in zip(indices, sizes, strict=True)) + f" {sizes[0].unit}"
 
 
 def _truth_rows(record: Record, scaling: Scaling, step: TruthStep) -> list[tuple[str, str, str, str, str]]:
@@ -86,7 +114,7 @@ def _truth_rows(record: Record, scaling: Scaling, step: TruthStep) -> list[tuple
     return rows
 
 
-def _told(record: Record, interface) -> list[str]:
+def _told(record: Record, interface: Interface) -> list[str]:
     output = record.outputs[-1]
     texts = interface.status_texts(int(output["status"])) or ["nothing to report"]
     return [f"mode      {interface.mode_name(int(output['mode']))}", *(f"status    {text}" for text in texts)]

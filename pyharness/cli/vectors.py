@@ -11,6 +11,7 @@ from pyharness.cli.common import (
     announce_sources,
     find_vector_folder,
     progress,
+    shown,
 )
 from pyharness.controllers import load_controller
 from pyharness.flight import Interface
@@ -86,7 +87,7 @@ def run_write(options: argparse.Namespace) -> int:
         files = make_vectors(options.mission, interface, not options.no_long, advance)
     before = _read_all(folder, interface)
     changed = write_folder(folder, files, keep_digests=options.no_long)
-    print(f"vectors   {folder}: {len(files)} files, {len(changed)} changed")
+    print(f"vectors   {len(files)} files, {len(changed)} changed, in {shown(folder)}")
     for line in _told(before, folder, changed, interface):
         print(f"  {line}")
     return 0
@@ -132,7 +133,7 @@ def run_check(options: argparse.Namespace) -> int:
         print(f"{'pass' if verdict.passed else 'FAIL'}  {verdict.name:36} {verdict.rows:6} rows  {verdict.detail}")
     failed = sum(not verdict.passed for verdict in verdicts)
     rows = sum(verdict.rows for verdict in verdicts)
-    print(f"\nvectors   {folder}: {len(verdicts)} files, {rows} rows through {controller.name}, {failed} failed")
+    print(f"\nvectors   {len(verdicts)} files, {rows} rows through {controller.name}, {failed} failed, from {shown(folder)}")
     return 1 if failed else 0
 
 

@@ -47,9 +47,12 @@ class TruthController(Controller):
         if state["mode"] == mrd.MRD_MODE_DAMPING:
             ticks = tuple(int(t) for t in np.rint(truth.ticks[:, 0]))
             shortest = config["path"]["shortest_ticks"]
-            outputs["ticks"] = tuple(t if abs(t) >= shortest else 0 for t in ticks)
-            path = exact.path_commit(state["path"], outputs["ticks"])
-            state = {**state, "path": path}
+            ticks = tuple(t if abs(t) >= shortest else 0 for t in ticks)
+            # A pulse that the exact model made and the truth does not make waits for no stamp.
+            pending = zip(state["path"]["pending"], outputs["ticks"], ticks, strict=True)
+            path = {**state["path"], "pending": tuple(0 if made and not true else p for p, made, true in pending)}
+            state = {**state, "path": exact.path_commit(path, config["path"], to_dict(inputs[0])["path"], ticks)}
+            outputs["ticks"] = ticks
             state["digest"] = exact.state_digest(state)
         self._states[i] = state
         return to_tuple(self.interface.outputs, outputs)

@@ -125,12 +125,13 @@ PATH_STATE: Struct = (
     i32("filter", AXES),
     u32("sample_us"),
     u32("switch_off_us", AXES),
+    u32("drive_us", AXES),
     i16("field", AXES),
-    i16("ticks", AXES),
     u16("field_valid"),
     u16("filter_valid"),
     u16("off_known"),
     u16("off_clear", AXES),
+    u16("pending", AXES),
 )
 
 COUNTERS: Struct = (

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 from pyharness.exact.constants import (
     MRD_S_BLANKED,
     MRD_S_FIELD_IMPLAUSIBLE,
@@ -10,10 +12,10 @@ from pyharness.exact.constants import (
     MRD_S_SAMPLE_OFF_TIME,
     MRD_S_SWITCH_OFF_UNSTAMPED,
 )
-from pyharness.exact.num import WRAP, Record, Vector, bit, flag
+from pyharness.exact.num import WRAP, Record, bit, flag
 from pyharness.exact.ranges import check, check3
 
-OLD = 2**31 - 1  # an age that is saturated: the stamp may have wrapped since
+OLD = 2**31 - 1  # the greatest age; one that has grown beyond it is saturated
 _MISSING = 1 << MRD_S_SAMPLE_MISSING
 _NORM = 1 << MRD_S_FIELD_IMPLAUSIBLE
 _REJECTED = _MISSING | 1 << MRD_S_MAG_RANGE | 1 << MRD_S_SAMPLE_OFF_TIME | 1 << MRD_S_BLANKED
@@ -27,31 +29,56 @@ def off_time(config: Record, inputs: Record) -> bool:
     return not (departure <= tolerance or departure >= WRAP - tolerance)
 
 
-def blanking(
-    state: Record, config: Record, switch_off_us: Vector, start: int, i: int,
-) -> tuple[int, int, bool]:
-    """Coil i at the start of the sample.
+class Coil(NamedTuple):
+    """What the gate finds of one coil; the last three are the state's."""
 
-    Returns the age of its switch-off, the flag clear, and whether it is unstamped.
+    age_us: int
+    clear: int
+    unstamped: int
+    off_clear: int
+    pending: int
+    drive_us: int
+
+
+def earliest_stamp(state: Record, cycle_start: int, i: int) -> int:
+    """drive_us of coil i: a pulse that began more than 2^30 us ago is over, and a stamp of the present time is taken."""
+    since_start = check("gate.since_start_us", (cycle_start - state["drive_us"][i]) % WRAP)
+    if state["pending"][i] and 2**30 < since_start <= OLD:
+        return (cycle_start - 2**30) % WRAP
+    return state["drive_us"][i]
+
+
+def blanking(
+    state: Record, config: Record, stamp: int, cycle_start: int, start: int, in_time: bool, i: int,
+) -> Coil:
+    """Coil i, its switch-off stamped with `stamp`, at the start of the sample.
+
+    Only a sample in time (neither missing nor off its place in the cycle) can show that a switch-off is old.
     """
-    age = (start - switch_off_us[i]) % WRAP
+    age = (start - stamp) % WRAP
+    fresh = stamp != state["switch_off_us"][i]
+    drive = earliest_stamp(state, cycle_start, i)
+    since_drive = check("gate.since_drive_us", (stamp - drive) % WRAP)
+    stamped = fresh and since_drive <= OLD
+    pending = flag(state["pending"][i] and not stamped)
     if not state["off_known"]:
-        return age, 0, False
-    if switch_off_us[i] == state["switch_off_us"][i]:
-        if state["ticks"][i] != 0:
-            return age, 0, True
-        if state["off_clear"][i]:
-            return OLD, 1, False
+        return Coil(age, clear=0, unstamped=0, off_clear=0, pending=pending, drive_us=drive)
+    if pending:
+        return Coil(age, clear=0, unstamped=1, off_clear=0, pending=1, drive_us=drive)
+    was_clear = not fresh and state["off_clear"][i]
+    if was_clear and age > OLD:
+        return Coil(OLD, clear=1, unstamped=0, off_clear=1, pending=0, drive_us=drive)
     # An age of 2^31 or more: switched off after the start of the sample.
-    return age, flag(config["blanking_us"][i] <= age <= OLD), False
+    clear = flag(config["blanking_us"][i] <= age <= OLD)
+    return Coil(age, clear, 0, flag(was_clear or (clear and in_time)), pending=0, drive_us=drive)
 
 
 def admit(
     state: Record, config: Record, inputs: Record, status: int, waive_norm: int,
-) -> tuple[Record, Vector, int]:
+) -> tuple[Record, Record, int]:
     """Whether the sample is used.
 
-    Returns the trace's part, the state's off_clear, and the status bits of this stage.
+    Returns the trace's part, what the state keeps of the coils, and the status bits of this stage.
     """
     raised = 0
     if status & _MISSING:
@@ -59,15 +86,24 @@ def admit(
     else:
         start = (inputs["sample_us"] - config["half_sample_us"]) % WRAP
         raised = bit(off_time(config, inputs), MRD_S_SAMPLE_OFF_TIME)
-    switch_off_us = inputs["switch_off_us"]
-    age_x, clear_x, unstamped_x = blanking(state, config, switch_off_us, start, 0)
-    age_y, clear_y, unstamped_y = blanking(state, config, switch_off_us, start, 1)
-    age_z, clear_z, unstamped_z = blanking(state, config, switch_off_us, start, 2)
-    raised |= bit(unstamped_x or unstamped_y or unstamped_z, MRD_S_SWITCH_OFF_UNSTAMPED)
-    raised |= bit(not (clear_x and clear_y and clear_z) and not status & _MISSING, MRD_S_BLANKED)
+    in_time = not (status & _MISSING or raised)
+    off_x, off_y, off_z = inputs["switch_off_us"]
+    begin = inputs["cycle_start_us"]
+    x = blanking(state, config, off_x, begin, start, in_time, 0)
+    y = blanking(state, config, off_y, begin, start, in_time, 1)
+    z = blanking(state, config, off_z, begin, start, in_time, 2)
+    raised |= bit(x.unstamped or y.unstamped or z.unstamped, MRD_S_SWITCH_OFF_UNSTAMPED)
+    raised |= bit(not (x.clear and y.clear and z.clear or status & _MISSING), MRD_S_BLANKED)
     disqualifying = _REJECTED if waive_norm else _REJECTED | _NORM
     trace = {
-        "age_us": check3("gate.age_us", (age_x, age_y, age_z)),
+        "age_us": check3("gate.age_us", (x.age_us, y.age_us, z.age_us)),
         "trusted": flag(not (status | raised) & disqualifying),
     }
-    return trace, (clear_x, clear_y, clear_z), raised
+    coils = {
+        "switch_off_us": inputs["switch_off_us"],
+        "off_known": 1,
+        "off_clear": (x.off_clear, y.off_clear, z.off_clear),
+        "pending": (x.pending, y.pending, z.pending),
+        "drive_us": (x.drive_us, y.drive_us, z.drive_us),
+    }
+    return trace, coils, raised

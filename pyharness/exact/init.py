@@ -105,7 +105,7 @@ def _gain(path: Record) -> bool:
 
 def _settle(config: Record) -> bool:
     supervisor = config["supervisor"]
-    return (_within(supervisor, "config.supervisor", "settle_by", "settle_dwell", "wake_dwell")
+    return (_within(supervisor, "config.supervisor", "settle_by", "settle_dwell", "wake_dwell", "wake_rate")
             and (supervisor["settle_by"] != MRD_SETTLE_BY_GYRO or config["path"]["gyro_fitted"] == 1)
             and supervisor["settled_rate"] <= supervisor["wake_rate"])
 

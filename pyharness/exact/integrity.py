@@ -1,4 +1,4 @@
-"""Digests: FNV-1a (Fowler, Noll, Vo) over fields instead of bytes: byte order and padding do not matter."""
+"""Digests: a fold over fields instead of bytes, so that byte order and padding do not matter."""
 
 from __future__ import annotations
 
@@ -12,11 +12,20 @@ PRIME = 16777619
 _MASK = 2**32 - 1
 
 
-def fnv1a(words: Iterable[int]) -> int:
-    """The digest of a chain of words, each unsigned."""
+def fnv1a(h: int, word: int) -> int:
+    """One step of FNV-1a (Fowler, Noll, Vo), 32 bits: the word, unsigned, into the hash."""
+    return ((h ^ word) * PRIME) & _MASK
+
+
+def fold(words: Iterable[int]) -> int:
+    """The digest of a chain of words, each unsigned.
+
+    The shift spreads the high bits, which the product alone never moves.
+    """
     h = BASIS
     for word in words:
-        h = ((h ^ word) * PRIME) & _MASK
+        h = fnv1a(h, word)
+        h ^= h >> 15
     return h
 
 
@@ -48,11 +57,11 @@ def config_digest(config: Record) -> int:
     """The digest of all fields of a configuration but `digest` itself, which may be absent."""
     words: list[int] = []
     _collect(words, config, _CONFIG_PLAN)
-    return fnv1a(words)
+    return fold(words)
 
 
 def state_digest(state: Record) -> int:
     """The digest of all fields of a state but `digest` itself, which may be absent."""
     words: list[int] = []
     _collect(words, state, _STATE_PLAN)
-    return fnv1a(words)
+    return fold(words)

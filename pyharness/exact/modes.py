@@ -1,4 +1,4 @@
-"""The modes: the command of a cycle, then one transition."""
+"""The modes: the command of a cycle before it senses, and one transition after."""
 
 from __future__ import annotations
 
@@ -24,6 +24,7 @@ MODES = (
     MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED, MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH,
 )
 NO_PULSE = (0, 0, 0)
+COMMANDED = 65535  # in inhibit_commanded: no flipped bit makes it 0
 
 _ACCEPTED_IN = {
     MRD_COMMAND_NONE: MODES,
@@ -37,7 +38,7 @@ _ACCEPTED_IN = {
 # cleared it.
 _LEADS_TO = {
     MRD_COMMAND_SAFE: (MRD_MODE_SAFE, 0),
-    MRD_COMMAND_INHIBIT: (MRD_MODE_INHIBIT, 1),
+    MRD_COMMAND_INHIBIT: (MRD_MODE_INHIBIT, COMMANDED),
     MRD_COMMAND_RESUME: (MRD_MODE_HOLD_OFF, 0),
 }
 
@@ -58,8 +59,12 @@ def accepted(mode: int, supervisor: Record, inputs: Record) -> bool:
 def obey(
     mode: int, inhibit_commanded: int, supervisor: Record, inputs: Record,
 ) -> tuple[int, int, Vector, int]:
-    """Mode after the command, inhibit_commanded, the bench pulse, and the status bits."""
+    """Mode after the command, inhibit_commanded, the bench pulse, and the status bits.
+
+    A value that is no mode counts as SAFE and becomes it.
+    """
     command = inputs["command"]
+    mode = mode if mode in MODES else MRD_MODE_SAFE
     if not accepted(mode, supervisor, inputs):
         return mode, inhibit_commanded, NO_PULSE, 1 << MRD_S_COMMAND_REFUSED
     if command == MRD_COMMAND_ARM:
@@ -71,54 +76,41 @@ def obey(
     return mode, inhibit_commanded, NO_PULSE, 0
 
 
-def advance(
-    mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int,
-    rate_valid: int,
-) -> tuple[int, int]:
-    """One transition by itself.
-
-    Returns mode and dwell; whoever calls resets the dwell where the mode has changed.
-    """
-    low_power = inputs["low_power"]
-    if mode == MRD_MODE_INHIBIT and not low_power and not inhibit_commanded:
-        mode = MRD_MODE_HOLD_OFF  # whose own rows follow in the same step
-    if mode == MRD_MODE_HOLD_OFF:
-        if low_power:
-            return MRD_MODE_INHIBIT, dwell
-        if inputs["separation_s"] >= supervisor["hold_off_s"]:
-            return MRD_MODE_DAMPING, dwell
-    elif mode == MRD_MODE_DAMPING:
-        if low_power:
-            return MRD_MODE_INHIBIT, dwell
-        if rate_valid:
-            slow = rate <= supervisor["settled_rate"]
-            return dwelling(slow, dwell, supervisor["settle_dwell"], mode, MRD_MODE_SETTLED)
-    elif mode == MRD_MODE_SETTLED:
-        if low_power:
-            return MRD_MODE_INHIBIT, dwell
-        if rate_valid:
-            fast = rate > supervisor["wake_rate"]
-            return dwelling(fast, dwell, supervisor["wake_dwell"], mode, MRD_MODE_DAMPING)
-    return mode, dwell
-
-
 def dwelling(towards: bool, dwell: int, needed: int, mode: int, following: int) -> tuple[int, int]:
     """Mode and dwell after one more cycle towards the mode that follows, or one that begins anew."""
     if not towards:
         return mode, 0
     dwell = count(dwell, UINT32_MAX)
-    return (following if dwell >= needed else mode), dwell
+    return (following, 0) if dwell >= needed else (mode, dwell)
 
 
-def change_mode(
-    state: Record, supervisor: Record, inputs: Record, rate: int, rate_valid: int,
-) -> tuple[int, int, int, Vector, int]:
-    """Mode, inhibit_commanded, dwell, the bench pulse and the status bits.
+def advance(
+    mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int,
+    rate_valid: int, fell_back: int,
+) -> tuple[int, int]:
+    """One transition by itself. Returns mode and dwell; a new mode begins with a dwell of 0.
 
-    A value that is no mode counts as SAFE.
+    An estimate that fell back sees only the rate across the field: it can end the dwell towards SETTLED, not
+    lengthen it.
     """
-    begun = state["mode"]
-    mode = begun if begun in MODES else MRD_MODE_SAFE
-    mode, inhibit_commanded, pulse, status = obey(mode, state["inhibit_commanded"], supervisor, inputs)
-    mode, dwell = advance(mode, inhibit_commanded, state["dwell"], supervisor, inputs, rate, rate_valid)
-    return mode, inhibit_commanded, (dwell if mode == begun else 0), pulse, status
+    low_power = inputs["low_power"]
+    if mode == MRD_MODE_INHIBIT and not low_power and not inhibit_commanded:
+        mode, dwell = MRD_MODE_HOLD_OFF, 0  # whose own rows follow in the same step
+    if mode == MRD_MODE_HOLD_OFF:
+        if low_power:
+            return MRD_MODE_INHIBIT, 0
+        if inputs["separation_s"] >= supervisor["hold_off_s"]:
+            return MRD_MODE_DAMPING, 0
+    elif mode == MRD_MODE_DAMPING:
+        if low_power:
+            return MRD_MODE_INHIBIT, 0
+        slow = rate <= supervisor["settled_rate"]
+        if rate_valid and not (slow and fell_back):
+            return dwelling(slow, dwell, supervisor["settle_dwell"], mode, MRD_MODE_SETTLED)
+    elif mode == MRD_MODE_SETTLED:
+        if low_power:
+            return MRD_MODE_INHIBIT, 0
+        if rate_valid:
+            fast = rate > supervisor["wake_rate"]
+            return dwelling(fast, dwell, supervisor["wake_dwell"], mode, MRD_MODE_DAMPING)
+    return mode, dwell

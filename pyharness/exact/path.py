@@ -9,7 +9,7 @@ from pyharness.exact.fields import PATH_STATE, TRACE, zeros
 from pyharness.exact.gate import admit
 from pyharness.exact.law import command_demand
 from pyharness.exact.low_pass import smooth
-from pyharness.exact.num import Record, Vector
+from pyharness.exact.num import WRAP, Record, Vector, select
 from pyharness.exact.plausibility import assess
 from pyharness.exact.pulses import make_pulses
 from pyharness.exact.ranges import check, check3
@@ -45,22 +45,20 @@ def path_sense(state: Record, config: Record, inputs: Record, waive_norm: int) -
     field = calibration["field"]
     plausibility, raised = assess(config, field, status)
     status |= raised
-    gate, off_clear, raised = admit(state, config, inputs, status, waive_norm)
+    gate, coils, raised = admit(state, config, inputs, status, waive_norm)
     status |= raised
     trusted = gate["trusted"]
     derivative, raised = differentiate(state, config, field, inputs["sample_us"], trusted)
     status |= raised
     low_pass = smooth(state, config, derivative)
     new = {
+        **state,
+        **coils,
         "filter": low_pass["filter"] if derivative["valid"] else state["filter"],
         "sample_us": inputs["sample_us"] if trusted else state["sample_us"],
-        "switch_off_us": inputs["switch_off_us"],
         "field": field if trusted else state["field"],
-        "ticks": state["ticks"],
         "field_valid": trusted,
         "filter_valid": derivative["valid"],
-        "off_known": 1,
-        "off_clear": off_clear,
     }
     trace = {
         **zero_trace(),
@@ -86,6 +84,16 @@ def path_drive(config: Record, trace: Record) -> tuple[Record, int]:
     return {**trace, "law": law, "saturation": saturation, "pulses": pulses}, status
 
 
-def path_commit(state: Record, ticks: Vector) -> Record:
-    """The state that knows which pulses are really made in this cycle."""
-    return {**state, "ticks": check3("state.path.ticks", ticks)}
+def path_commit(state: Record, config: Record, inputs: Record, ticks: Vector) -> Record:
+    """The state that waits for the switch-off of every pulse that is really to be made in this cycle."""
+    opens = (inputs["cycle_start_us"] + config["phase_us"] + config["delay_us"]) % WRAP
+    drive_x, drive_y, drive_z = state["drive_us"]
+    pending_x, pending_y, pending_z = state["pending"]
+    x, y, z = check3("commit.ticks", ticks)
+    drive_us = (
+        select(x != 0, opens, drive_x),
+        select(y != 0, opens, drive_y),
+        select(z != 0, opens, drive_z),
+    )
+    pending = (select(x != 0, 1, pending_x), select(y != 0, 1, pending_y), select(z != 0, 1, pending_z))
+    return {**state, "drive_us": check3("state.path.drive_us", drive_us), "pending": pending}

@@ -17,6 +17,7 @@ UINT32_MAX = 2**32 - 1
 NORM_MAX = 3 * INT16_MAX**2
 FILTER_MAX = 256 * INT16_MAX
 CROSS_MAX = 2 * INT16_MAX**2
+RATE_SLOW_MAX = UINT16_MAX - 1  # the saturated estimate is never slow
 
 
 class Range(NamedTuple):
@@ -103,15 +104,15 @@ _CONFIG = {
     "config.path.window_ticks": Range(1, 2**14, "ticks", "drive window"),
     "config.path.shortest_ticks": Range(1, 2**14, "ticks", "shortest pulse"),
     "config.path.polarity": _sym(1, "sign", "coil polarity"),
-    "config.path.filter_gain": Range(1, 2**15, "Q15", "1 - pole of the low-pass"),
+    "config.path.filter_gain": Range(128, 2**15, "Q15", "1 - pole of the low-pass"),
     **_gain("config.path.derivative_gain", "derivative"),
     **_gain("config.path.rate_gain", "rate"),
     "config.supervisor.settle_dwell": Range(1, UINT32_MAX, "cycles", "slow until SETTLED"),
     "config.supervisor.wake_dwell": Range(1, UINT32_MAX, "cycles", "fast until DAMPING again"),
-    "config.supervisor.hold_off_s": _u32("s", "separation to first pulse"),
+    "config.supervisor.hold_off_s": _u32("s", "separation to the first pulse of the law"),
     "config.supervisor.settle_by": Range(1, 2, "MRD_SETTLE_BY", "source of the rate estimate"),
-    "config.supervisor.settled_rate": _u16("rate count", "slow: at or below"),
-    "config.supervisor.wake_rate": _u16("rate count", "fast: above"),
+    "config.supervisor.settled_rate": Range(0, RATE_SLOW_MAX, "rate count", "slow: at or below"),
+    "config.supervisor.wake_rate": Range(0, RATE_SLOW_MAX, "rate count", "fast: above"),
     "config.supervisor.estimate_mantissa": Range(32768, UINT16_MAX, "mantissa", "rate count per chord"),
     "config.supervisor.estimate_shift": Range(1, 31, "bits", "rate count per chord"),
     "config.supervisor.bench_key": Range(1, UINT16_MAX, "key", "carried by the arm command"),
@@ -139,15 +140,16 @@ _STATE = {
     "state.path.filter": _sym(FILTER_MAX, "Q8 field count a period", "low-pass"),
     "state.path.sample_us": _u32("us", "of the last trusted sample"),
     "state.path.switch_off_us": _u32("us", "stamps of the last step"),
+    "state.path.drive_us": _u32("us", "start of the drive window of each coil's last pulse"),
     "state.path.field": _sym(INT16_MAX, "field count", "last trusted sample"),
-    "state.path.ticks": _i16("ticks", "pulses made in the last step, whoever commits them"),
     "state.path.field_valid": _flag("field holds a trusted sample of the last step"),
     "state.path.filter_valid": _flag("filter has begun"),
     "state.path.off_known": _flag("switch_off_us holds stamps"),
     "state.path.off_clear": _flag("this switch-off was once old enough"),
+    "state.path.pending": _flag("a pulse whose switch-off is not stamped yet"),
     "state.dwell": _u32("cycles", "towards settled, or towards waking"),
     "state.mode": Range(3, 12, "MRD_MODE", "mode"),
-    "state.inhibit_commanded": _flag("inhibit stays until resume"),
+    "state.inhibit_commanded": _u16("flags", "0, or 65535: inhibit stays until resume"),
     **_counters("state.counters"),
     "state.digest": _u32("digest", "of the state"),
 }
@@ -164,6 +166,8 @@ _TRACE = {
     # stage 3
     "gate.departure": _u32("us", "mid-sample against its place in the cycle, mod 2^32"),
     "gate.age_us": _u32("us", "switch-off to the start of the sample, mod 2^32"),
+    "gate.since_start_us": _u32("us", "start of the cycle after the drive window opened, wraps"),
+    "gate.since_drive_us": _u32("us", "start of the last pulse's drive window to the switch-off, mod 2^32"),
     "gate.trusted": _flag("sample is used"),
     # stage 4
     "derivative.interval_us": _u32("us", "between the two samples, mod 2^32"),
@@ -205,6 +209,8 @@ _TRACE = {
     "pulses.product": Range(0, INT16_MAX * 2**14, "Q15 ticks", "magnitude of the command times the window"),
     "pulses.width": Range(0, 2**14, "ticks", "width before the shortest pulse"),
     "pulses.ticks": _sym(2**14, "ticks", "signed pulse"),
+    # commit
+    "commit.ticks": _i16("ticks", "pulses really to be made, whoever commits them"),
 }
 
 _ESTIMATE = {
@@ -219,7 +225,7 @@ _OUTPUTS = {
     "outputs.ticks": _sym(2**14, "ticks", "signed pulses of this cycle"),
     "outputs.mode": Range(3, 12, "MRD_MODE", "mode"),
     "outputs.status": Range(0, 2**23 - 1, "bits", "status word"),
-    "outputs.rate": _u16("rate count", "rate estimate; 65535: that or more"),
+    "outputs.rate": _u16("rate count", "rate estimate, saturated"),
     "outputs.rate_valid": _flag("there is a rate estimate"),
     "outputs.handover": _flag("settled"),
     "outputs.digest": _u32("digest", "of the configuration in use"),

@@ -1,4 +1,4 @@
-"""One cycle of the controller: integrity, path, estimate, modes, pulses, counters."""
+"""One cycle of the controller: integrity, command, path, estimate, transition, pulses, counters."""
 
 from __future__ import annotations
 
@@ -6,18 +6,20 @@ from pyharness.exact.constants import (
     MRD_MODE_BENCH,
     MRD_MODE_DAMPING,
     MRD_MODE_HOLD_OFF,
+    MRD_MODE_INHIBIT,
     MRD_MODE_SAFE,
     MRD_MODE_SETTLED,
     MRD_S_BLANKED,
     MRD_S_COMMAND_REFUSED,
     MRD_S_CONFIG_CORRUPT,
+    MRD_S_ESTIMATE_FELL_BACK,
     MRD_S_FELL_BACK,
     MRD_S_STATE_RESTARTED,
 )
 from pyharness.exact.estimate import estimate
 from pyharness.exact.fields import STATE, zeros
 from pyharness.exact.integrity import config_digest, state_digest
-from pyharness.exact.modes import NO_PULSE, change_mode
+from pyharness.exact.modes import COMMANDED, MODES, NO_PULSE, advance, obey
 from pyharness.exact.num import UINT16_MAX, Record, Vector, count, flag
 from pyharness.exact.path import path_commit, path_drive, path_reset, path_sense, zero_trace
 from pyharness.exact.ranges import check, check3
@@ -34,11 +36,33 @@ def reset() -> Record:
 
 
 def restart(state: Record) -> Record:
-    """What is left of a state that failed its digest: SAFE stays SAFE, and the restart is counted."""
+    """What is left of a state that failed its digest: what keeps coils off, and the restart is counted."""
     fresh = reset()
+    before, mode, inhibit_commanded = state["mode"], MRD_MODE_HOLD_OFF, 0
+    if before not in MODES or before in (MRD_MODE_SAFE, MRD_MODE_BENCH):
+        mode = MRD_MODE_SAFE
+    elif before == MRD_MODE_INHIBIT and state["inhibit_commanded"]:
+        mode, inhibit_commanded = MRD_MODE_INHIBIT, COMMANDED
     restarts = count(state["counters"]["restarts"], UINT16_MAX)
-    mode = MRD_MODE_SAFE if state["mode"] == MRD_MODE_SAFE else fresh["mode"]
-    return {**fresh, "mode": mode, "counters": {**fresh["counters"], "restarts": restarts}}
+    return {
+        **fresh,
+        "mode": mode,
+        "inhibit_commanded": inhibit_commanded,
+        "counters": {**fresh["counters"], "restarts": restarts},
+    }
+
+
+def command(state: Record, supervisor: Record, inputs: Record) -> tuple[Record, Vector, int]:
+    """The state after the command, the bench pulse, and the status bits."""
+    before = state["mode"]
+    mode, inhibit_commanded, pulse, raised = obey(before, state["inhibit_commanded"], supervisor, inputs)
+    path = state["path"]
+    if before == MRD_MODE_BENCH and mode != MRD_MODE_BENCH:
+        # What was measured while the norm was waived is not used.
+        path = {**path, "field_valid": 0, "filter_valid": 0}
+    dwell = state["dwell"] if mode == before else 0
+    new = {**state, "path": path, "dwell": dwell, "mode": mode, "inhibit_commanded": inhibit_commanded}
+    return new, pulse, raised
 
 
 def tally(counters: Record, trusted: int, status: int) -> Record:
@@ -57,10 +81,11 @@ def tally(counters: Record, trusted: int, status: int) -> Record:
 
 
 def _commit(
-    state: Record, config: Record, ticks: Vector, status: int, rate: int, rate_valid: int, trace: Record,
+    state: Record, config: Record, inputs: Record, ticks: Vector, status: int, rate: int, rate_valid: int,
+    trace: Record,
 ) -> tuple[Record, Record]:
     """The end of every cycle: the state takes the pulses and its digest, the outputs are put together."""
-    state = _seal({**state, "path": path_commit(state["path"], ticks)})
+    state = _seal({**state, "path": path_commit(state["path"], config["path"], inputs["path"], ticks)})
     mode = check("outputs.mode", state["mode"])
     return state, {
         "ticks": check3("outputs.ticks", ticks),
@@ -75,10 +100,10 @@ def _commit(
     }
 
 
-def _make_safe(state: Record, config: Record, status: int) -> tuple[Record, Record]:
+def _make_safe(state: Record, config: Record, inputs: Record, status: int) -> tuple[Record, Record]:
     """The cycle of a configuration that fails its digest: everything off, counters as they are."""
     safe = {**state, "path": path_reset(), "dwell": 0, "mode": MRD_MODE_SAFE, "inhibit_commanded": 0}
-    return _commit(safe, config, NO_PULSE, status, 0, 0, zero_trace())
+    return _commit(safe, config, inputs, NO_PULSE, status, 0, 0, zero_trace())
 
 
 def _check_inputs(inputs: Record) -> None:
@@ -99,8 +124,10 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
         status = 1 << MRD_S_STATE_RESTARTED
         state = restart(state)
     if config["digest"] != config_digest(config):
-        return _make_safe(state, config, status | 1 << MRD_S_CONFIG_CORRUPT)
+        return _make_safe(state, config, inputs, status | 1 << MRD_S_CONFIG_CORRUPT)
     path_config, supervisor = config["path"], config["supervisor"]
+    state, bench_pulse, raised = command(state, supervisor, inputs)
+    status |= raised
     waive_norm = flag(state["mode"] == MRD_MODE_BENCH)
     path, trace, raised = path_sense(state["path"], path_config, inputs["path"], waive_norm)
     status |= raised
@@ -108,9 +135,9 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     status |= raised
     trace, raised = path_drive(path_config, trace)
     status |= raised
-    mode, inhibit_commanded, dwell, bench_pulse, raised = change_mode(
-        state, supervisor, inputs, rate, rate_valid)
-    status |= raised
+    mode, dwell = advance(
+        state["mode"], state["inhibit_commanded"], state["dwell"], supervisor, inputs, rate, rate_valid,
+        status >> MRD_S_ESTIMATE_FELL_BACK & 1)
     ticks = NO_PULSE
     if mode == MRD_MODE_DAMPING:
         ticks = trace["pulses"]["ticks"]
@@ -120,7 +147,7 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
         "path": path,
         "dwell": check("state.dwell", dwell),
         "mode": mode,
-        "inhibit_commanded": inhibit_commanded,
+        "inhibit_commanded": state["inhibit_commanded"],
         "counters": tally(state["counters"], trace["gate"]["trusted"], status),
     }
-    return _commit(new, config, ticks, status, rate, rate_valid, trace)
+    return _commit(new, config, inputs, ticks, status, rate, rate_valid, trace)

@@ -40,7 +40,11 @@ def read_header(path: Path) -> Header:
 def _read(path: Path, content: bytes) -> Header:
     done = subprocess.run([compiler(), "-E", str(path)], capture_output=True, text=True, check=False)
     if done.returncode != 0:
-        raise BuildError(f"{path} cannot be preprocessed:\n{done.stderr.strip()}")
+        said = done.stderr.strip() or "and said nothing"
+        raise BuildError(
+            f"{path} cannot be preprocessed: '{compiler()} -E' ended with status {done.returncode}: {said}; if this is not a C compiler, "
+            "name another one in the environment variable CC"
+        )
     constants, texts = {}, {}
     for line in content.decode().splitlines():
         if found := _ENUMERATOR.match(line):

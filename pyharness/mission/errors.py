@@ -18,5 +18,7 @@ class MissionError(Exception):
         self.problems = list(problems)
 
     def __str__(self) -> str:
+        if len(self.problems) == 1 and self.problems[0].startswith(("is not", "cannot be read")):
+            return f"{self.source}: {self.problems[0]}"  # about the file as a whole
         count = "1 problem" if len(self.problems) == 1 else f"{len(self.problems)} problems"
         return "\n".join([f"{self.source}: {count}", *(f"  {problem}" for problem in self.problems)])

@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 import os
+import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import fields
@@ -77,7 +78,7 @@ def _parse(raw: bytes, source: str) -> dict[str, object]:
     except RecursionError:
         problem = "is not a mission file: nested too deeply"
     except ValueError as error:  # TOMLDecodeError, and what int() has against very long numbers
-        problem = f"is not valid TOML: {error}"
+        problem = f"is not valid TOML: {error}{_line_told(raw, str(error))}"
     raise MissionError(source, [problem])
 
 
@@ -124,3 +125,11 @@ def _table(table: type, values: dict[str, object], prefix: str, **made: object) 
 
 def _winding(values: dict[str, object], axis: str) -> Winding | None:
     return _table(Winding, values, f"coil.{axis}") if f"coil.{axis}.{WINDING[0]}" in values else None
+
+
+def _line_told(raw: bytes, message: str) -> str:
+    """The line that a message of tomllib is about, if it names one."""
+    found = re.search(r"at line (\d+)", message)
+    lines = raw.decode("utf-8").splitlines()
+    number = int(found[1]) if found else 0
+    return f": {shown(lines[number - 1].strip())}" if 0 < number <= len(lines) else ""

@@ -75,7 +75,8 @@ def elements_problems(lines: tuple[str, str], path: str) -> list[str]:
     satellite = Satrec.twoline2rv(*lines)
     error, _, _ = satellite.sgp4(satellite.jdsatepoch, satellite.jdsatepochF)
     if error:
-        return [f"{path}: cannot be propagated, sgp4 error {error}: {SGP4_ERRORS[error]}"]
+        reason = "it meets the Earth" if error == 6 else SGP4_ERRORS[error]
+        return [f"{path}: the orbit cannot be propagated: {reason} (SGP4 error {error})"]
     return _height_problems(elements_extent(lines), path)
 
 

@@ -204,7 +204,7 @@ _COIL = (
         "Rod with a magnetic core, or a winding without.", choices=("cored", "air")),
     Key("coil.*.dipole_a_m2", "number", "A m²",
         "Full dipole at the nominal voltage of all that is mounted; a pair is not doubled again.",
-        _positive(5), default=Depends("derived from the winding: required without one")),
+        _positive(50), default=Depends("derived from the winding: required without one")),
     Key("coil.*.turns", "integer", "",
         "Turns of one winding.", _between(1, 100_000), default=_OR_DIPOLE),
     Key("coil.*.area_m2", "number", "m²",

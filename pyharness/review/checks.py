@@ -12,9 +12,6 @@ from pyharness.review.wording import percent
 from pyharness.scenarios import settling_time_s
 from pyharness.vectors.verdict import Verdict
 
-DETUMBLED_DEG_S = 0.5
-"""True ‖ω‖ below which the tumble counts as stopped."""
-
 
 @dataclass(frozen=True)
 class Check:
@@ -46,8 +43,8 @@ def checks(
 def _detumbled(flown: Flown) -> Check:
     rate = flown.record.true_rate_deg_s
     return Check(
-        f"Detumbled, {flown.title}: true ‖ω‖ ends below {DETUMBLED_DEG_S:g} °/s",
-        bool(rate[-1] < DETUMBLED_DEG_S),
+        f"Detumbled, {flown.title}: true ‖ω‖ ends below {flown.slow_deg_s:g} °/s",
+        bool(rate[-1] < flown.slow_deg_s),
         f"from {rate[0]:.2f} to {rate[-1]:.3f} °/s in {flown.cycles * flown.scaling.period_s:.0f} s",
     )
 

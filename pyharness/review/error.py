@@ -96,9 +96,9 @@ def _error_against_bound(
 
 
 def _dropped(axes: Axes, flown: Flown, time: np.ndarray) -> None:
-    """A row of ticks per coil: pulses too short to be made, which are left out and so outside the bound."""
+    """A row of ticks per coil: pulses left out because they were too short, and so outside the bound."""
     for axis in range(3):
-        flags = flown.comparison.dropped[:, axis]
+        flags = flown.dropped[:, axis]
         starts = [a for a, _ in Bins(flown.cycles, 600).spans(flags)]
         axes.plot(
             time[starts],
@@ -115,4 +115,4 @@ def _dropped(axes: Axes, flown: Flown, time: np.ndarray) -> None:
     axes.set_ylim(2.6, -0.6)
     axes.grid(visible=False)
     shortest_ms = flown.scaling.timeline.shortest_pulse_us / 1e3
-    axes.set_title(f"Pulses dropped, shorter than {shortest_ms:g} ms (count on the right)")
+    axes.set_title(f"Pulses dropped while damping, shorter than {shortest_ms:g} ms (count on the right)")

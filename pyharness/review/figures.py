@@ -27,17 +27,28 @@ class Plot:
 
     name: str
     title: str
-    caption: str  # what to look for
+    caption: str  # what to look for; {estimate} stands for what to expect of the estimate on board
     draw: Callable[[Flown], Figure]
+
+    def caption_of(self, flown: Flown) -> str:
+        """The caption under the figure of this flight."""
+        return self.caption.format(estimate=_ESTIMATE[flown.scaling.mission.control.settle_by])
+
+
+_ESTIMATE = {
+    "gyro": "The estimate should stay around it.",
+    "field": "The estimate sees only the rate across the field: it may lie below the true rate while the "
+    "spin is along the field; the dwell is there for that.",
+}
+"""By control.settle_by."""
 
 
 PLOTS = (
     Plot(
         "rates",
         "Rates and field",
-        "The true rate should fall without rising for long, and the estimate should stay around it. The "
-        "rate along the field cannot be damped at that moment: it falls only as the field turns in the "
-        "body.",
+        "The true rate should fall without rising for long. {estimate} The rate along the field cannot be "
+        "damped at that moment: it falls only as the field turns in the body.",
         rates_figure,
     ),
     Plot(

@@ -89,6 +89,21 @@ class Flown:
         return np.where(outputs["rate_valid"] != 0, rate, np.nan)
 
     @cached_property
+    def dropped(self) -> np.ndarray:
+        """(cycles, 3) bool: a pulse was too short to be made and was left out, in mode damping."""
+        return self.bit_per_axis("SHORT_PULSE") & self.driven[:, None]
+
+    @property
+    def slow_deg_s(self) -> float:
+        """‖ω‖ below which the mission counts its tumble as stopped."""
+        return self.scaling.mission.control.settled_deg_s
+
+    @cached_property
+    def slow_at(self) -> int | None:
+        """First cycle with the true ‖ω‖ below `slow_deg_s`, if there is one."""
+        return first(self.record.true_rate_deg_s < self.slow_deg_s)
+
+    @cached_property
     def settled_at(self) -> int | None:
         """First cycle with the handover flag, if there is one."""
         return first(self.record.outputs["handover"] != 0)

@@ -12,6 +12,7 @@ from pyharness.plant.coils import Coils
 from pyharness.review.blanking import worst_stray_t_per_a_m2
 from pyharness.review.flown import Flown, first
 from pyharness.review.style import AXIS_STYLE, GREY, INK, house_style, legend_above, new_figure
+from pyharness.review.time_axis import title_of
 
 _WINDOWS = (
     ("blanking", "#efefef", ""),
@@ -41,9 +42,7 @@ def cycle_figure(flown: Flown, cycle: int | None = None) -> Figure:
     if not 0 <= cycle < flown.cycles:
         raise IndexError(f"cycle {cycle} was not flown, there are {flown.cycles}")
     with house_style():
-        figure = new_figure(
-            7.4, f"{flown.scaling.mission.name} · {flown.title}: cycle {cycle} under the magnifier"
-        )
+        figure = new_figure(7.4, title_of(flown, f"cycle {cycle} under the magnifier"))
         ribbon, current, stray = figure.subplots(3, 1, height_ratios=(0.3, 2.4, 3))
         timeline = flown.scaling.timeline
         idle_ms = (timeline.period_us - timeline.drive_end_us) / 1e3
@@ -181,7 +180,7 @@ def _stray(axes: Axes, flown: Flown, cycle: int, span: tuple[float, float]) -> N
         color=INK,
         linewidth=1.1,
         linestyle=(0, (4, 2)),
-        label=f"one magnetometer count, {count_nt:g} nT",
+        label=f"one magnetometer count, {count_nt:.3g} nT",
     )
     for axis, name in enumerate(AXES):
         kept = (

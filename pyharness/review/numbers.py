@@ -7,16 +7,16 @@ from collections.abc import Callable, Sequence
 import numpy as np
 
 from pyharness.mission import AXES
-from pyharness.review.checks import DETUMBLED_DEG_S
-from pyharness.review.flown import Flown, first
+from pyharness.review.flown import Flown
 from pyharness.review.wording import percent
 
 NEVER = "not in this flight"
 
 
 def numbers(flights: Sequence[Flown]) -> list[tuple[str, list[str]]]:
-    """(what, its value in each flight) in the order of the page."""
-    return [(label, [value(flown) for flown in flights]) for label, value in _ROWS]
+    """(what, its value in each flight) in the order of the page. All flights are of one mission."""
+    slow = f"{flights[0].slow_deg_s:g} °/s"
+    return [(label.format(slow=slow), [value(flown) for flown in flights]) for label, value in _ROWS]
 
 
 def _length(flown: Flown) -> str:
@@ -29,7 +29,7 @@ def _start(flown: Flown) -> str:
 
 
 def _slow(flown: Flown) -> str:
-    index = first(flown.record.true_rate_deg_s < DETUMBLED_DEG_S)
+    index = flown.slow_at
     return NEVER if index is None else _moment(flown, index)
 
 
@@ -71,7 +71,7 @@ def _headroom(flown: Flown) -> str:
 
 
 def _dropped(flown: Flown) -> str:
-    counts = (flown.bit_per_axis("SHORT_PULSE") & flown.driven[:, None]).sum(axis=0)
+    counts = flown.dropped.sum(axis=0)
     return ", ".join(f"{axis} {count}" for axis, count in zip(AXES, counts, strict=True))
 
 
@@ -105,7 +105,7 @@ def _used(flown: Flown) -> str:
 _ROWS: tuple[tuple[str, Callable[[Flown], str]], ...] = (
     ("Length of the flight", _length),
     ("True ‖ω‖ at the start (x, y, z)", _start),
-    (f"True ‖ω‖ first below {DETUMBLED_DEG_S:g} °/s", _slow),
+    ("True ‖ω‖ first below {slow}", _slow),
     ("Settled (handover flag)", _settled),
     ("True ‖ω‖ at the end", _final),
     ("Cycles saturated, of all", _saturated),

@@ -8,8 +8,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
 from pyharness.review.bins import Bins
-from pyharness.review.checks import DETUMBLED_DEG_S
-from pyharness.review.flown import Flown, first
+from pyharness.review.flown import Flown
 from pyharness.review.style import (
     BLUE,
     GREEN,
@@ -24,9 +23,10 @@ from pyharness.review.style import (
 from pyharness.review.time_axis import label_time, time_edges, time_of, title_of
 
 _MODE_COLOURS = {
-    "hold-off": "#e4e4e4", "damping": "#d3e6f2", "settled": "#cfe8de",
-    "safe": "#f6d5c4", "inhibit": "#f4e6c2", "bench": "#e8d3e2",
+    "hold-off": ("grey", "#d0d0d0"), "damping": ("blue", "#d3e6f2"), "settled": ("green", "#cfe8de"),
+    "safe": ("red", "#f6d5c4"), "inhibit": ("yellow", "#f4e6c2"), "bench": ("purple", "#e8d3e2"),
 }  # fmt: skip
+"""What a reader would call each colour, and the colour."""
 
 
 def rates_figure(flown: Flown) -> Figure:
@@ -44,25 +44,22 @@ def rates_figure(flown: Flown) -> Figure:
 
 def _modes(axes: Axes, flown: Flown) -> None:
     """A ribbon of the modes, with their names where there is room; the others are named above."""
-    edge = time_edges(flown)
+    edge, unit = time_edges(flown), time_of(flown)[1]
     narrow = {}
     for a, b, name in flown.mode_spans():
-        axes.axvspan(
-            edge[a], edge[b], facecolor=_MODE_COLOURS.get(name, "white"), edgecolor="white", linewidth=1.0
-        )
+        called, colour = _MODE_COLOURS.get(name, ("white", "white"))
+        axes.axvspan(edge[a], edge[b], facecolor=colour, edgecolor="white", linewidth=1.0)
         if edge[b] - edge[a] > 0.009 * len(name) * edge[-1]:
             axes.text((edge[a] + edge[b]) / 2, 0.5, name, ha="center", va="center", fontsize=8)
         else:
-            narrow[name] = f"{name} until {edge[b]:.1f}"
+            narrow[name] = f"{called}, unlabelled: {name}, until {edge[b]:.1f} {unit}"
     axes.set_yticks([])
     axes.set_ylim(0, 1)
     axes.grid(visible=False)
     axes.tick_params(axis="x", length=0)
     for spine in axes.spines.values():
         spine.set_visible(False)
-    axes.set_title(
-        "Mode" + (f" (without a name: {', '.join(narrow.values())} {time_of(flown)[1]})" if narrow else "")
-    )
+    axes.set_title("Mode" + (f" ({'; '.join(narrow.values())})" if narrow else ""))
 
 
 def _rate(axes: Axes, flown: Flown) -> None:
@@ -77,13 +74,10 @@ def _rate(axes: Axes, flown: Flown) -> None:
         )
     axes.plot(at, bins.mean(flown.record.true_rate_deg_s), color=INK, label="true ‖ω‖")
     control = flown.scaling.mission.control
-    thresholds = [
+    for value, label, colour, pattern in (
         (control.wake_deg_s, "wakes above", GREY, (0, (1, 1.5))),
         (control.settled_deg_s, "slow up to", GREEN, (0, (5, 2))),
-    ]
-    if control.settled_deg_s != DETUMBLED_DEG_S:
-        thresholds.append((DETUMBLED_DEG_S, "goal below", BLUE, (0, (8, 2, 1, 2))))
-    for value, label, colour, pattern in thresholds:
+    ):
         axes.axhline(value, color=colour, linewidth=1, linestyle=pattern, label=f"{label} {value:g} °/s")
     axes.set_yscale("log")
     axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5)))
@@ -92,22 +86,22 @@ def _rate(axes: Axes, flown: Flown) -> None:
     axes.set_ylabel("‖ω‖ [°/s]")
     _mark_moments(axes, flown)
     axes.set_title("Rate")
-    legend_above(axes, 5)
+    legend_above(axes, 4)
 
 
 def _mark_moments(axes: Axes, flown: Flown) -> None:
     """Vertical lines at the moments a reviewer asks for, with their times."""
     time, unit = time_of(flown)
-    slow = first(flown.record.true_rate_deg_s < DETUMBLED_DEG_S)
-    # Below the curve before it is slow, above it afterwards: there is nothing there.
+    # Below the curve before it is slow, above it afterwards: there is nothing there. Each line ends short of
+    # the other's label, whichever comes first and however close they are.
     moments = (
-        (slow, f"true ‖ω‖ first below {DETUMBLED_DEG_S:g} °/s", 0.07),
-        (flown.settled_at, "settled: handover", 0.93),
+        (flown.slow_at, f"true ‖ω‖ first below {flown.slow_deg_s:g} °/s", 0.07, (0.0, 0.86)),
+        (flown.settled_at, "settled: handover", 0.93, (0.14, 1.0)),
     )
-    for index, text, height in moments:
+    for index, text, height, reach in moments:
         if index is not None:
             late = time[index] > 0.3 * time[-1]
-            axes.axvline(time[index], color=INK, linewidth=0.8, linestyle=(0, (2, 2)))
+            axes.axvline(time[index], *reach, color=INK, linewidth=0.8, linestyle=(0, (2, 2)))
             axes.annotate(
                 f"{text}, {time[index]:.1f} {unit}",
                 (time[index], height),

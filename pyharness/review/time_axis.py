@@ -11,7 +11,9 @@ _MINUTES_FROM_S = 600.0
 
 
 def title_of(flown: Flown, what: str) -> str:
-    return f"{flown.scaling.mission.name} · {flown.title}: {what}"
+    """Mission and flight, each once: a single flight may bear its mission's name."""
+    names = dict.fromkeys((flown.scaling.mission.name, flown.title))
+    return f"{' · '.join(names)}: {what}"
 
 
 def time_of(flown: Flown) -> tuple[np.ndarray, str]:

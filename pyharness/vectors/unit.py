@@ -12,6 +12,9 @@ from typing import Any
 import numpy as np
 
 from pyharness.exact import constants as mrd
+from pyharness.exact.calibration import calibrate_sensor
+from pyharness.exact.law import cross_product, rate_law
+from pyharness.exact.num import norm_shift
 from pyharness.mission import load_mission
 from pyharness.scaling import Config, Scaling, scale
 
@@ -144,6 +147,10 @@ def _low_pass(inputs: np.ndarray, config: Config, seed: int) -> None:
     inputs["path"]["mag_valid"][135] = 0
 
 
+_FASTEST = 5600
+"""Raw rate near the full scale of the rate on board."""
+
+
 def _sweep(largest: int) -> list[int]:
     """Raw rates from 1 to the largest, each a little more than the last, with both signs."""
     values, value = [], 1
@@ -155,7 +162,7 @@ def _sweep(largest: int) -> list[int]:
 
 def _saturation(inputs: np.ndarray, config: Config, seed: int) -> None:
     """Demand on x, y, z alone and on all together, from nothing to far beyond the limit."""
-    sweep = _sweep(config["path"]["gyro"]["limit"])
+    sweep = _sweep(_FASTEST)
     row = 0
     for field_axis, rate_axis in ((2, 1), (0, 2), (1, 0)):  # ω × B on x, y, z
         for value in sweep:
@@ -169,8 +176,37 @@ def _saturation(inputs: np.ndarray, config: Config, seed: int) -> None:
         row += 1
 
 
+def _ties(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Demands whose scaled value lies exactly between two counts, where rounding half up, down or to even differ.
+
+    With the largest demand at 65534 of its leading 16 bits the factor is 32768, and every odd axis is such a tie.
+    """
+    path, row = config["path"], 0
+    for field_z in range(3000, 4400):
+        per_raw = max(_demand(path, (40, 30, field_z), (3, 4000, 5))) / 4000
+        near = round(65534 / per_raw)
+        for rate_y in range(near - 1, near + 2):
+            mag, gyro = (40, 30, field_z), (row + 3, rate_y, row + 5)
+            demand = _demand(path, mag, gyro)
+            leading, down = norm_shift(max(demand), 16)
+            if leading == 65534 and any((d >> down) % 2 for d in demand):
+                inputs["path"]["mag_raw"][row], inputs["path"]["gyro_raw"][row] = mag, gyro
+                row += 1
+                break
+        if row == len(inputs):
+            return
+    raise ValueError(f"ties: only {row} of {len(inputs)} found with this mission's gain")
+
+
+def _demand(path: Config, mag: tuple[int, ...], gyro: tuple[int, ...]) -> list[int]:
+    """Magnitudes of the rate law's demand for raw counts in range."""
+    cross = cross_product(calibrate_sensor(path["gyro"], gyro)[0], calibrate_sensor(path["mag"], mag)[0])
+    gain = path["rate_gain"]
+    return [abs(d) for d in rate_law(cross, (gain["mantissa"], gain["shift"]))]
+
+
 def _saturation_rows() -> int:
-    return 4 * len(_sweep(28800))
+    return 4 * len(_sweep(_FASTEST))
 
 
 def _pulses(inputs: np.ndarray, config: Config, seed: int) -> None:
@@ -240,7 +276,7 @@ def _random(inputs: np.ndarray, config: Config, seed: int) -> None:
     pick = lambda items: items[next(draw) % len(items)]  # noqa: E731
     for row in range(len(inputs)):
         cycle = inputs["path"]
-        for name, sensor, size in (("mag_raw", "mag", 2600), ("gyro_raw", "gyro", 12000)):
+        for name, sensor, size in (("mag_raw", "mag", 2600), ("gyro_raw", "gyro", 5500)):
             for axis in range(3):
                 wild = next(draw) % 97 == 0
                 cycle[name][row, axis] = pick(_corners(path[sensor]["limit"])) if wild else next(draw) % (2 * size) - size
@@ -283,8 +319,10 @@ UNIT = (
     Unit("low-pass", "stage 5: steps, ramps, single counts and a restart of the filter", 200, _low_pass,
          overrides={"control": {"low_pass_s": 3.0}}),
     Unit("saturation-per-axis", "stages 6 and 7: demand on each axis and all together, axis by axis", _saturation_rows(), _saturation,
-         overrides={"control": {"law": "rate", "saturation": "per-axis", "K_n_m_s": 4.0e-5}}),
+         overrides={"control": {"law": "rate", "saturation": "per-axis", "K_n_m_s": 2.0e-4}}),
     Unit("saturation-keep-direction", "stages 6 and 7: the same demands, keeping the direction", _saturation_rows(), _saturation,
+         overrides={"control": {"law": "rate", "K_n_m_s": 2.0e-4}}),
+    Unit("saturation-ties", "stage 7: scaled demands exactly between two counts", 24, _ties,
          overrides={"control": {"law": "rate", "K_n_m_s": 4.0e-5}}),
     Unit("pulses", "stage 8: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
     Unit("estimate", "stage 9: the rate from the field's turn, from nothing to its saturation", 120, _estimate,

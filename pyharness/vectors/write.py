@@ -79,6 +79,7 @@ def write_folder(folder: Path, files: dict[str, str], keep_digests: bool = False
     for name, text in files.items():
         path = folder / name
         if not path.is_file() or path.read_text(encoding="utf-8") != text:
+            path.parent.mkdir(parents=True, exist_ok=True)
             write_whole(path, text)
             changed.append(name)
     for tier in TIERS if keep_digests else (*TIERS, "digests"):

@@ -81,7 +81,7 @@ def test_every_problem_of_a_mission_is_told_at_once(capsys, mission):
     assert (status, out) == (2, "")
     assert err == (
         f"slackwater: {mission}: 2 problems\n"
-        "  coil.x.dipole_a_m2: 0 A m², must be in (0, 5]\n"
+        "  coil.x.dipole_a_m2: 0 A m², must be in (0, 50]\n"
         "  control.lwo_pass_s: unknown key, the nearest known key here is low_pass_s\n"
     )
 
@@ -135,7 +135,7 @@ def test_no_vectors_is_a_failure(capsys, tmp_path):
         ("derivative.c", "change * (int32_t)factor, 14)", "change * (int32_t)factor, 13)", "derivative"),
         ("low_pass.c", "+ MRD_BIT(14)) >> 8", "+ MRD_BIT(13)) >> 8", "low-pass"),
         ("law.c", "-(int32_t)trace->low_pass", "(int32_t)trace->low_pass", "law"),
-        ("saturation.c", "+ 32768u) >> 16", "+ 16384u) >> 16", "saturation"),
+        ("saturation.c", "+ 32768u) >> 16", "+ 32767u) >> 16", "saturation"),
         ("pulses.c", "config->window_ticks), 15)", "config->window_ticks), 14)", "pulses"),
         ("gate.c", "age_us >= config->blanking_us[i]", "age_us > config->blanking_us[i]", "gate"),
         ("estimate.c", "(uint32_t)change << 15", "(uint32_t)change << 14", "estimate"),
@@ -174,10 +174,13 @@ def test_vectors_compare(capsys, tmp_path):
         (("fly", "--seed", "-1", "--cycles", "5"), "--seed: -1, must be 0 or more"),
         (("fly", "--controller", "b", "--cycles", "5"), "no controller 'b', must be c, exact, truth or lib:PATH"),
         (("fly", "--sources", "/nowhere", "--cycles", "5"), "/nowhere: no controller sources here"),
-        (("fly", "--rate", "nan", "0", "0", "--cycles", "5"), "--rate: must be three finite numbers"),
-        (("scale", "/no/such.toml"), "/no/such.toml: 1 problem"),
-        (("trace", "--cycle", "-1"), "--cycle and --seed: must be 0 or more"),
-        (("fly", "--cycles", "5", "--csv", "/proc/no/flight.csv"), "/proc/no"),
+        (("fly", "--rate", "nan", "0", "0", "--cycles", "5"), "--rate: nan °/s, each must be in [-360, 360] °/s"),
+        (("scale", "/no/such.toml"), "/no/such.toml: cannot be read: No such file or directory"),
+        (("trace", "--cycle", "-1"), "--cycle: -1, must be in [0, 999999]"),
+        (("fly", "--cycles", "5", "--csv", "/no/flight.csv"), "--csv /no/flight.csv: there is no folder /no"),
+        (("review", "--out", "/proc/page.html"), "--out /proc/page.html: cannot be written: "),
+        (("fly", "--cycles", "5", "--rate", "1e9", "0", "0"), "--rate: 1e+09 °/s, each must be in [-360, 360] °/s"),
+        (("trace", "--cycle", "99999999"), "--cycle: 99999999, must be in [0, 999999]"),
     ],
 )
 def test_bad_input_is_told_without_a_traceback(capsys, argv, message):

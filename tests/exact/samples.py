@@ -116,7 +116,7 @@ def make_state(changes: Record | None = None) -> Record:
 
 
 def fly(config: Record, sequence: list[Record], state: Record | None = None) -> tuple[Record, list[Record]]:
-    """State and outputs after a sequence of inputs; by default from a start that knows the stamps of the coils."""
+    """State and outputs after a sequence of inputs; by default from a start that knows the coils' stamps."""
     state, outputs = state or make_state({"mode": MRD_MODE_HOLD_OFF}), []
     for inputs in sequence:
         state, out = step(state, config, inputs)

@@ -3,7 +3,7 @@
 from fractions import Fraction
 
 import pytest
-from exact.samples import SUPERVISOR, path_config
+from exact.samples import SUPERVISOR, path_config, path_inputs
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -245,9 +245,13 @@ def test_the_limit_fills_every_window():
         assert make_pulses(config, (32767, 0, -32767))[0]["ticks"] == (window, 0, window)
 
 
-def test_commit_keeps_the_pulses_that_are_made():
-    before = path_reset()
-    assert path_commit(before, (1, -2, 3)) == {**before, "ticks": (1, -2, 3)} and before["ticks"] == (0, 0, 0)
+@pytest.mark.parametrize(
+    ("cycle_start", "opens"), [(1_000_000, 1_045_000), (2**32 - 45_000, 0), (2**32 - 1, 44_999)])
+def test_commit_waits_for_the_switch_off_of_every_pulse_made(cycle_start, opens):
+    before = {**path_reset(), "drive_us": (5, 6, 7), "pending": (0, 1, 0)}
+    after = path_commit(before, path_config(), path_inputs(cycle_start_us=cycle_start), (1, 0, -32768))
+    assert after == {**before, "drive_us": (opens, 6, opens), "pending": (1, 1, 1)}
+    assert path_commit(before, path_config(), path_inputs(cycle_start_us=cycle_start), (0, 0, 0)) == before
 
 
 # ---- the laws as a whole: odd, and never against the damping ----

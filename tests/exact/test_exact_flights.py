@@ -32,6 +32,7 @@ from pyharness.exact.constants import (
     MRD_S_FELL_BACK,
     MRD_S_STATE_RESTARTED,
 )
+from pyharness.exact.modes import obey
 
 
 def elements(record, fields):
@@ -103,11 +104,14 @@ def test_a_step_is_the_path_with_the_modes_around_it(flight):
     config, sequence = flight
     state, path = reset(), path_reset()
     for inputs in sequence:
-        waive = state["mode"] == MRD_MODE_BENCH
+        mode, _, _, _ = obey(state["mode"], state["inhibit_commanded"], config["supervisor"], inputs)
+        waive = mode == MRD_MODE_BENCH
+        if state["mode"] == MRD_MODE_BENCH and not waive:
+            path = {**path, "field_valid": 0, "filter_valid": 0}
         path, trace, sensed = path_sense(path, config["path"], inputs["path"], waive)
         trace, driven = path_drive(config["path"], trace)
         state, (out,) = fly(config, [inputs], state)
-        path = path_commit(path, out["ticks"])
+        path = path_commit(path, config["path"], inputs["path"], out["ticks"])
         assert (out["trace"], state["path"]) == (trace, path)
         assert out["status"] & (sensed | driven) == sensed | driven
         assert out["ticks"] == trace["pulses"]["ticks"] or out["mode"] != MRD_MODE_DAMPING
@@ -159,6 +163,26 @@ def test_every_sequence_drawn_has_its_length_and_fits_its_types(data):
     for inputs in sequence:
         for field, element in elements(inputs, FIELDS["inputs"]):
             assert type(element) is int and field.lo <= element <= field.hi, field.name
+
+
+def test_sequences_reach_every_kind_of_stamp():
+    """A pulse is stamped, or waits with a stamp from before it or with none; a stamp grows old, and wraps."""
+    seen = Counter()
+    for seed in range(150):
+        source = Seeded(seed)
+        config, state = any_config(source), make_state()
+        for inputs in any_inputs(source, config, 20):
+            before = state["path"]
+            state, (out,) = fly(config, [inputs], state)
+            for i in range(3):
+                fresh = inputs["path"]["switch_off_us"][i] != before["switch_off_us"][i]
+                waits = before["pending"][i] and state["path"]["pending"][i] and not out["ticks"][i]
+                seen["stamped"] += bool(before["pending"][i]) and not waits
+                seen["stale"] += bool(waits) and fresh
+                seen["missing"] += bool(waits) and not fresh
+                seen["old"] += not fresh and bool(before["off_clear"][i] and state["path"]["off_clear"][i])
+                seen["wrapped"] += not fresh and out["trace"]["gate"]["age_us"][i] == 2**31 - 1
+    assert seen["stamped"] > 500 and len(seen) == 5 and min(seen.values()) > 10, seen
 
 
 def test_sequences_reach_the_deep_stages():

@@ -1,28 +1,37 @@
-"""Digests against published vectors and single flipped bits; what a failed digest leads to."""
+"""Digests: their step against published vectors, flipped bits; what a failed digest leads to."""
+
+from functools import reduce
+from itertools import combinations
 
 import pytest
 from exact.samples import fly, make_config, make_inputs, make_state, with_changes
 
 from pyharness.exact import FIELDS, config_digest, init, reset, state_digest, step
 from pyharness.exact.constants import (
+    MRD_COMMAND_BENCH,
+    MRD_COMMAND_RESUME,
     MRD_E_DIGEST,
+    MRD_MODE_BENCH,
     MRD_MODE_DAMPING,
     MRD_MODE_HOLD_OFF,
+    MRD_MODE_INHIBIT,
     MRD_MODE_SAFE,
+    MRD_MODE_SETTLED,
     MRD_S_CONFIG_CORRUPT,
     MRD_S_STATE_RESTARTED,
+    MRD_S_SWITCH_OFF_UNSTAMPED,
 )
-from pyharness.exact.integrity import fnv1a
+from pyharness.exact.integrity import BASIS, fnv1a
 from pyharness.exact.path import path_reset, zero_trace
 
 
-# Fowler, Noll and Vo, FNV-1a, 32 bits, test vectors of the authors' reference code (from memory). Fields of
-# 8 bits fold as bytes do.
+# Fowler, Noll and Vo, FNV-1a, 32 bits, test vectors of the authors' reference code (from memory): the
+# multiplying step alone, over bytes.
 @pytest.mark.parametrize(("text", "digest"), [
     (b"", 0x811C9DC5), (b"a", 0xE40C292C), (b"b", 0xE70C2DE5), (b"foobar", 0xBF9CF968),
 ])
-def test_fnv1a_against_its_published_vectors(text, digest):
-    assert fnv1a(text) == digest
+def test_the_step_against_the_published_vectors_of_fnv1a(text, digest):
+    assert reduce(fnv1a, text, BASIS) == digest
 
 
 def lookup(record, name):
@@ -31,18 +40,22 @@ def lookup(record, name):
     return record
 
 
+def with_bit_flipped(value, field, i, bit):
+    """The value of a field with one bit of its element i flipped."""
+    elements = value if field.count > 1 else (value,)
+    flipped = (elements[i] ^ 1 << bit) & (1 << field.bits) - 1
+    if field.signed and flipped >> field.bits - 1:
+        flipped -= 1 << field.bits
+    return (*elements[:i], flipped, *elements[i + 1:]) if field.count > 1 else flipped
+
+
 def flips(record, fields):
     """Every record that differs in one bit of one field, with the field's name."""
     for field in fields:
         value = lookup(record, field.name)
-        elements = value if field.count > 1 else (value,)
-        for i, element in enumerate(elements):
+        for i in range(field.count):
             for bit in range(field.bits):
-                flipped = (element ^ 1 << bit) & (1 << field.bits) - 1
-                if field.signed and flipped >> field.bits - 1:
-                    flipped -= 1 << field.bits
-                changed = (*elements[:i], flipped, *elements[i + 1:])
-                yield field.name, with_changes(record, {field.name: changed if field.count > 1 else flipped})
+                yield field.name, with_changes(record, {field.name: with_bit_flipped(value, field, i, bit)})
 
 
 def test_every_single_flipped_bit_changes_the_digest_of_a_configuration():
@@ -60,6 +73,24 @@ def test_every_single_flipped_bit_changes_the_digest_of_a_state():
         assert state_digest(changed) != state["digest"], name
 
 
+@pytest.mark.parametrize(("record", "fields", "digest", "pairs"), [
+    (make_config(), FIELDS["config"][:-1], config_digest, 13 * 12 // 2),
+    (make_state(), FIELDS["state"][:-1], state_digest, 11 * 10 // 2),
+])
+def test_bit_31_flipped_in_two_fields_changes_the_digest(record, fields, digest, pairs):
+    """The product alone would let such a pair cancel: bit 31 times an odd factor is bit 31."""
+    elements = [(field, i) for field in fields if field.bits == 32 for i in range(field.count)]
+    tried = 0
+    for pair in combinations(elements, 2):
+        changed = record
+        for field, i in pair:
+            flipped = with_bit_flipped(lookup(changed, field.name), field, i, 31)
+            changed = with_changes(changed, {field.name: flipped})
+        assert digest(changed) != record["digest"], pair
+        tried += 1
+    assert tried == pairs
+
+
 def test_the_digest_itself_is_left_out():
     assert config_digest(make_config()) == config_digest({**make_config(), "digest": 5})
     assert state_digest(reset()) == state_digest({**reset(), "digest": 5}) == reset()["digest"]
@@ -68,8 +99,13 @@ def test_the_digest_itself_is_left_out():
 def test_negative_fields_fold_as_unsigned_of_their_width():
     """A digest by the definition, field by field, for a state with one value of each sign and width."""
     state = with_changes(reset(), {"path.filter": (-1, 2, 0), "path.field": (-2, 0, 0)})
-    words = [2**32 - 1, 2, 0, 0, 0, 0, 0, 65534, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 3, 0, 0, 0, 0, 0, 0, 0]
-    assert state_digest(state) == fnv1a(words)
+    filtered, stamps, field, flags = [2**32 - 1, 2, 0], [0] * 7, [65534, 0, 0], [0] * 9
+    dwell, mode, inhibit_commanded, counters = 0, 3, 0, [0] * 6
+    h = 2166136261
+    for word in (*filtered, *stamps, *field, *flags, dwell, mode, inhibit_commanded, *counters):
+        h = (h ^ word) * 16777619 % 2**32
+        h = h ^ h // 2**15
+    assert state_digest(state) == h
 
 
 def test_reset_is_all_zero_but_the_mode():
@@ -80,24 +116,58 @@ def test_reset_is_all_zero_but_the_mode():
 
 # ---- a state that fails its digest ----
 
-@pytest.mark.parametrize(("mode", "after"),
-    [(MRD_MODE_DAMPING, MRD_MODE_DAMPING), (MRD_MODE_SAFE, MRD_MODE_SAFE), (77, MRD_MODE_DAMPING)])
+def corrupt(changes):
+    """A state with dotted changes and a wrong digest."""
+    sound = make_state(changes)
+    return {**sound, "digest": sound["digest"] ^ 1}
+
+
+# Mode and inhibit_commanded before a restart; mode after a step before the separation time, and after it.
+RESTARTS = [
+    ((MRD_MODE_HOLD_OFF, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
+    ((MRD_MODE_DAMPING, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
+    ((MRD_MODE_DAMPING, 1), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
+    ((MRD_MODE_SETTLED, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
+    ((MRD_MODE_INHIBIT, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
+    *[((MRD_MODE_INHIBIT, inhibited), (MRD_MODE_INHIBIT, MRD_MODE_INHIBIT)) for inhibited in (65535, 65534, 32767, 1)],
+    *[((mode, inhibited), (MRD_MODE_SAFE, MRD_MODE_SAFE))
+      for mode in (MRD_MODE_SAFE, MRD_MODE_BENCH, 0, 1, 2, 4, 7, 11, 14, 77, 65535) for inhibited in (0, 1)],
+]
+
+
+@pytest.mark.parametrize(("before", "after"), RESTARTS)
+def test_a_restart_keeps_of_the_mode_what_keeps_coils_off(before, after):
+    mode, inhibited = before
+    for separation_s, expected in zip((599, 600), after):
+        inputs = make_inputs(changes={"separation_s": separation_s})
+        state, out = step(corrupt({"mode": mode, "inhibit_commanded": inhibited}), make_config(), inputs)
+        assert out["status"] >> MRD_S_STATE_RESTARTED & 1 and out["mode"] == state["mode"] == expected
+        assert state["inhibit_commanded"] == 65535 * (expected == MRD_MODE_INHIBIT)
+        inputs = {**inputs, "low_power": 1}
+        state, out = step(corrupt({"mode": mode, "inhibit_commanded": inhibited}), make_config(), inputs)
+        assert out["mode"] == (MRD_MODE_SAFE if expected == MRD_MODE_SAFE else MRD_MODE_INHIBIT)
+        assert state["inhibit_commanded"] == 65535 * (expected == MRD_MODE_INHIBIT)
+
+
+def test_a_command_meets_the_restarted_mode():
+    armed = make_inputs(changes={"command": MRD_COMMAND_BENCH, "command_ticks": 5})
+    state, out = step(corrupt({"mode": MRD_MODE_BENCH}), make_config(), armed)
+    assert (out["mode"], out["ticks"], state["counters"]["refused"]) == (MRD_MODE_SAFE, (0, 0, 0), 1)
+    resumed = make_inputs(changes={"command": MRD_COMMAND_RESUME})
+    assert step(corrupt({"mode": 77}), make_config(), resumed)[1]["mode"] == MRD_MODE_DAMPING
+
+
 @pytest.mark.parametrize(("restarts", "counted"), [(0, 1), (65534, 65535), (65535, 65535)])
-def test_a_corrupt_state_is_restarted(mode, after, restarts, counted):
-    sound = make_state({"mode": mode, "counters.restarts": restarts, "counters.trusted": 9, "dwell": 2})
-    state, out = step({**sound, "digest": sound["digest"] ^ 1}, make_config(), make_inputs())
-    assert out["status"] >> MRD_S_STATE_RESTARTED & 1 and out["mode"] == after
+def test_a_corrupt_state_is_restarted(restarts, counted):
+    state, out = step(
+        corrupt({"counters.restarts": restarts, "counters.trusted": 9, "dwell": 2, "path.pending": (1, 1, 1),
+            "path.drive_us": (9, 9, 9), "path.field_valid": 1}), make_config(), make_inputs())
+    assert (state["path"]["pending"], state["path"]["drive_us"]) == ((0, 0, 0), (0, 0, 0))
+    assert not out["status"] >> MRD_S_SWITCH_OFF_UNSTAMPED & 1
     assert out["counters"] == state["counters"]
     assert state["counters"] == {"trusted": 0, "rejected": 1, "blanked": 1, "fell_back": 0, "refused": 0,
         "restarts": counted}
     assert state["digest"] == state_digest(state) and state["dwell"] == 0
-
-
-@pytest.mark.parametrize(("separation_s", "mode"), [(599, MRD_MODE_HOLD_OFF), (600, MRD_MODE_DAMPING)])
-def test_hold_off_is_not_begun_again_after_a_restart(separation_s, mode):
-    _, out = step({**make_state(), "digest": 1}, make_config(),
-        make_inputs(changes={"separation_s": separation_s}))
-    assert out["mode"] == mode
 
 
 def test_any_single_flipped_bit_of_a_state_is_noticed():
@@ -110,12 +180,13 @@ def test_any_single_flipped_bit_of_a_state_is_noticed():
 
 # ---- a configuration that fails its digest ----
 
-def test_a_corrupt_configuration_leads_to_safe():
+@pytest.mark.parametrize("command", [MRD_COMMAND_RESUME, MRD_COMMAND_BENCH, 99])
+def test_a_corrupt_configuration_leads_to_safe_whatever_is_commanded(command):
     config = make_config()
     state, _ = fly(config, [make_inputs(i, {"path.mag_raw": (10_000 + 50 * i, 0, 0)}) for i in range(3)])
-    corrupt = with_changes(config, {"path.filter_gain": 1})
-    assert init(corrupt) == MRD_E_DIGEST
-    after, out = step(state, corrupt, make_inputs(3, {"command": 4}))
+    changed = with_changes(config, {"path.filter_gain": 128})
+    assert init(changed) == MRD_E_DIGEST
+    after, out = step(state, changed, make_inputs(3, {"command": command}))
     counters = state["counters"]
     assert after["path"] == path_reset()
     assert (after["mode"], after["dwell"], after["inhibit_commanded"]) == (MRD_MODE_SAFE, 0, 0)

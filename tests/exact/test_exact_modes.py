@@ -3,7 +3,7 @@
 from itertools import product
 
 import pytest
-from exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state
+from exact.samples import FIELD, SUPERVISOR, fly, make_config, make_inputs, make_state, with_changes
 
 from pyharness.exact.constants import (
     MRD_COMMAND_ARM,
@@ -19,8 +19,11 @@ from pyharness.exact.constants import (
     MRD_MODE_SAFE,
     MRD_MODE_SETTLED,
     MRD_S_COMMAND_REFUSED,
+    MRD_S_ESTIMATE_FELL_BACK,
     MRD_S_FIELD_IMPLAUSIBLE,
     MRD_S_NO_PREVIOUS,
+    MRD_SETTLE_BY_FIELD,
+    MRD_SETTLE_BY_GYRO,
 )
 from pyharness.exact.modes import MODES, advance
 
@@ -73,16 +76,17 @@ def test_mode_table(mode, command):
         assert out["mode"] == state["mode"] == (unaided if refused else expected)
         assert out["status"] == 1 << MRD_S_NO_PREVIOUS | refused << MRD_S_COMMAND_REFUSED
         assert state["counters"]["refused"] == refused
-        assert state["inhibit_commanded"] == (command == MRD_COMMAND_INHIBIT and not refused)
+        assert state["inhibit_commanded"] == 65535 * (command == MRD_COMMAND_INHIBIT and not refused)
         assert out["ticks"] == ((0, -7, 0) if command == MRD_COMMAND_BENCH and not refused else (0, 0, 0))
         assert out["handover"] == (out["mode"] == SETTLED)
-        assert state["dwell"] == (1 if state["mode"] == mode else 0)
+        resumed = command == MRD_COMMAND_RESUME and not refused  # through HOLD_OFF, even back to INHIBIT
+        assert state["dwell"] == (1 if state["mode"] == mode and not resumed else 0)
 
 
 @pytest.mark.parametrize("command", range(7))
 def test_a_commanded_inhibit_stays_until_it_is_lifted(command):
     for low_power, separation_s in SITUATIONS:
-        state, out = one({"mode": INHIBIT, "inhibit_commanded": 1}, {
+        state, out = one({"mode": INHIBIT, "inhibit_commanded": 65535}, {
             "low_power": low_power, "separation_s": separation_s, "command": command, **PULSE})
         if command == MRD_COMMAND_SAFE:
             expected = SAFE
@@ -91,7 +95,7 @@ def test_a_commanded_inhibit_stays_until_it_is_lifted(command):
         else:
             expected = INHIBIT
         assert out["mode"] == expected
-        assert state["inhibit_commanded"] == (command not in (MRD_COMMAND_SAFE, MRD_COMMAND_RESUME))
+        assert state["inhibit_commanded"] == 65535 * (command not in (MRD_COMMAND_SAFE, MRD_COMMAND_RESUME))
 
 
 @pytest.mark.parametrize("mode", [0, 1, 2, 4, 7, 11, 13, 65535])
@@ -122,7 +126,8 @@ def test_arming_needs_the_key(key, mode):
 def test_limits_of_a_bench_pulse(changes, ticks):
     state, out = one({"mode": BENCH}, {"command": MRD_COMMAND_BENCH, **changes})
     assert out["mode"] == BENCH
-    assert out["ticks"] == state["path"]["ticks"] == (ticks or (0, 0, 0))
+    assert out["ticks"] == (ticks or (0, 0, 0))
+    assert state["path"]["pending"] == tuple(int(n != 0) for n in out["ticks"])
     assert out["status"] >> MRD_S_COMMAND_REFUSED & 1 == (ticks is None)
 
 
@@ -140,9 +145,46 @@ def test_on_the_bench_the_norm_is_waived_and_no_pulse_of_the_law_leaves():
         assert [out["trace"]["gate"]["trusted"] for out in outputs] == [trusted] * 2
         assert all(out["status"] >> MRD_S_FIELD_IMPLAUSIBLE & 1 for out in outputs)
         assert any(outputs[1]["trace"]["pulses"]["ticks"]) == trusted and outputs[1]["ticks"] == (0, 0, 0)
-    # the norm is waived by the mode before the command
-    _, out = one({"mode": SAFE}, {"command": MRD_COMMAND_ARM, "command_key": 4242}, config)
-    assert (out["mode"], out["trace"]["gate"]["trusted"]) == (BENCH, 0)
+
+
+@pytest.mark.parametrize(("mode", "command", "key", "trusted"), [
+    (SAFE, MRD_COMMAND_ARM, 4242, 1), (SAFE, MRD_COMMAND_ARM, 4241, 0), (BENCH, MRD_COMMAND_NONE, 0, 1),
+    (BENCH, MRD_COMMAND_INHIBIT, 0, 1), (BENCH, MRD_COMMAND_SAFE, 0, 0), (BENCH, MRD_COMMAND_RESUME, 0, 0),
+])
+def test_the_norm_is_waived_by_the_mode_that_the_command_left(mode, command, key, trusted):
+    _, out = one({"mode": mode}, {"command": command, "command_key": key}, {"path.norm_max_sq": 32768})
+    assert out["trace"]["gate"]["trusted"] == trusted == (out["mode"] == BENCH)
+
+
+@pytest.mark.parametrize("command", [MRD_COMMAND_RESUME, MRD_COMMAND_SAFE])
+def test_leaving_the_bench_forgets_the_field_and_the_filter(command):
+    sequence = [make_inputs(i, {"path.mag_raw": (10_000 + 100 * i, -5_000, 2_000)}) for i in range(5)]
+    state, outputs = fly(make_config(), sequence[:2], make_state({"mode": BENCH}))
+    assert outputs[1]["trace"]["derivative"]["valid"] and state["path"]["filter_valid"]
+    left = with_changes(sequence[2], {"command": command})
+    state, (out,) = fly(make_config(), [left], state)
+    assert out["status"] == 1 << MRD_S_NO_PREVIOUS and out["ticks"] == (0, 0, 0)
+    assert (out["trace"]["derivative"]["valid"], state["path"]["filter_valid"]) == (0, 0)
+    assert state["path"]["field_valid"] == 1  # by the sample of this cycle
+    _, (out,) = fly(make_config(), [sequence[3]], state)
+    assert out["trace"]["law"]["active"] and any(out["ticks"]) == (command == MRD_COMMAND_RESUME)
+
+
+def test_staying_on_the_bench_keeps_the_field():
+    sequence = [make_inputs(1), make_inputs(2, {"command": MRD_COMMAND_INHIBIT}),
+        make_inputs(3, {"command": MRD_COMMAND_BENCH, **PULSE})]
+    _, outputs = fly(make_config(), sequence, make_state({"mode": BENCH}))
+    assert [out["trace"]["derivative"]["valid"] for out in outputs] == [0, 1, 1]
+
+
+def test_resuming_with_an_implausible_sample_makes_no_pulse():
+    config = make_config({"path.norm_max_sq": 130_000_000})  # the sample's field has 129 000 000
+    turned = {"path.mag_raw": (10_100, -5_000, 2_000)}
+    state, _ = fly(config, [make_inputs(1)], make_state({"mode": BENCH}))
+    state, (out,) = fly(config, [make_inputs(2, {**turned, "command": MRD_COMMAND_RESUME})], state)
+    assert (out["mode"], out["ticks"], out["trace"]["gate"]["trusted"]) == (DAMPING, (0, 0, 0), 0)
+    assert out["status"] == 1 << MRD_S_FIELD_IMPLAUSIBLE and state["path"]["field_valid"] == 0
+    assert out["trace"]["law"]["active"] == out["trace"]["derivative"]["valid"] == 0
 
 
 @pytest.mark.parametrize("mode", MODES)
@@ -159,13 +201,13 @@ def test_pulses_of_the_law_leave_in_damping_only(mode):
 # ---- dwell ----
 
 def walk(mode, rates, dwell=0, **supervisor):
-    """Mode and dwell after each valid (or None: invalid) rate."""
+    """Mode and dwell after each rate: a valid one, None for none, or (rate,) for one that fell back."""
     passed = []
     for rate in rates:
-        after, dwell = advance(
-            mode, 0, dwell, {**SUPERVISOR, **supervisor}, make_inputs(), rate or 0, rate is not None)
-        dwell = dwell if after == mode else 0
-        mode = after
+        fell_back, valid = isinstance(rate, tuple), rate is not None
+        value = rate[0] if fell_back else rate or 0
+        mode, dwell = advance(
+            mode, 0, dwell, {**SUPERVISOR, **supervisor}, make_inputs(), value, valid, fell_back)
         passed.append((mode, dwell))
     return passed
 
@@ -181,6 +223,26 @@ def test_waking_counts_fast_cycles():
     assert walk(SETTLED, (201, 201)) == [(SETTLED, 1), (DAMPING, 0)]
     assert walk(SETTLED, (201, 200, 201)) == [(SETTLED, 1), (SETTLED, 0), (SETTLED, 1)]
     assert walk(SETTLED, (201, None, 65535)) == [(SETTLED, 1), (SETTLED, 1), (DAMPING, 0)]
+
+
+def test_an_estimate_that_fell_back_ends_a_dwell_but_does_not_lengthen_it():
+    assert walk(DAMPING, (100, 100, (0,), 100)) == [(DAMPING, 1), (DAMPING, 2), (DAMPING, 2), (SETTLED, 0)]
+    assert walk(DAMPING, (100, (100,), (101,))) == [(DAMPING, 1), (DAMPING, 1), (DAMPING, 0)]
+    assert walk(DAMPING, ((0,),), settle_dwell=1) == [(DAMPING, 0)]
+    assert walk(SETTLED, ((201,), (201,))) == [(SETTLED, 1), (DAMPING, 0)]
+    assert walk(SETTLED, (201, (200,), 201)) == [(SETTLED, 1), (SETTLED, 0), (SETTLED, 1)]
+
+
+@pytest.mark.parametrize(("settle_by", "gyro_valid", "mode"), [
+    (MRD_SETTLE_BY_GYRO, 1, SETTLED), (MRD_SETTLE_BY_GYRO, 0, DAMPING), (MRD_SETTLE_BY_FIELD, 0, SETTLED),
+])
+def test_settling_by_the_gyro_waits_for_the_gyro(settle_by, gyro_valid, mode):
+    config = make_config({"supervisor.settle_by": settle_by, "supervisor.settle_dwell": 1})
+    state, _ = fly(config, [make_inputs(1, {"separation_s": 599})], make_state({"mode": HOLD_OFF}))
+    state, _ = fly(config, [make_inputs(2, {"path.gyro_valid": 0})], state)
+    _, (out,) = fly(config, [make_inputs(3, {"path.gyro_valid": gyro_valid})], state)
+    assert (out["mode"], out["rate"], out["rate_valid"]) == (mode, 0, 1)
+    assert out["status"] >> MRD_S_ESTIMATE_FELL_BACK & 1 == (mode == DAMPING)
 
 
 def test_dwells_of_one_cycle_and_of_the_whole_counter():

@@ -3,7 +3,7 @@
 import pytest
 from exact.samples import FIELD, SENSOR, path_config, path_inputs, path_state
 
-from pyharness.exact import path_reset, path_sense
+from pyharness.exact import path_commit, path_reset, path_sense
 from pyharness.exact.calibration import calibrate_sensor
 from pyharness.exact.constants import (
     MRD_S_BLANKED,
@@ -158,21 +158,143 @@ def test_an_unchanged_stamp_that_was_blanked_ages_on():
     assert trace["gate"] == {"age_us": (101_000,) * 3, "trusted": 1}
 
 
+def driven(ticks=(1, -1, 1), cycle=1):
+    """A path that sensed in this cycle, and whose coils are then driven from 45 ms on; and what it saw."""
+    inputs = path_inputs(cycle)
+    state, _, _ = sense(inputs=inputs)
+    return path_commit(state, path_config(), inputs, ticks), inputs
+
+
 @pytest.mark.parametrize("coil", range(3))
 def test_a_driven_coil_needs_a_new_stamp(coil):
-    first = path_inputs()
-    state, _, _ = sense(inputs=first)
-    state = {**state, "ticks": tuple(-1 if i == coil else 0 for i in range(3))}
+    state, first = driven(tuple(-1 if i == coil else 0 for i in range(3)))
     after, trace, status = sense(state, inputs=path_inputs(2, switch_off_us=first["switch_off_us"]))
     assert raised(status, MRD_S_SWITCH_OFF_UNSTAMPED, MRD_S_BLANKED) and trace["gate"]["trusted"] == 0
     assert after["off_clear"] == tuple(0 if i == coil else 1 for i in range(3))
-    assert trace["gate"]["age_us"][coil] == 148_000
-    _, trace, status = sense(state, inputs=path_inputs(2))
+    assert after["pending"] == tuple(1 if i == coil else 0 for i in range(3))
+    assert trace["gate"]["age_us"] == (148_000,) * 3
+    after, trace, _ = sense(state, inputs=path_inputs(2))
+    assert trace["gate"]["trusted"] == 1 and after["pending"] == (0, 0, 0) and after["off_clear"] == (1, 1, 1)
+
+
+@pytest.mark.parametrize(("after_opening", "stamped"), [
+    (-50_000, False), (-1, False), (0, True), (1, True), (2**31 - 1, True), (2**31, False),
+])
+@pytest.mark.parametrize("cycle", [1, 42_939])
+def test_a_stamp_from_before_the_pulse_does_not_clear_it(after_opening, stamped, cycle):
+    """On both sides of the window's opening and of half the wrap; once it opens 22 ms before the wrap."""
+    state, first = driven(cycle=cycle)
+    opens = state["drive_us"][0]
+    assert cycle == 1 or opens == 2**32 - 22_296
+    stamps = ((opens + after_opening) % 2**32,) * 3
+    state, trace, status = sense(state, inputs=path_inputs(cycle + 1, switch_off_us=stamps))
+    assert stamps != first["switch_off_us"] and status >> MRD_S_SWITCH_OFF_UNSTAMPED & 1 == (not stamped)
+    assert state["pending"] == (int(not stamped),) * 3
+    in_future = after_opening > 1
+    assert trace["gate"]["trusted"] == (stamped and not in_future)
+
+
+def test_an_unchanged_stamp_does_not_clear_a_pulse_even_from_after_its_window():
+    ahead = path_inputs(1, switch_off_us=(1_150_000,) * 3)
+    state, _, _ = sense(inputs=ahead)
+    state = path_commit(state, path_config(), ahead, (1, 1, 1))
+    assert state["drive_us"] == (1_145_000,) * 3
+    state, _, status = sense(state, inputs=path_inputs(2, switch_off_us=ahead["switch_off_us"]))
+    assert raised(status, MRD_S_SWITCH_OFF_UNSTAMPED, MRD_S_BLANKED) and state["pending"] == (1, 1, 1)
+
+
+def test_frozen_stamps_block_until_one_is_refreshed():
+    state, first = driven((0, 1, 0))
+    for cycle in (2, 3, 40, 30_000, 60_000):  # beyond half the wrap, and beyond the wrap
+        state, trace, status = sense(state, inputs=path_inputs(cycle, switch_off_us=first["switch_off_us"]))
+        assert raised(status, MRD_S_SWITCH_OFF_UNSTAMPED, MRD_S_BLANKED) and trace["gate"]["trusted"] == 0
+        assert state["pending"] == (0, 1, 0)
+    state, first = driven((0, 1, 0))
+    for cycle in range(2, 12):  # stale ones that move on, but never past the opening of the window
+        stamps = tuple(stamp + cycle for stamp in first["switch_off_us"])
+        state, _, status = sense(state, inputs=path_inputs(cycle, switch_off_us=stamps))
+        assert status >> MRD_S_SWITCH_OFF_UNSTAMPED & 1 and state["off_clear"] == (1, 0, 1)
+    state, trace, status = sense(state, inputs=path_inputs(12))
+    assert raised(status, MRD_S_NO_PREVIOUS) and trace["gate"]["trusted"] == 1
+    assert state["pending"] == (0, 0, 0)
+
+
+def test_a_stamp_refreshed_without_a_pulse_counts_as_a_switch_off():
+    state, _, _ = sense()
+    young = path_inputs(2)["sample_us"] - 2_000 - 42_999
+    state, _, status = sense(state, inputs=path_inputs(2, switch_off_us=(young,) * 3))
+    assert raised(status, MRD_S_BLANKED) and state["off_clear"] == (1, 1, 0)  # 43 ms are needed on z alone
+    _, trace, _ = sense(state, inputs=path_inputs(3))
     assert trace["gate"]["trusted"] == 1
 
 
+def test_a_pulse_stamped_too_late_for_its_sample_is_blanked_but_no_longer_pending():
+    state, _ = driven()
+    late = path_inputs(2)["sample_us"] - 3_000
+    state, _, status = sense(state, inputs=path_inputs(2, switch_off_us=(late,) * 3))
+    assert raised(status, MRD_S_BLANKED) and (state["pending"], state["off_clear"]) == ((0, 0, 0), (0, 0, 0))
+    _, trace, _ = sense(state, inputs=path_inputs(3, switch_off_us=(late,) * 3))
+    assert trace["gate"]["trusted"] == 1
+
+
+def test_a_pulse_is_stamped_also_while_nothing_is_known_of_the_coils():
+    state = path_state(off_known=0, pending=(1, 1, 1), drive_us=(1_045_000, 1_090_000, 1_090_001))
+    state, _, status = sense(state, inputs=path_inputs(1, switch_off_us=(1_090_000,) * 3))
+    assert raised(status, MRD_S_BLANKED)
+    assert (state["pending"], state["off_clear"], state["off_known"]) == ((0, 0, 1), (0, 0, 0), 1)
+
+
+def test_a_pending_pulse_is_told_also_without_a_sample():
+    state, first = driven()
+    state, _, status = sense(state, inputs=path_inputs(2, mag_valid=0, switch_off_us=first["switch_off_us"]))
+    assert raised(status, MRD_S_SAMPLE_MISSING, MRD_S_SWITCH_OFF_UNSTAMPED) and state["pending"] == (1, 1, 1)
+    state, _, status = sense(state, inputs=path_inputs(3, mag_valid=0))
+    assert raised(status, MRD_S_SAMPLE_MISSING) and state["pending"] == (0, 0, 0)
+
+
+# ---- stage 3: what a switch-off is known to be ----
+
+@pytest.mark.parametrize(("changes", "latched"), [
+    ({}, 1),
+    ({"mag_raw": (32767, 0, 0)}, 1),  # the time of the sample is right, its counts are not
+    ({"sample_us": 1_140_501}, 0),
+    ({"mag_valid": 0, "sample_us": 0}, 0),
+])
+def test_only_a_sample_in_time_shows_that_a_switch_off_is_old(changes, latched):
+    stamps = (1_000_000,) * 3
+    state, trace, _ = sense(inputs=path_inputs(1, switch_off_us=stamps, **changes))
+    assert min(trace["gate"]["age_us"]) >= 100_000 and state["off_clear"] == (latched,) * 3
+    half_wrap_later = path_inputs(21_500, switch_off_us=stamps)
+    _, trace, status = sense(state, inputs=half_wrap_later)
+    assert trace["gate"]["trusted"] == latched and status >> MRD_S_BLANKED & 1 == (not latched)
+
+
+@pytest.mark.parametrize("changes", [{"sample_us": 1_000_000 + 2_000 + 39_999}, {"mag_valid": 0}])
+def test_a_switch_off_once_shown_to_be_old_stays_so_until_it_changes(changes):
+    state, first = driven((0, 0, 0))
+    again = path_inputs(2, **{"switch_off_us": first["switch_off_us"], **changes})
+    kept, _, _ = sense(state, inputs=again)
+    assert kept["off_clear"] == (1, 1, 1)
+    fresh, _, _ = sense(state, inputs={**again, "switch_off_us": (1_001_000,) * 3})
+    assert fresh["off_clear"] == (0, 0, 0)
+
+
+@pytest.mark.parametrize(("age", "shown"), [
+    (2**31 - 1, 2**31 - 1), (2**31, 2**31 - 1), (2**32 - 1, 2**31 - 1), (0, 0), (39_999, 39_999),
+    (43_000, 43_000),
+])
+def test_the_age_of_a_latched_coil_wraps(age, shown):
+    """Once old, half the wrap or more is that of a switch-off long ago; after the wrap it counts from 0."""
+    inputs = path_inputs()
+    stamps = ((inputs["sample_us"] - 2_000 - age) % 2**32,) * 3
+    state = path_state(switch_off_us=stamps, off_clear=(1, 1, 1))
+    state, trace, _ = sense(state, inputs={**inputs, "switch_off_us": stamps})
+    assert trace["gate"] == {"age_us": (shown,) * 3, "trusted": int(shown >= 43_000)}
+    assert state["off_clear"] == (1, 1, 1)
+
+
 def test_without_known_stamps_no_sample_is_trusted():
-    """After a reset the coils may have been driven in the cycle before: one cycle is let pass, whatever the stamps say."""
+    """After a reset the coils may have been driven in the cycle before: one cycle is let pass."""
     after, trace, status = sense(path_reset())
     assert trace["gate"]["trusted"] == 0 and after["off_known"] == 1 and after["off_clear"] == (0, 0, 0)
     assert raised(status, MRD_S_BLANKED)
@@ -293,7 +415,7 @@ def test_low_pass_rounds_half_away_and_reaches_its_target_at_full_gain():
 
 
 def test_the_filter_starts_anew_without_a_derivative():
-    config = path_config(filter_gain=1)
+    config = path_config(filter_gain=128)
     state, _, _ = sense(None, config, path_inputs(0))
     state, _, _ = sense(state, config, path_inputs(1, mag_raw=(10_100, -5_000, 2_000)))
     assert state["filter_valid"] == 1

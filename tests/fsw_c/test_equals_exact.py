@@ -89,15 +89,16 @@ def test_the_path_alone_equals_exact(library, seed):
     for row, inputs in enumerate(any_inputs(source, whole, 50)):
         record = to_record(interface.inputs["path"], inputs["path"]).reshape(1)
         waive = row % 7 == 0
-        status = lib.mrd_path_sense(state_pointer, c_config, ffi.from_buffer("mrd_path_inputs[]", record), waive, trace_pointer)
+        c_inputs = ffi.from_buffer("mrd_path_inputs[]", record)
+        status = lib.mrd_path_sense(state_pointer, c_config, c_inputs, waive, trace_pointer)
         status |= lib.mrd_path_drive(c_config, trace_pointer)
         state, trace, sensed = exact.path_sense(state, config, inputs["path"], waive)
         trace, drove = exact.path_drive(config, trace)
         assert status == sensed | drove
         assert to_dict(c_trace[0]) == trace, f"row {row}"
         ticks = trace["pulses"]["ticks"] if row % 3 else (0, 0, 0)
-        lib.mrd_path_commit(state_pointer, ffi.new("int16_t[3]", list(ticks)))
-        state = exact.path_commit(state, ticks)
+        lib.mrd_path_commit(state_pointer, c_config, c_inputs, ffi.new("int16_t[3]", list(ticks)))
+        state = exact.path_commit(state, config, inputs["path"], ticks)
         assert to_dict(c_state[0]) == state, f"row {row}"
 
 

@@ -92,12 +92,14 @@ def load(path, overrides=None) -> Mission | MissionError:
 def check(result: Mission | MissionError) -> None:
     if isinstance(result, MissionError):
         assert result.problems
-        assert len(str(result).splitlines()) == 1 + len(result.problems), "one line each"
+        told = str(result).splitlines()
+        whole_file = len(told) == 1 and told[0].startswith(f"{result.source}: ")
+        assert whole_file or len(told) == 1 + len(result.problems), "one line each"
     else:
         cycle = result.cycle
         used = cycle.blanking_ms + cycle.sample_ms + cycle.compute_delay_ms + cycle.drive_window_ms
         assert used <= cycle.period_ms + 1e-6
-        assert all(0 < coil.dipole_a_m2 <= 5 for coil in result.coil)
+        assert all(0 < coil.dipole_a_m2 <= 50 for coil in result.coil)
         assert 0 < result.control.field_min_ut < result.control.field_max_ut
 
 

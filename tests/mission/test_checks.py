@@ -184,10 +184,10 @@ REFUSED = {
     ),
     # 0.2081958 A m² × 100 turns over, twice for the pair.
     "derived dipole": (
-        {"coil": {"z": {"turns": 24_000, "mirrored_pair": True}}},
-        "coil.z.dipole_a_m2: 41.6392 A m² derived from coil.z.turns 24000, coil.z.area_m2 0.0072 m², "
+        {"coil": {"z": {"turns": 48_000, "mirrored_pair": True}}},
+        "coil.z.dipole_a_m2: 83.2783 A m² derived from coil.z.turns 48000, coil.z.area_m2 0.0072 m², "
         "coil.z.resistance_ohm 58 Ω, coil.z.resistance_temperature_c 20 °C, coil.z.temperature_c 35 °C, "
-        "coil.z.mirrored_pair true and supply.nominal_v 7.4 V, must be in (0, 5]",
+        "coil.z.mirrored_pair true and supply.nominal_v 7.4 V, must be in (0, 50]",
     ),
     "air with remanence": (
         {"coil": {"z": {"remanence_fraction": 0.01}}},

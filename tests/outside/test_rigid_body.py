@@ -173,7 +173,7 @@ def test_drag_acts_against_the_flight_at_the_centre_of_pressure():
 
 
 def test_signs_of_the_rate_law_and_of_its_torque():
-    """checks.md, section 4: figures derived there in closed form."""
+    """Figures from the closed form: m = k (ω × B), τ = m × B, power −k ‖ω × B‖²."""
     rate, field = np.array((0.1, -0.2, 0.3)), np.array((20e-6, -30e-6, 10e-6))
     m = 1e4 * np.cross(rate, field)
     assert m == pytest.approx((0.07, 0.05, 0.01))

@@ -1,5 +1,7 @@
 """A short flight of the demo for all tests of the review: saturated, with lost samples, late switch-offs."""
 
+from dataclasses import replace
+
 import pytest
 
 from pyharness.compare import compare_with_truth
@@ -36,6 +38,17 @@ def flights() -> list[Flown]:
 @pytest.fixture(scope="session")
 def flown(flights) -> Flown:
     return flights[0]
+
+
+def with_mission(flown: Flown, **tables) -> Flown:
+    """The same flight, as if these tables of its mission had other values: with_mission(f, control={...})."""
+    mission = flown.scaling.mission
+    changed = {
+        name: replace(getattr(mission, name), **new) if isinstance(new, dict) else new
+        for name, new in tables.items()
+    }
+    scaling = replace(flown.scaling, mission=replace(mission, **changed))
+    return replace(flown, record=replace(flown.record, flight=replace(flown.record.flight, scaling=scaling)))
 
 
 @pytest.fixture(scope="session")

@@ -4,10 +4,11 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from review.conftest import LATE
+from review.conftest import LATE, with_mission
 
 from pyharness.review import checks
 from pyharness.review.checks import sample_gaps_us
+from pyharness.review.numbers import NEVER, numbers
 
 
 def found(part, flights, vectors, **options):
@@ -46,6 +47,18 @@ def test_detumbled_looks_at_the_last_true_rate(flown, vectors):
     assert check.passed and "19.10 to 0.492 °/s in 450 s" in check.figure
     rate[-1] = np.radians((0.3, 0.0, 0.41))  # ‖ω‖ = 0.508 °/s
     assert not found("Detumbled", [with_record(flown, rate_rad_s=rate)], vectors).passed
+
+
+def test_how_slow_is_slow_enough_is_the_mission_s_to_say(flown, vectors):
+    rate = flown.record.rate_rad_s.copy()
+    rate[-1] = np.radians((1.5, 0.0, 0.0))
+    flown = with_record(flown, rate_rad_s=rate)
+    for settled_deg_s, passed in ((2.0, True), (1.4, False)):
+        other = with_mission(flown, control={"settled_deg_s": settled_deg_s})
+        check = found(f"ends below {settled_deg_s:g} °/s", [other], vectors)
+        assert check.passed is passed
+        row = dict(numbers([other]))[f"True ‖ω‖ first below {settled_deg_s:g} °/s"]
+        assert row == ["449.5 s" if passed else NEVER]
 
 
 def test_settled_needs_the_flag_in_time(flown, vectors):

@@ -8,7 +8,7 @@ import matplotlib
 import numpy as np
 import pytest
 from matplotlib.figure import Figure
-from review.conftest import DROPPED
+from review.conftest import DROPPED, with_mission
 
 from pyharness.review import figures, save_figures
 from pyharness.review.bins import Bins
@@ -16,6 +16,7 @@ from pyharness.review.dipole import dipole_figure, duty_figure
 from pyharness.review.error import error_figure
 from pyharness.review.figures import PLOTS
 from pyharness.review.magnifier import cycle_figure, decaying_dipole, default_cycle
+from pyharness.review.numbers import numbers
 from pyharness.review.rates import rates_figure
 from pyharness.review.samples import samples_figure
 from pyharness.review.style import inline_svg, save
@@ -46,6 +47,21 @@ def test_every_figure_stands_alone(plot, flown):
     title = figure.get_suptitle()
     assert flown.scaling.mission.name in title and flown.title in title
     assert any("[ms]" in axes.get_xlabel() or "[s]" in axes.get_xlabel() for axes in figure.axes)
+
+
+@pytest.mark.parametrize("draw", [rates_figure, cycle_figure])
+def test_a_flight_that_bears_its_mission_s_name_is_named_once(flown, draw):
+    name = flown.scaling.mission.name
+    assert draw(replace(flown, title=name)).get_suptitle().count(name) == 1
+
+
+def test_caption_says_what_the_estimate_can_see(flown):
+    (plot,) = [plot for plot in PLOTS if plot.name == "rates"]
+    by_gyro, by_field = (
+        plot.caption_of(with_mission(flown, control={"settle_by": sensor})) for sensor in ("gyro", "field")
+    )
+    assert "estimate should stay around it" in by_gyro and "across the field:" not in by_gyro
+    assert "may lie below the true rate" in by_field and "stay around it" not in by_field
 
 
 def test_saturated_cycles_are_marked_one_by_one(flown):
@@ -125,6 +141,48 @@ def test_rates_figure_names_the_moments_only_when_they_came(flown):
     rate[800:] = 0.0
     slow = replace(flown, record=replace(flown.record, rate_rad_s=rate))
     assert any("first below 0.5 °/s, 400.0 s" in text for text in texts(rates_figure(slow)))
+    fast = with_mission(slow, control={"settled_deg_s": 0.3})
+    assert any("first below 0.3 °/s, 400.0 s" in text for text in texts(rates_figure(fast)))
+
+
+@pytest.mark.parametrize("slow, settled", [(100, 140), (140, 100), (500, 560), (560, 500), (870, 890)])
+def test_no_line_of_a_moment_crosses_a_label(flown, slow, settled):
+    rate, outputs = flown.record.rate_rad_s.copy(), flown.record.outputs.copy()
+    rate[slow:] = np.radians(0.1)
+    outputs["handover"][settled:] = 1
+    figure = rates_figure(replace(flown, record=replace(flown.record, rate_rad_s=rate, outputs=outputs)))
+    figure.draw_without_rendering()
+    axes = figure.axes[1]
+    labels = [label.get_window_extent() for label in axes.texts]
+    marks = [line.get_window_extent() for line in axes.lines if len(set(line.get_xdata())) == 1]
+    assert len(labels) == len(marks) == 2
+    assert not any(label.overlaps(mark) for label in labels for mark in marks)
+    assert not labels[0].overlaps(labels[1])
+    assert all(axes.bbox.x0 <= label.x0 and label.x1 <= axes.bbox.x1 for label in labels)
+
+
+def test_modes_too_narrow_for_their_names_are_told_by_their_colour(flown):
+    outputs = flown.record.outputs.copy()
+    outputs["mode"][15:] = flown.constant("MODE_DAMPING")
+    modes = rates_figure(replace(flown, record=replace(flown.record, outputs=outputs))).axes[0]
+    assert modes.get_title("left") == "Mode (grey, unlabelled: hold-off, until 7.5 s)"
+    red, green, blue, _ = modes.patches[0].get_facecolor()
+    assert red == green == blue < 0.9
+
+
+def test_short_pulses_are_counted_alike_in_figure_and_table(flown):
+    outputs, comparison = flown.record.outputs.copy(), flown.comparison
+    bits = [1 << flown.constant(f"S_SHORT_PULSE_{axis}") for axis in "XYZ"]
+    outputs["status"] &= np.uint32(~sum(bits) & 0xFFFFFFFF)
+    outputs["status"][[10, 20, 400]] |= np.uint32(bits[1])  # two in hold-off, one while damping
+    dropped = np.stack([outputs["status"] & bit != 0 for bit in bits], axis=1)
+    flown = replace(
+        flown,
+        record=replace(flown.record, outputs=outputs),
+        comparison=replace(comparison, dropped=dropped),
+    )
+    assert [text.get_text() for text in error_figure(flown).axes[3].texts] == ["0", "1", "0"]
+    assert dict(numbers([flown]))["Short pulses dropped while damping"] == ["x 0, y 1, z 0"]
 
 
 def test_magnified_cycle_is_saturated_and_follows_pulses(flown):
@@ -135,7 +193,7 @@ def test_magnified_cycle_is_saturated_and_follows_pulses(flown):
 
 
 def test_tail_of_the_cycle_before_reaches_into_the_blanking(flown):
-    """I0 exp(-t R/L) from switch-off on: checks.md 5, derived."""
+    """I0 exp(-t R/L) from switch-off on: closed form, derived here."""
     cycle = default_cycle(flown)
     axis = int(np.argmax(np.abs(flown.record.applied_ticks[cycle - 1])))
     coil = flown.scaling.mission.coil[axis]
@@ -164,11 +222,7 @@ def test_a_cycle_that_was_not_flown(flown, cycle):
 
 def test_inline_svg_keeps_text_and_has_ids_of_its_own(flown):
     name = 'id="x" <b>$a$ & url(#c)'
-    mission = replace(flown.scaling.mission, name=name)
-    record = replace(
-        flown.record, flight=replace(flown.record.flight, scaling=replace(flown.scaling, mission=mission))
-    )
-    svg = inline_svg(duty_figure(replace(flown, record=record)), "abc", 'a "label" & <more>')
+    svg = inline_svg(duty_figure(with_mission(flown, name=name)), "abc", 'a "label" & <more>')
     root = ElementTree.fromstring(svg)
     assert root.attrib["aria-label"] == 'a "label" & <more>'
     assert any(name in (text.text or "") for text in root.iter("text"))

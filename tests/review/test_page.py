@@ -7,6 +7,7 @@ from html.parser import HTMLParser
 
 import numpy as np
 import pytest
+from review.conftest import with_mission
 
 from pyharness.mission.schema import KEYS
 from pyharness.review import page, render, review_data, write_page
@@ -155,11 +156,7 @@ def test_timeline_and_margins(data, reader):
 
 def test_a_coil_that_needs_more_blanking_is_called_out(data, flights, one_figure):
     slow = replace(data.mission.coil[0], time_constant_ms=20.0)
-    scaling = replace(data.scaling, mission=replace(data.mission, coil=(slow, *data.mission.coil[1:])))
-    flown = replace(
-        flights[0],
-        record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)),
-    )
+    flown = with_mission(flights[0], coil=(slow, *data.mission.coil[1:]))
     shown = rows(Reader(render(replace(data, flights=(flown,)))), "timeline")
     assert "141.8 60.0 70.0 -81.8 NO" in shown  # 20 ms × ln(14.98 µT / 12.5 nT)
 
@@ -237,15 +234,9 @@ def test_failed_and_missing_vectors(data, flights, vectors, one_figure):
     )
 
 
-def test_hostile_texts_stay_texts(data, flights, vectors, one_figure):
+def test_hostile_texts_stay_texts(flights, vectors, one_figure):
     evil = "</title><script>alert('$x$')</script>&amp;\"'><b id=\"verdict\">"
-    mission = replace(data.mission, name=evil, source=evil)
-    scaling = replace(data.scaling, mission=mission)
-    flown = replace(
-        flights[0],
-        title=evil,
-        record=replace(flights[0].record, flight=replace(flights[0].record.flight, scaling=scaling)),
-    )
+    flown = replace(with_mission(flights[0], name=evil, source=evil), title=evil)
     verdict = replace(vectors[0], name=evil, purpose=evil, detail=evil)
     shown = Reader(render(review_data([flown], [verdict], evil)))
     assert "script" not in shown.tags and "b" not in shown.tags and len(shown.ids) == len(set(shown.ids))
