@@ -6,7 +6,18 @@ import math
 from dataclasses import dataclass, field
 from typing import Any
 
-from pyharness.events import Command, DropGyro, DropSample, Event, Jitter, Kick, LateStamps, LateSwitchOff, LoseStamps, LowPower
+from pyharness.events import (
+    Command,
+    DropGyro,
+    DropSample,
+    Event,
+    Jitter,
+    Kick,
+    LateStamps,
+    LateSwitchOff,
+    LoseStamps,
+    LowPower,
+)
 from pyharness.exact import constants as mrd
 from pyharness.loop import Flight
 from pyharness.mission import Mission, load_mission

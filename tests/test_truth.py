@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from random import Random
 
 import numpy as np
 import pytest
@@ -10,11 +11,14 @@ from strategies import Seeded, any_inputs
 
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import load_controller
+from pyharness.events import Command
+from pyharness.exact import constants as mrd
 from pyharness.flight.records import to_record
 from pyharness.loop import Flight, fly
 from pyharness.mission import demo_path, load_mission
 from pyharness.scaling import scale
 from pyharness.truth import LIMIT, derivative_law, rate_law, saturate_keep_direction, saturate_per_axis
+from pyharness.vectors.unit import quiet_cycles
 
 VARIANTS = {
     "derivative": {},
@@ -95,3 +99,36 @@ def test_the_truth_flies_like_the_controller():
     (by_c,), (by_truth,) = fly([flight], load_controller("c")), fly([flight], load_controller("truth"))
     np.testing.assert_allclose(by_truth.rate_rad_s, by_c.rate_rad_s, atol=5e-4)
     assert not np.array_equal(by_truth.outputs["ticks"], by_c.outputs["ticks"])
+
+
+def test_the_bound_holds_where_the_largest_axis_is_uncertain():
+    """A gain so high that one count of the field is as large as the limit: the integers then scale by their own largest axis,
+    which may be much smaller than the truth's."""
+    overrides = {
+        "magnetometer": {"counts_per_ut": 160.0, "misalignment_deg": [20.0, -35.0, 60.0], "bias_ut": [0.0, 0.0, 0.0]},
+        "control": {"K_n_m_s": None, "k_am2_s_per_t": 2e7},
+    }
+    scaling = scale(load_mission(demo_path(), overrides))
+    controller = load_controller("c")
+    controller.configure([scaling])
+    inputs = quiet_cycles(8000, scaling.config["path"], controller.interface.inputs)
+    draw = Random(11)
+    raw = np.array([2800, -3454, 393])
+    for row in range(len(inputs)):
+        raw = raw + [draw.randint(-1, 1) for _ in range(3)]
+        inputs["path"]["mag_raw"][row] = raw
+    result = compare_with_truth(scaling, inputs, controller.run(inputs), controller.interface.header)
+    assert result.active.sum() > 7000
+    assert 0.5 < result.used <= 1.0
+
+
+@pytest.mark.parametrize("law", ["derivative", "rate"])
+def test_the_bound_holds_on_the_bench(law):
+    """The norm is waived there, and the normalised gain goes with the nearest plausible norm, in the truth as well."""
+    overrides = {"control": {"law": law, "gain_scaling": "normalised", "field_min_ut": 48.0, "saturation": "per-axis", "K_n_m_s": 1e-6}}
+    scaling = scale(load_mission(demo_path(), overrides))
+    events = (Command(3, mrd.MRD_COMMAND_SAFE), Command(5, mrd.MRD_COMMAND_ARM, key=0x5AA5))
+    controller = load_controller("c")
+    (record,) = fly([Flight(scaling, 200, separation_s=100, events=events)], controller)
+    assert record.bit(mrd.MRD_S_FIELD_IMPLAUSIBLE).any() and (record.outputs["mode"] == mrd.MRD_MODE_BENCH).any()
+    assert compare_with_truth(scaling, record.inputs, record.outputs, controller.interface.header).within

@@ -105,7 +105,9 @@ def _told(before: dict, folder: Path, changed: list[str], interface: Interface) 
 
     told = []
     for name in changed:
-        if name not in before:
+        if name.startswith("digests/"):
+            told.append(f"{name}: a long flight, as a hash: {'changed or new' if (folder / name).is_file() else 'removed'}")
+        elif name not in before:
             told.append(f"{name}: {'new' if (folder / name).is_file() else 'removed'}")
         elif not (folder / name).is_file():
             told.append(f"{name}: removed")

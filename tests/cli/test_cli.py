@@ -137,7 +137,7 @@ def test_no_vectors_is_a_failure(capsys, tmp_path):
         ("law.c", "-(int32_t)trace->low_pass", "(int32_t)trace->low_pass", "law"),
         ("saturation.c", "+ 32768u) >> 16", "+ 32767u) >> 16", "saturation"),
         ("pulses.c", "config->window_ticks), 15)", "config->window_ticks), 14)", "pulses"),
-        ("gate.c", "age_us >= config->blanking_us[i]", "age_us > config->blanking_us[i]", "gate"),
+        ("gate.c", "*age_us >= blanking_us", "*age_us > blanking_us", "gate"),
         ("estimate.c", "(uint32_t)change << 15", "(uint32_t)change << 14", "estimate"),
         ("modes.c", "ticks >= 1u", "ticks >= 2u", "commanded pulses"),
     ],

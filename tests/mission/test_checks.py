@@ -175,7 +175,7 @@ REFUSED = {
     ),
     "no dipole": (
         {"coil": {"x": {"dipole_a_m2": None}}},
-        f"coil.x.dipole_a_m2: missing, must be a number in (0, 5] A m² (or give {WINDINGS})",
+        f"coil.x.dipole_a_m2: missing, must be a number in (0, 50] A m² (or give {WINDINGS})",
     ),
     "half a winding": (
         {"coil": {"z": {"area_m2": None}}},

@@ -87,7 +87,7 @@ def changed(line: int, start: int, text: str) -> tuple[str, str]:
         (changed(0, 18, "79"), ["[0]: epoch 1979-03-14T09:29:59.999712Z", "must be in [1980"]),
         (changed(0, 18, "30"), ["[0]: epoch 2030-03-14T09:29:59.999712Z", "2030-01-01T00:00:00Z)"]),
         (changed(1, 26, "9999999"), ["the orbit cannot be propagated: semilatus rectum is less than zero (SGP4 error 4)"]),
-        (changed(1, 52, "00.00000000"), ["cannot be propagated: mean motion is less than zero (SGP4 error 2)"]),
+        (changed(1, 52, "00.00000000"), ["cannot be propagated: nm is less than zero (SGP4 error 2)"]),
         (changed(1, 52, " 9.00000000"), ["lowest altitude", "highest altitude", "must be in [200, 2000]"]),
         (("1 \u0663" + LINES[0][3:], LINES[1]), ["[0]: ", "columns of line 1"]),
     ],
