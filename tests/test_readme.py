@@ -49,6 +49,19 @@ def test_every_command(checkout, monkeypatch, capsys, words):
     capsys.readouterr()
 
 
+def test_the_first_run_shows_what_it_says(checkout, monkeypatch, capsys):
+    """The quoted output is that of a real run: the integers' digests, rates, times and rows."""
+    (quoted,) = [block for block in blocks("text") if block.startswith("sources ")]
+    monkeypatch.chdir(checkout)
+    assert main(["review"]) == 0
+    real = capsys.readouterr().out
+    for line in quoted.splitlines():
+        if line.startswith("mission"):  # where the file lies depends on the folder
+            assert line.split(", ", 1)[1] in real
+        elif not line.startswith("sources"):
+            assert line in real, line
+
+
 def test_the_install_lines_are_the_ones_that_ci_runs():
     ci = (ROOT / ".ci" / "run").read_text(encoding="utf-8")
     installs = [line for block in blocks("sh") for line in block.splitlines() if line.startswith("python3 -m venv")]
