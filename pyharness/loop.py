@@ -45,6 +45,7 @@ class Flight:
     start_us: int = 1_000_000  # host clock at the start of the first cycle
     separation_s: int = 0  # since separation, at the start of the first cycle
     orbit_s: float = 0.0  # start after the epoch of the orbit
+    supply_v: float | None = None  # that drives the coils; None: nominal
     events: tuple[Event, ...] = field(default=())
 
 
@@ -145,6 +146,7 @@ def _plant(flights: list[Flight], cycles: int, environment: Environment | None) 
         missions,
         [flight.seed for flight in flights],
         rate_rad_s=np.radians(np.array(rates, dtype=float).T),
+        supply_v=np.array([f.scaling.mission.supply.nominal_v if f.supply_v is None else f.supply_v for f in flights]),
         start_s=np.array([flight.orbit_s for flight in flights]),
         field=environment,
         duration_s=(cycles + 2) * missions[0].cycle.period_ms * 1e-3,

@@ -149,3 +149,10 @@ def test_a_run_of_two_parts_equals_the_whole(demo_scaling, c):
     c.restore(kept)
     second = c.run(record.inputs[33:])
     np.testing.assert_array_equal(to_columns(np.concatenate([first, second])), to_columns(record.outputs))
+
+
+def test_a_lower_supply_damps_less(demo_scaling, c):
+    """The full dipole goes with the voltage: while saturated, so does the loss of energy."""
+    low, high = (one(demo_scaling, c, 300, supply_v=volts) for volts in (6.6, 8.4))
+    lost = [record.true_rate_deg_s[0] ** 2 - record.true_rate_deg_s[-1] ** 2 for record in (low, high)]
+    assert 0.6 < lost[0] / lost[1] < 0.95

@@ -27,7 +27,7 @@ from pyharness.mission import load_mission
 from pyharness.mission.schema import BY_PATH
 from pyharness.review import Flown, save_figures
 from pyharness.review.numbers import numbers
-from pyharness.scaling import scale
+from pyharness.scaling import Scaling, scale
 from pyharness.scenarios import long_cycles
 from pyharness.whole_files import write_whole
 
@@ -46,6 +46,7 @@ def add_to(commands) -> None:
     parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
     parser.add_argument("--rate", type=float, nargs=3, metavar=("X", "Y", "Z"), help="body rate at the start, °/s; default: the tip-off rate")
     parser.add_argument("--along-field", action="store_true", help="turn the rate at the start along the field")
+    parser.add_argument("--supply", type=float, metavar="V", help="supply voltage that drives the coils; default: nominal")
     parser.add_argument("--plot", metavar="DIR", help="write the figures into this folder")
     parser.add_argument("--format", choices=("png", "svg"), default="png", help="of the figures; default: png")
     parser.add_argument("--csv", metavar="FILE", help="write a table with a row for each cycle, in physical units")
@@ -57,7 +58,9 @@ def add_to(commands) -> None:
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
     scaling = scale(load_mission(options.mission))
-    flight = Flight(scaling, _cycles(options, scaling), options.seed, _rate(options), options.along_field)
+    flight = Flight(
+        scaling, _cycles(options, scaling), options.seed, _rate(options), options.along_field, supply_v=_supply(options, scaling)
+    )
     for option, path in (("--csv", options.csv), ("--plot", options.plot and Path(options.plot) / "x")):
         if path:
             check_writable(option, Path(path), make_folder=option == "--plot")
@@ -88,7 +91,14 @@ def _rate(options: argparse.Namespace) -> tuple[float, ...] | None:
     return tuple(options.rate) if options.rate else None
 
 
-def _cycles(options: argparse.Namespace, scaling) -> int:
+def _supply(options: argparse.Namespace, scaling: Scaling) -> float | None:
+    supply = scaling.mission.supply
+    if options.supply is not None and not supply.min_v <= options.supply <= supply.max_v:
+        raise UsageError(f"--supply: {options.supply:g} V, must be in [{supply.min_v:g}, {supply.max_v:g}] V, the mission's range")
+    return options.supply
+
+
+def _cycles(options: argparse.Namespace, scaling: Scaling) -> int:
     if options.cycles is not None:
         cycles = options.cycles
     elif options.duration is not None and np.isfinite(options.duration):

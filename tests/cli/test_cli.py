@@ -180,6 +180,7 @@ def test_vectors_compare(capsys, tmp_path):
         (("fly", "--cycles", "5", "--csv", "/no/flight.csv"), "--csv /no/flight.csv: there is no folder /no"),
         (("review", "--out", "/proc/page.html"), "--out /proc/page.html: cannot be written: "),
         (("fly", "--cycles", "5", "--rate", "1e9", "0", "0"), "--rate: 1e+09 °/s, each must be in [-360, 360] °/s"),
+        (("fly", "--cycles", "5", "--supply", "9"), "--supply: 9 V, must be in [6.6, 8.4] V, the mission's range"),
         (("trace", "--cycle", "99999999"), "--cycle: 99999999, must be in [0, 999999]"),
     ],
 )
