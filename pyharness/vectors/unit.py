@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
+from math import isqrt
 from typing import Any
 
 import numpy as np
@@ -231,6 +232,28 @@ def _estimate(inputs: np.ndarray, config: Config, seed: int) -> None:
             raw[row] = (1500 + (row - 60) // 2 * (row % 2), -1200, 1800)
 
 
+def _settling(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Rates on either side of both thresholds, for as long as the dwells, one cycle less and one more."""
+    settled, wake = config["supervisor"]["settled_rate"], config["supervisor"]["wake_rate"]
+    settle_dwell, wake_dwell = config["supervisor"]["settle_dwell"], config["supervisor"]["wake_dwell"]
+    plan = [(settled, settle_dwell - 1), (settled + 1, 1), (settled, settle_dwell + 1), (wake, wake_dwell + 1), (wake + 1, wake_dwell - 1),
+            (wake, 1), (wake + 1, wake_dwell), (settled + 1, settle_dwell + 1), (settled, settle_dwell)]  # fmt: skip
+    row = 0
+    for rate, cycles in plan:
+        inputs["path"]["gyro_raw"][row : row + cycles] = _gyro_raw(config["path"]["gyro"], rate)
+        row += cycles
+
+
+def _gyro_raw(sensor: Config, rate: int) -> tuple[int, int, int]:
+    """Raw counts whose norm on board is exactly this rate, near the x axis."""
+    near = round((rate + sensor["offset"][0]) * 2 ** sensor["shift"] / sensor["matrix"][0])
+    for x in range(near, near - 40, -1):
+        for y in range(-40, 200):
+            if isqrt(sum(w * w for w in calibrate_sensor(sensor, (x, y, 0))[0])) == rate:
+                return x, y, 0
+    return near, 0, 0
+
+
 def _modes(inputs: np.ndarray, config: Config, seed: int) -> None:
     """Every command in every mode, with and without low power; the field moves, so that pulses are asked for."""
     key, limit = config["supervisor"]["bench_key"], config["supervisor"]["bench_limit_ticks"]
@@ -327,6 +350,8 @@ UNIT = (
     Unit("pulses", "stage 8: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
     Unit("estimate", "stage 9: the rate from the field's turn, from nothing to its saturation", 120, _estimate,
          overrides={"gyro": None, "control": {"settle_by": "field"}}),
+    Unit("settling", "modes: rates on either side of the settled and the wake threshold, for the dwells", 60, _settling,
+         overrides={"control": {"dwell_s": 2.5, "wake_dwell_s": 1.5}}),
     Unit("modes", "modes: every command in every mode, with and without low power; hold-off runs out at the end", 360, _modes),
     Unit("random-derivative", "whole steps of the derivative law, drawn", 500, _random, seed=101),
     Unit("random-rate", "whole steps of the rate-damping law, drawn", 500, _random, seed=102, overrides=_RATE),

@@ -138,6 +138,17 @@ def test_a_corrupt_state_stays_inhibited(library, rate_law):
     assert set(outputs["mode"].tolist()) == {mrd.MRD_MODE_INHIBIT} and not any(driven(outputs))
 
 
+def test_a_corrupt_state_in_low_power_goes_on_by_itself(library, rate_law):
+    """Only a commanded inhibit waits for resume."""
+    bank = Bank(library, rate_law)
+    bank.run([cycle(0), cycle(1), cycle(2, low_power=1)])
+    assert bank.state["mode"] == mrd.MRD_MODE_INHIBIT
+    bank.state["counters"]["trusted"] ^= 1
+    assert set(bank.run([cycle(3, low_power=1)])["mode"].tolist()) == {mrd.MRD_MODE_INHIBIT}
+    bank.state["counters"]["trusted"] ^= 1
+    assert set(bank.run([cycle(n) for n in (4, 5)])["mode"].tolist()) == {mrd.MRD_MODE_DAMPING}
+
+
 def test_every_single_flipped_bit_of_the_state_is_seen_at_once(library, rate_law):
     bank = Bank(library, rate_law)
     bank.run([cycle(n, end_of_pulses(n - 1)) for n in range(5)])

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from exact.samples import make_config
+from exact.test_exact_init import CASES
 from fsw_c.runs import Bank
 from hypothesis import given, settings
 from strategies import Seeded, any_config, any_inputs, any_path_config, flights
@@ -52,6 +54,14 @@ def test_a_hundred_thousand_rows(library, part):
     assert reached["rows"] == ROWS // 4
     for stage in ("derivative", "saturated", "rate law", "normalised", "blanked"):
         assert reached[stage] > 0.01 * reached["rows"], reached
+
+
+@pytest.mark.parametrize("number", range(len(CASES)))
+def test_init_agrees_on_either_side_of_every_boundary(library, number):
+    code, legal, broken = CASES[number]
+    for changes, answer in ((legal, 0), (broken, code)):
+        config = make_config(changes)
+        assert library.init(to_record(library.interface.config, config)) == exact.init(config) == answer
 
 
 @pytest.mark.parametrize("seed", range(300))
