@@ -112,6 +112,38 @@ def test_the_path_alone_equals_exact(library, seed):
         assert to_dict(c_state[0]) == state, f"row {row}"
 
 
+@pytest.mark.parametrize("seed", range(80))
+def test_upsets_are_answered_alike(library, seed):
+    """A flipped bit in the state, then one in the configuration, then the configuration mended: the same integers, the same state."""
+    source = Seeded(9000 + seed)
+    config = any_config(source)
+    sequence = any_inputs(source, config, 60)
+    bank = Bank(library, config)
+    sound = bank.config.copy()
+    state, reached = exact.reset(), 0
+    for row, inputs in enumerate(sequence):
+        if row in (15, 16, 30):
+            flip(source, bank.state)
+            state = to_dict(bank.state[0])
+        if row in (40, 41):
+            flip(source, bank.config)
+        if row == 43:
+            bank.config[...] = sound
+        outputs = bank.run([inputs])
+        state, want = exact.step(state, to_dict(bank.config[0]), inputs)
+        assert to_dict(outputs[0]) == want, f"row {row}"
+        assert to_dict(bank.state[0]) == state, f"row {row}"
+        reached |= want["status"]
+    assert reached >> 21 & 3
+
+
+def flip(source: Seeded, record: np.ndarray) -> None:
+    """Flip one bit of a record; in padding it changes nothing."""
+    raw = np.frombuffer(record.tobytes(), np.uint8).copy()
+    raw[source.integer(0, len(raw) - 1)] ^= 1 << source.integer(0, 7)
+    record[...] = np.frombuffer(raw.tobytes(), record.dtype)
+
+
 @pytest.mark.parametrize("seed", range(40))
 def test_a_run_in_two_parts_equals_the_whole(library, seed):
     source = Seeded(5000 + seed)
