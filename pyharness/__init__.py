@@ -4,7 +4,7 @@
     controller = load_controller("c")
     controller.configure([scaling])
     outputs = controller.run(inputs)
-    compare_with_truth(scaling, inputs, outputs, controller.interface.header).within
+    compare_with_truth(scaling, inputs, outputs).within
 """
 
 from __future__ import annotations

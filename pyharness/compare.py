@@ -6,8 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pyharness.flight.header import Header
-from pyharness.scaling import Scaling
+from pyharness.exact import constants as mrd
+from pyharness.scaling import Q15, Scaling
 from pyharness.truth import Truth
 
 
@@ -21,13 +21,17 @@ class Comparison:
     command_bound: np.ndarray  # the largest that it may be
     ticks_error: np.ndarray  # |controller − truth|, ticks; 0 for a dropped short pulse
     ticks_bound: np.ndarray
-    dropped: np.ndarray  # bool: a short pulse was dropped
     dipole_a_m2: np.ndarray  # (3,) mean dipole over the cycle at full command
 
     @property
     def command_error_a_m2(self) -> np.ndarray:
         """|controller − truth| as mean dipole over the cycle, A m²."""
-        return self.command_error / 32768 * self.dipole_a_m2
+        return self.command_error / Q15 * self.dipole_a_m2
+
+    @property
+    def command_bound_a_m2(self) -> np.ndarray:
+        """The largest that it may be, A m²."""
+        return self.command_bound / Q15 * self.dipole_a_m2
 
     @property
     def used(self) -> float:
@@ -47,7 +51,7 @@ class Comparison:
         return self.used <= 1.0 and self.used_ticks <= 1.0
 
 
-def compare_with_truth(scaling: Scaling, inputs: np.ndarray, outputs: np.ndarray, header: Header) -> Comparison:
+def compare_with_truth(scaling: Scaling, inputs: np.ndarray, outputs: np.ndarray) -> Comparison:
     """Follow one controller's run with the truth: inputs and outputs (cycles,) records."""
     truth = Truth([scaling])
     steps = [truth.step(inputs[i : i + 1], outputs[i : i + 1]) for i in range(len(inputs))]
@@ -55,7 +59,7 @@ def compare_with_truth(scaling: Scaling, inputs: np.ndarray, outputs: np.ndarray
         name: np.array([getattr(step, name)[:, 0] for step in steps]).reshape(-1, 3)
         for name in ("command", "command_bound", "ticks", "ticks_bound")
     }
-    short = [header.constants[f"MRD_S_SHORT_PULSE_{axis}"] for axis in "XYZ"]
+    short = (mrd.MRD_S_SHORT_PULSE_X, mrd.MRD_S_SHORT_PULSE_Y, mrd.MRD_S_SHORT_PULSE_Z)
     dropped = np.stack([outputs["status"] >> np.uint32(bit) & 1 for bit in short], axis=1).astype(bool)
     # The pulses that the law asks for, in any mode.
     ticks_error = np.where(dropped, 0.0, np.abs(outputs["trace"]["pulses"]["ticks"] - stacked["ticks"]))
@@ -66,6 +70,5 @@ def compare_with_truth(scaling: Scaling, inputs: np.ndarray, outputs: np.ndarray
         command_bound=stacked["command_bound"],
         ticks_error=ticks_error,
         ticks_bound=stacked["ticks_bound"],
-        dropped=dropped,
         dipole_a_m2=np.array(scaling.dipole_a_m2),
     )

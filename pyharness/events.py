@@ -63,10 +63,20 @@ class LowPower(Span):
 
 
 @dataclass(frozen=True)
-class Command:
-    """One command in one cycle."""
+class Moment:
+    """Something that happens in one cycle."""
 
     cycle: int
+
+    def covers(self, cycle: int) -> bool:
+        """Whether it happens in this cycle."""
+        return cycle == self.cycle
+
+
+@dataclass(frozen=True)
+class Command(Moment):
+    """One command."""
+
     code: int
     key: int = 0
     coil: int = 0
@@ -74,10 +84,9 @@ class Command:
 
 
 @dataclass(frozen=True)
-class Kick:
-    """An impulse: at mid-sample of `cycle` the body rate becomes this."""
+class Kick(Moment):
+    """An impulse: at mid-sample the body rate becomes this."""
 
-    cycle: int
     rate_deg_s: Vector
 
 

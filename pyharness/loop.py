@@ -100,7 +100,7 @@ def _fly_ordered(
     controller.configure(scalings)
     n, longest = len(flights), flights[0].cycles
     plant = _plant(flights, longest, environment)
-    host = _Host(flights, controller)
+    host = _Host(flights)
     lengths = np.array([flight.cycles for flight in flights])
 
     inputs = np.zeros((longest, n), controller.interface.inputs)
@@ -160,7 +160,7 @@ def _plant(flights: list[Flight], cycles: int, environment: Environment | None) 
 class _Host:
     """The host computers of N spacecraft: clocks, stamps, flags and commands."""
 
-    def __init__(self, flights: list[Flight], controller: Controller):
+    def __init__(self, flights: list[Flight]):
         self._flights = flights
         self._start_us = np.array([flight.start_us for flight in flights], dtype=np.int64)
         config = [flight.scaling.config["path"] for flight in flights]
@@ -176,10 +176,7 @@ class _Host:
 
     def _of(self, kind: type, cycle: int) -> list[tuple[int, Event]]:
         """The events of a kind that happen in this cycle, with their spacecraft."""
-        return [
-            (i, event) for i, event in self._events
-            if isinstance(event, kind) and (event.covers(cycle) if hasattr(event, "covers") else event.cycle == cycle)
-        ]  # fmt: skip
+        return [(i, event) for i, event in self._events if isinstance(event, kind) and event.covers(cycle)]
 
     def kick(self, plant: Plant, cycle: int) -> None:
         """Set the rates of those that are kicked."""

@@ -94,7 +94,7 @@ class Scaling:
             sizes["gyro_raw"] = Size(math.degrees(self.raw_rate_rad_s), "°/s")
         if leaf.endswith("_us"):
             return Size(1e-3, "ms")
-        return None if name.endswith("path.command") or name == "command" else sizes.get(leaf)
+        return None if name == "command" else sizes.get(leaf)  # the operator's command has no size
 
 
 def scale(mission: Mission) -> Scaling:
@@ -124,7 +124,7 @@ def scale(mission: Mission) -> Scaling:
 def _path(s: Scaling, problems: list[str]) -> Config:
     mission, control, t = s.mission, s.mission.control, s.timeline
     mag, gyro = mission.magnetometer, mission.gyro
-    norm_min = round((control.field_min_ut * 1e-6 / s.field_t) ** 2)
+    norm_min, norm_max = _norm_range(s)
     if norm_min < Q15:
         problems.append(
             f"control.field_min_ut: {control.field_min_ut:g} µT is {math.sqrt(norm_min):.0f} counts of the field, must be at "
@@ -141,7 +141,7 @@ def _path(s: Scaling, problems: list[str]) -> Config:
         "saturation": {"per-axis": mrd.MRD_SATURATE_PER_AXIS,
                        "keep-direction": mrd.MRD_SATURATE_KEEP_DIRECTION}[control.saturation],
         "norm_min_sq": norm_min,
-        "norm_max_sq": round((control.field_max_ut * 1e-6 / s.field_t) ** 2),
+        "norm_max_sq": norm_max,
         "period_us": t.period_us,
         "phase_us": t.mid_sample_us,
         "tolerance_us": round(mission.cycle.timing_tolerance_ms * 1e3),
@@ -157,6 +157,12 @@ def _path(s: Scaling, problems: list[str]) -> Config:
         "rate_gain": _gain(s, "rate-damping law", s.rate_rad_s * s.field_t, 16, problems) if control.law == "rate"
         else _no_gain(control.gain_scaling, norm_min),
     }  # fmt: skip
+
+
+def _norm_range(s: Scaling) -> tuple[int, int]:
+    """Least and greatest plausible ‖B‖², field counts²."""
+    control = s.mission.control
+    return tuple(round((ut * 1e-6 / s.field_t) ** 2) for ut in (control.field_min_ut, control.field_max_ut))
 
 
 def _supervisor(s: Scaling, problems: list[str]) -> Config:
@@ -266,8 +272,7 @@ def _shift_range(s: Scaling) -> tuple[int, int]:
     """Legal shifts of a gain, as the configuration check in fsw_c/README.md has them."""
     if s.mission.control.gain_scaling == "constant":
         return 1, 31
-    low = round((s.mission.control.field_min_ut * 1e-6 / s.field_t) ** 2)
-    high = round((s.mission.control.field_max_ut * 1e-6 / s.field_t) ** 2)
+    low, high = _norm_range(s)
     return 2 - low.bit_length(), 31 - high.bit_length()
 
 

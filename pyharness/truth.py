@@ -25,12 +25,12 @@ LIMIT = FULL_SCALE / Q15
 
 
 def derivative_law(k: np.ndarray, field_rate: np.ndarray) -> np.ndarray:
-    """m = −k dB/dt. k in A m² s/T, dB/dt in T/s, body axes; m in A m²."""
+    """m = −k dB/dt. k in A m² s/T, dB/dt in T/s, body axes; m in A m². Linear: counts in, with a gain in counts, give counts."""
     return -k * field_rate
 
 
 def rate_law(k: np.ndarray, rate: np.ndarray, field: np.ndarray) -> np.ndarray:
-    """m = k (ω × B). k in A m² s/T, ω in rad/s, B in T, body axes; m in A m²."""
+    """m = k (ω × B). k in A m² s/T, ω in rad/s, B in T, body axes; m in A m². Bilinear: as above."""
     return k * cross(rate, field)
 
 
@@ -50,8 +50,7 @@ class TruthStep:
     """The truth about one step, each (3, N), and how far the integers may be from it."""
 
     active: np.ndarray  # (N,) bool: a law acted
-    command_a_m2: np.ndarray  # mean dipole over the cycle, after saturation
-    command: np.ndarray  # the same in command counts
+    command: np.ndarray  # mean dipole over the cycle, after saturation, command counts
     command_bound: np.ndarray  # largest |integer − command|, command counts
     ticks: np.ndarray  # signed ticks of coil current, unrounded, no pulse dropped
     ticks_bound: np.ndarray  # largest |integer − ticks| but for dropped short pulses, ticks
@@ -66,8 +65,6 @@ class Truth:
         self._gyro = _Sensors(scalings, "gyro")
         last = lambda values: np.array(list(values), dtype=float).T  # noqa: E731 - spacecraft last
         config = [s.config["path"] for s in scalings]
-        self._field_t = last(s.field_t for s in scalings)
-        self._rate_rad_s = last(s.rate_rad_s for s in scalings)
         self._period_us = last(s.timeline.period_us for s in scalings)
         self._period_bits = np.array([c["period_us"].bit_length() - 15 for c in config])
         self._smoothing = last(c["filter_gain"] / Q15 for c in config)
@@ -110,12 +107,12 @@ class Truth:
         field, field_error = self._mag.calibrate(inputs["path"]["mag_raw"].T.astype(float))
         change, change_error = self._derivative(field, field_error, trace["derivative"]["interval_us"])
         filtered, filtered_error = self._low_pass(change, change_error, derived)
-        by_rate, by_rate_error = self._cross(inputs, field, field_error)
+        rate, by_rate_error = self._rate(inputs, field, field_error)
 
         rate_acts = active == mrd.MRD_LAW_RATE
         gain = np.where(rate_acts, self._gain[mrd.MRD_LAW_RATE], self._gain[mrd.MRD_LAW_DERIVATIVE])
         gain, gain_error = self._normalise(gain, field, field_error)
-        demand = np.where(rate_acts, gain * by_rate, -gain * filtered)
+        demand = np.where(rate_acts, rate_law(gain, rate, field), derivative_law(gain, filtered))
         error = gain * np.where(rate_acts, by_rate_error, filtered_error) * (1 + gain_error) + np.abs(demand) * gain_error + 0.5
         command, command_error = self._saturate(demand, error)
 
@@ -123,11 +120,9 @@ class Truth:
         self._field_error = np.where(trusted, field_error, self._field_error)
         acts = active != mrd.MRD_LAW_NONE
         command, command_error = np.where(acts, command, 0.0), np.where(acts, command_error, 0.0)
-        limit = np.array([s.dipole_a_m2 for s in self._scalings]).T
         share = self._window / Q15
         return TruthStep(
             active=acts,
-            command_a_m2=command / Q15 * limit,
             command=command,
             command_bound=command_error,
             ticks=command * share * self._polarity,
@@ -158,14 +153,14 @@ class Truth:
         # The law takes whole counts; without a low-pass the filter holds whole counts already.
         return filtered, bound + np.where(self._smoothing == 1.0, 0.0, 0.5)
 
-    def _cross(self, inputs: np.ndarray, field: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        """ω × B in units of 2^16 rate count × field count, as the rate gain takes it."""
+    def _rate(self, inputs: np.ndarray, field: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """ω in units of 2^16 rate counts, as the rate gain takes it, and the largest error of ω × B."""
         rate, rate_error = self._gyro.calibrate(inputs["path"]["gyro_raw"].T.astype(float))
         bound = np.zeros_like(field)
         for i, j, k in ((0, 1, 2), (1, 2, 0), (2, 0, 1)):
             for a, b in ((j, k), (k, j)):
                 bound[i] += np.abs(rate[a]) * error[b] + rate_error[a] * np.abs(field[b]) + rate_error[a] * error[b]
-        return cross(rate, field) / 65536.0, bound / 65536.0
+        return rate / 65536.0, bound / 65536.0
 
     def _normalise(self, gain: np.ndarray, field: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """The gain over ‖B‖² where it is normalised, and its largest relative error."""

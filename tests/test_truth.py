@@ -65,7 +65,7 @@ def test_drawn_inputs_stay_within_the_bound(variant):
         inputs = np.zeros(len(sequence), controller.interface.inputs)
         for i, values in enumerate(sequence):
             inputs[i] = to_record(controller.interface.inputs, values)
-        result = compare_with_truth(scaling, inputs, controller.run(inputs), controller.interface.header)
+        result = compare_with_truth(scaling, inputs, controller.run(inputs))
         assert result.within, f"seed {seed}: {result.used:.3f}, {result.used_ticks:.3f} of the bound"
         used, acted = max(used, result.used), acted + int(result.active.sum())
     assert acted > 500
@@ -77,19 +77,19 @@ def test_a_wrong_command_leaves_the_bound(demo_scaling, field):
     """The comparison can fail: a command off by more than the bound is seen."""
     controller = load_controller("c")
     (record,) = fly([Flight(demo_scaling, 150, separation_s=100)], controller)
-    before = compare_with_truth(demo_scaling, record.inputs, record.outputs, controller.interface.header)
+    before = compare_with_truth(demo_scaling, record.inputs, record.outputs)
     assert before.within
     stage = record.outputs["trace"]["saturation" if field == "command" else "pulses"][field]
     bound = before.command_bound if field == "command" else before.ticks_bound
     stage[100, 1] += math.ceil(2 * bound[100, 1]) + 1
-    assert not compare_with_truth(demo_scaling, record.inputs, record.outputs, controller.interface.header).within
+    assert not compare_with_truth(demo_scaling, record.inputs, record.outputs).within
 
 
 def test_a_flipped_sign_leaves_the_bound(demo_scaling):
     controller = load_controller("c")
     (record,) = fly([Flight(demo_scaling, 150, separation_s=100)], controller)
     record.outputs["trace"]["saturation"]["command"] *= -1
-    assert not compare_with_truth(demo_scaling, record.inputs, record.outputs, controller.interface.header).within
+    assert not compare_with_truth(demo_scaling, record.inputs, record.outputs).within
 
 
 def test_the_truth_flies_like_the_controller():
@@ -117,7 +117,7 @@ def test_the_bound_holds_where_the_largest_axis_is_uncertain():
     for row in range(len(inputs)):
         raw = raw + [draw.randint(-1, 1) for _ in range(3)]
         inputs["path"]["mag_raw"][row] = raw
-    result = compare_with_truth(scaling, inputs, controller.run(inputs), controller.interface.header)
+    result = compare_with_truth(scaling, inputs, controller.run(inputs))
     assert result.active.sum() > 7000
     assert 0.5 < result.used <= 1.0
 
@@ -131,4 +131,4 @@ def test_the_bound_holds_on_the_bench(law):
     controller = load_controller("c")
     (record,) = fly([Flight(scaling, 200, separation_s=100, events=events)], controller)
     assert record.bit(mrd.MRD_S_FIELD_IMPLAUSIBLE).any() and (record.outputs["mode"] == mrd.MRD_MODE_BENCH).any()
-    assert compare_with_truth(scaling, record.inputs, record.outputs, controller.interface.header).within
+    assert compare_with_truth(scaling, record.inputs, record.outputs).within

@@ -11,10 +11,11 @@ from pathlib import Path
 
 from tqdm import tqdm
 
-from pyharness.controllers import NAMES
+from pyharness.controllers import NAMES, Controller
 from pyharness.flight import Sources, find_sources
 from pyharness.mission import demo_path
 from pyharness.scaling import Scaling
+from pyharness.vectors import Verdict, check_folder, find_vectors
 
 SHOW_AFTER_S = 2.0
 MOST_CYCLES = 1_000_000
@@ -98,6 +99,29 @@ def table(rows: Iterable[Sequence[str]], indent: str = "") -> str:
     return "\n".join(
         (indent + "  ".join([*(cell.ljust(w) for cell, w in zip(row, widths, strict=False)), row[-1]])).rstrip() for row in rows
     )
+
+
+def add_start(parser: argparse.ArgumentParser) -> None:
+    """--seed and --along-field: how a flight starts."""
+    parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
+    parser.add_argument("--along-field", action="store_true", help="turn the rate at the start along the field")
+
+
+def check_seed(options: argparse.Namespace) -> int:
+    """The seed. Raises UsageError if it is negative."""
+    if options.seed < 0:
+        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
+    return options.seed
+
+
+def replay(folder: Path, controller: Controller, mission_path: str) -> list[Verdict]:
+    """Replay every vector of a folder. Raises what `check_folder` raises."""
+    with progress("replaying", len(find_vectors(folder)), "file") as bar:
+        verdicts = []
+        for verdict in check_folder(folder, controller, mission_path):
+            verdicts.append(verdict)
+            bar.update()
+    return verdicts
 
 
 def find_vector_folder(given: str | None) -> Path:

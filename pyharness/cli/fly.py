@@ -14,8 +14,10 @@ from pyharness.cli.common import (
     add_controller,
     add_mission,
     add_sources,
+    add_start,
     announce_mission,
     announce_sources,
+    check_seed,
     check_writable,
     progress,
     table,
@@ -43,9 +45,8 @@ def add_to(commands) -> None:
     length = parser.add_mutually_exclusive_group()
     length.add_argument("--cycles", type=int, metavar="N", help="length in control cycles")
     length.add_argument("--duration", type=float, metavar="S", help="length in seconds; default: an orbit, the hold-off and the dwell")
-    parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
     parser.add_argument("--rate", type=float, nargs=3, metavar=("X", "Y", "Z"), help="body rate at the start, °/s; default: the tip-off rate")
-    parser.add_argument("--along-field", action="store_true", help="turn the rate at the start along the field")
+    add_start(parser)
     parser.add_argument("--supply", type=float, metavar="V", help="supply voltage that drives the coils; default: nominal")
     parser.add_argument("--plot", metavar="DIR", help="write the figures into this folder")
     parser.add_argument("--format", choices=("png", "svg"), default="png", help="of the figures; default: png")
@@ -59,7 +60,7 @@ def run(options: argparse.Namespace) -> int:
     """Run the command."""
     scaling = scale(load_mission(options.mission))
     flight = Flight(
-        scaling, _cycles(options, scaling), options.seed, _rate(options), options.along_field, supply_v=_supply(options, scaling)
+        scaling, _cycles(options, scaling), check_seed(options), _rate(options), options.along_field, supply_v=_supply(options, scaling)
     )
     for option, path in (("--csv", options.csv), ("--plot", options.plot and Path(options.plot) / "x")):
         if path:
@@ -68,7 +69,7 @@ def run(options: argparse.Namespace) -> int:
     announce_mission(scaling)
     with progress("flying", flight.cycles) as bar:
         (record,) = fly([flight], controller, bar.update)
-    comparison = compare_with_truth(scaling, record.inputs, record.outputs, controller.interface.header)
+    comparison = compare_with_truth(scaling, record.inputs, record.outputs)
     flown = Flown(scaling.mission.name, record, comparison, controller.interface)
     print(f"flight    {flight.cycles} cycles, {flight.cycles * scaling.period_s:g} s, seed {options.seed}, controller {controller.name}\n")
     print(table((label, value) for label, (value,) in numbers([flown])))
@@ -86,8 +87,6 @@ def _rate(options: argparse.Namespace) -> tuple[float, ...] | None:
     for value in options.rate or ():
         if value not in limits:
             raise UsageError(f"--rate: {value:g} °/s, each must be in {limits} °/s")
-    if options.seed < 0:
-        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
     return tuple(options.rate) if options.rate else None
 
 

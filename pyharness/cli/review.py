@@ -15,6 +15,7 @@ from pyharness.cli.common import (
     check_writable,
     find_vector_folder,
     progress,
+    replay,
     shown,
 )
 from pyharness.compare import compare_with_truth
@@ -22,7 +23,7 @@ from pyharness.controllers import CController, load_controller
 from pyharness.loop import fly
 from pyharness.review import Flown, ReviewData, review_data, write_page
 from pyharness.scenarios import LONG
-from pyharness.vectors import Verdict, check_vector, find_vectors, read_vector
+from pyharness.vectors import Verdict, find_vectors
 from pyharness.vectors.digests import known_digests, verdict
 
 PAGE = "slackwater-review.html"
@@ -51,7 +52,7 @@ def run(options: argparse.Namespace) -> int:
     folder = find_vector_folder(options.vectors)
     find_vectors(folder)  # before the long flight: without vectors there is nothing to sign
     flights, digests = _fly(options.mission, controller, folder)
-    data = review_data(flights, [*_replay(folder, controller), *digests], _command(options))
+    data = review_data(flights, [*replay(folder, controller, options.mission), *digests], _command(options))
     write_page(data, Path(options.out))
     _tell(data, folder)
     print(f"page      {shown(options.out)}")
@@ -65,23 +66,12 @@ def _fly(mission_path: str, controller: CController, folder: Path) -> tuple[list
     flown = []
     with progress("comparing with the truth", len(records), "flight") as bar:
         for scenario, record in zip(LONG, records, strict=True):
-            comparison = compare_with_truth(
-                record.flight.scaling, record.inputs, record.outputs, controller.interface.header
-            )
+            comparison = compare_with_truth(record.flight.scaling, record.inputs, record.outputs)
             flown.append(Flown(scenario.title, record, comparison, controller.interface))
             bar.update()
     # The same flights, hashed: they must be the ones that the exact model flew when the vectors were written.
     contents = known_digests(folder, records)
     return flown, [verdict(content, record) for content, record in contents]
-
-
-def _replay(folder: Path, controller: CController) -> list[Verdict]:
-    verdicts = []
-    with progress("replaying vectors", unit="file") as bar:
-        for path in find_vectors(folder):
-            verdicts.append(check_vector(read_vector(path, controller.interface), controller))
-            bar.update()
-    return verdicts
 
 
 def _command(options: argparse.Namespace) -> str:
@@ -95,8 +85,8 @@ def _tell(data: ReviewData, folder: Path) -> None:
         when = "never settled" if settled is None else f"settled at {flown.record.time_s[settled]:.0f} s"
         print(f"flight    {flown.title}: {rate[0]:.1f} to {rate[-1]:.3f} °/s in {flown.cycles * flown.scaling.period_s:.0f} s, {when}")
     rows = sum(v.rows for v in data.vectors)
-    passed = sum(v.passed for v in data.vectors)
-    print(f"vectors   {passed} of {len(data.vectors)} passed, long flights included, {rows} rows, from {shown(folder)}")
+    equal = sum(v.passed for v in data.vectors)
+    print(f"vectors   {equal} of {len(data.vectors)} passed, long flights included, {rows} rows, from {shown(folder)}")
     for check in data.failed:
         print(f"FAIL      {check.name}: {check.figure}")
     passed = len(data.checks) - len(data.failed)

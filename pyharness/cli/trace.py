@@ -10,8 +10,10 @@ from pyharness.cli.common import (
     add_controller,
     add_mission,
     add_sources,
+    add_start,
     announce_mission,
     announce_sources,
+    check_seed,
     progress,
     table,
 )
@@ -35,8 +37,7 @@ def add_to(commands) -> None:
     )
     add_mission(parser)
     parser.add_argument("--cycle", type=int, default=200, metavar="N", help="which cycle, from 0; default: 200")
-    parser.add_argument("--seed", type=int, default=1, metavar="N", help="of attitude and sensor noise; default: 1")
-    parser.add_argument("--along-field", action="store_true", help="start with the spin along the field")
+    add_start(parser)
     add_controller(parser)
     add_sources(parser)
     parser.set_defaults(run=run)
@@ -46,11 +47,10 @@ def run(options: argparse.Namespace) -> int:
     """Run the command."""
     if not 0 <= options.cycle < MOST_CYCLES:
         raise UsageError(f"--cycle: {options.cycle}, must be in [0, {MOST_CYCLES - 1}]")
-    if options.seed < 0:
-        raise UsageError(f"--seed: {options.seed}, must be 0 or more")
+    seed = check_seed(options)
     scaling = scale(load_mission(options.mission))
     controller = load_controller(options.controller, announce_sources(options))
-    flight = Flight(scaling, options.cycle + 1, seed=options.seed, along_field=options.along_field)
+    flight = Flight(scaling, options.cycle + 1, seed=seed, along_field=options.along_field)
     with progress("flying", flight.cycles) as bar:
         (record,) = fly([flight], controller, bar.update)
     truth = Truth([scaling])

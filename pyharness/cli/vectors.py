@@ -11,6 +11,7 @@ from pyharness.cli.common import (
     announce_sources,
     find_vector_folder,
     progress,
+    replay,
     shown,
 )
 from pyharness.controllers import load_controller
@@ -18,7 +19,6 @@ from pyharness.flight import Interface
 from pyharness.mission import demo_path
 from pyharness.vectors import (
     VectorError,
-    check_vector,
     find_vectors,
     make_vectors,
     read_vector,
@@ -26,6 +26,7 @@ from pyharness.vectors import (
     write_folder,
 )
 from pyharness.vectors.digests import check_digests
+from pyharness.vectors.tell import tell_apart
 
 
 def add_to(commands) -> None:
@@ -101,8 +102,6 @@ def _read_all(folder: Path, interface: Interface) -> dict:
 
 
 def _told(before: dict, folder: Path, changed: list[str], interface: Interface) -> list[str]:
-    from pyharness.vectors.tell import tell_apart
-
     told = []
     for name in changed:
         if name.startswith("digests/"):
@@ -112,8 +111,7 @@ def _told(before: dict, folder: Path, changed: list[str], interface: Interface) 
         elif not (folder / name).is_file():
             told.append(f"{name}: removed")
         else:
-            lines = tell_apart(before[name], read_vector(folder / name, interface))
-            told += [f"{name}: {line}" for line in lines or ["the header only"]]
+            told += [f"{name}: {line}" for line in tell_apart(before[name], read_vector(folder / name, interface))]
     return told
 
 
@@ -122,12 +120,7 @@ def run_check(options: argparse.Namespace) -> int:
     sources = announce_sources(options)
     controller = load_controller(options.controller, sources)
     folder = find_vector_folder(options.folder)
-    paths = find_vectors(folder)
-    verdicts = []
-    with progress("replaying", len(paths), "file") as bar:
-        for path in paths:
-            verdicts.append(check_vector(read_vector(path, controller.interface), controller, options.mission))
-            bar.update()
+    verdicts = replay(folder, controller, options.mission)
     if options.long:
         with progress("flying") as bar:
             verdicts += check_digests(folder, controller, options.mission, bar)

@@ -64,9 +64,9 @@ def _read(source: str) -> bytes:
     try:
         return Path(source).read_bytes()
     except OSError as error:
-        raise MissionError(source, [f"cannot be read: {error.strerror}"]) from error
+        raise MissionError(source, [f"cannot be read: {error.strerror}"], whole_file=True) from error
     except ValueError as error:  # a path with a zero in it
-        raise MissionError(source, [f"cannot be read: {error}"]) from error
+        raise MissionError(source, [f"cannot be read: {error}"], whole_file=True) from error
 
 
 def _parse(raw: bytes, source: str) -> dict[str, object]:
@@ -79,7 +79,7 @@ def _parse(raw: bytes, source: str) -> dict[str, object]:
         problem = "is not a mission file: nested too deeply"
     except ValueError as error:  # TOMLDecodeError, and what int() has against very long numbers
         problem = f"is not valid TOML: {error}{_line_told(raw, str(error))}"
-    raise MissionError(source, [problem])
+    raise MissionError(source, [problem], whole_file=True)
 
 
 def _merged(base: object, over: Tree) -> dict[str, object]:

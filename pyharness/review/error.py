@@ -32,8 +32,7 @@ def error_figure(flown: Flown) -> Figure:
         time, _ = time_of(flown)
         bins = Bins(flown.cycles)
         at = bins.mean(time)
-        to_ma_m2 = comparison.dipole_a_m2 / 32768 * 1e3
-        error, bound = comparison.command_error * to_ma_m2, comparison.command_bound * to_ma_m2
+        error, bound = comparison.command_error_a_m2 * 1e3, comparison.command_bound_a_m2 * 1e3
         _error_against_bound(command, at, bins, error, bound)
         command.set_ylabel("[mA m²]")
         command.set_title("Mean dipole, largest of the three axes")

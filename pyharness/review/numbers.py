@@ -87,7 +87,7 @@ def _error(flown: Flown) -> str:
     comparison = flown.comparison
     error = comparison.command_error_a_m2 * 1e3
     where = np.unravel_index(np.argmax(error), error.shape)
-    bound = (comparison.command_bound / 32768 * comparison.dipole_a_m2 * 1e3)[where]
+    bound = comparison.command_bound_a_m2[where] * 1e3
     return f"{error[where]:.3f} mA m² where {bound:.3f} are allowed (axis {AXES[where[1]]}, cycle {where[0]})"
 
 

@@ -9,7 +9,6 @@ import numpy as np
 
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import Controller, ControllerError, TruthController
-from pyharness.flight import Interface
 from pyharness.flight.records import columns, to_columns
 from pyharness.mission import load_mission
 from pyharness.scaling import Integers, scale
@@ -47,15 +46,13 @@ def _top_and_stage(column: str) -> tuple[str, str]:
     return parts[0], parts[1] if len(parts) > 1 else ""
 
 
-def check_folder(
-    folder: Path, controller: Controller, interface: Interface, mission_path: str | None = None
-) -> Iterator[Verdict]:
-    """Check every file of a folder, one verdict each. Raises VectorError if there is none, or one cannot be read.
+def check_folder(folder: Path, controller: Controller, mission_path: str | None = None) -> Iterator[Verdict]:
+    """Check every file of a folder, one verdict each. Raises NoVectors if there is none, VectorError if one cannot be read.
 
     `mission_path` is needed for the truth, which works in physical units.
     """
     for path in find_vectors(folder):
-        yield check_vector(read_vector(path, interface), controller, mission_path)
+        yield check_vector(read_vector(path, controller.interface), controller, mission_path)
 
 
 def check_vector(vector: VectorFile, controller: Controller, mission_path: str | None = None) -> Verdict:
@@ -94,7 +91,7 @@ def _against_truth(vector: VectorFile, controller: TruthController, mission_path
     if scaling.config["digest"] != vector.config["digest"]:
         told = f"written for another mission: configuration {vector.config['digest']:08x}, this one has {scaling.config['digest']:08x}"
         return Verdict(vector.label, vector.purpose, len(vector.inputs), False, told)
-    result = compare_with_truth(scaling, vector.inputs, vector.outputs, controller.interface.header)
+    result = compare_with_truth(scaling, vector.inputs, vector.outputs)
     worst = result.command_error_a_m2.max(initial=0.0) * 1e3
     told = f"within {result.used:.2f} of the bound, at most {worst:.3g} mA m² apart" if result.within else (
         f"outside the bound: {max(result.used, result.used_ticks):.2f} of it, {worst:.3g} mA m² apart"

@@ -111,11 +111,19 @@ def first_difference(content: dict[str, Any], record: Record) -> str | None:
     """Where a flight departs from a digest file, in words; None if it does not."""
     if content["config_digest"] != config_digest(record):
         return f"configuration {config_digest(record)}, the digest is for {content['config_digest']}"
-    found = hashes(record)
-    if len(record.inputs) != content["cycles"]:
-        return f"{len(record.inputs)} cycles, the digest has {content['cycles']}"
-    for i, (want, have) in enumerate(zip(content["checkpoints"], found, strict=False)):
-        if want != have:
-            every = content["checkpoint_every"]
-            return f"integers differ first between cycles {i * every} and {min((i + 1) * every, content['cycles']) - 1}"
-    return None if len(found) == len(content["checkpoints"]) else "the number of checkpoints differs"
+    flown = {"cycles": len(record.inputs), "checkpoint_every": CHECKPOINT, "checkpoints": hashes(record)}
+    if all(content[key] == value for key, value in flown.items()):
+        return None
+    return tell_digests_apart(flown, content)
+
+
+def tell_digests_apart(a: dict[str, Any], b: dict[str, Any]) -> str:
+    """Where two long flights, known by their hashes, part."""
+    for key in ("cycles", "checkpoint_every"):
+        if a[key] != b[key]:
+            return f"{key}: {a[key]} against {b[key]}"
+    every = a["checkpoint_every"]
+    for i, (ours, theirs) in enumerate(zip(a["checkpoints"], b["checkpoints"], strict=False)):
+        if ours != theirs:
+            return f"integers differ first between cycles {i * every} and {min((i + 1) * every, a['cycles']) - 1}"
+    return "the header only, or the number of checkpoints"

@@ -10,6 +10,7 @@ from pyharness.flight import Interface
 from pyharness.flight.records import columns, to_columns
 from pyharness.scaling import Config
 from pyharness.vectors.check import stage_of
+from pyharness.vectors.digests import read_digest, tell_digests_apart
 from pyharness.vectors.files import VectorFile, find_vectors, read_vector
 
 
@@ -22,12 +23,25 @@ def tell_folders_apart(a: Path, b: Path, interface: Interface) -> list[str]:
     for name in sorted(files_a.keys() & files_b.keys()):
         if files_a[name].read_bytes() != files_b[name].read_bytes():
             differences = tell_apart(read_vector(files_a[name], interface), read_vector(files_b[name], interface))
-            told += [f"{name}: {line}" for line in differences or ["the header only"]]
+            told += [f"{name}: {line}" for line in differences]
+    return told + _tell_digests_apart(a, b)
+
+
+def _tell_digests_apart(a: Path, b: Path) -> list[str]:
+    """What differs between the long flights, which are there as hashes only."""
+    names = sorted({path.name for folder in (a, b) for path in (folder / "digests").glob("*.json")})
+    told = []
+    for name in names:
+        ours, theirs = a / "digests" / name, b / "digests" / name
+        if not (ours.is_file() and theirs.is_file()):
+            told.append(f"digests/{name}: only in {a if ours.is_file() else b}")
+        elif ours.read_bytes() != theirs.read_bytes():
+            told.append(f"digests/{name}: {tell_digests_apart(read_digest(ours), read_digest(theirs))}")
     return told
 
 
 def tell_apart(a: VectorFile, b: VectorFile) -> list[str]:
-    """What differs between two files, a line for each thing."""
+    """What differs between two files that are not the same, a line for each thing."""
     told = [f"configuration: {line}" for line in _config_lines(a.config, b.config)]
     if len(a.inputs) != len(b.inputs):
         return [*told, f"{len(a.inputs)} rows against {len(b.inputs)}"]
@@ -48,7 +62,7 @@ def tell_apart(a: VectorFile, b: VectorFile) -> list[str]:
             f"{group}: {int(rows.sum())} of {len(rows)} rows, first {int(np.flatnonzero(rows)[0])}; most in {names[worst]}, "
             f"row {row}: {values_a[row, worst]:.6g} against {values_b[row, worst]:.6g}{' ' + size.unit if size else ''}"
         )
-    return told
+    return told or ["the header only"]
 
 
 def _group(name: str) -> str:

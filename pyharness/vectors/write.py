@@ -70,6 +70,8 @@ def _named(item: Scenario | Unit, make: Callable):
     try:
         return make()
     except MissionError as error:
+        if error.whole_file:
+            raise
         raise MissionError(f"{error.source} as scenario {item.name} changes it", error.problems) from None
 
 

@@ -163,8 +163,15 @@ def test_vectors_compare(capsys, tmp_path):
     lines = path.read_text().splitlines()
     lines[-1] = lines[-1][: lines[-1].rindex(",")] + ",7"
     path.write_text("\n".join([*lines, ""]))
+    digest = other / "digests" / "detumble.json"
+    content = json.loads(digest.read_text())
+    content["checkpoints"][3] = "0" * 16
+    digest.write_text(json.dumps(content))
+    (other / "digests" / "detumble-along-field.json").unlink()
     status, out, _ = run(capsys, "vectors", "compare", VECTORS, other)
     assert status == 1 and "unit/pulses: pulses: 1 of 180 rows, first 179" in out
+    assert "digests/detumble.json: integers differ first between cycles 1800 and 2399" in out
+    assert f"digests/detumble-along-field.json: only in {VECTORS}" in out
 
 
 @pytest.mark.parametrize(

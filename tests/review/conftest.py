@@ -30,7 +30,7 @@ def flights() -> list[Flown]:
     )
     interface = controller.interface
     return [
-        Flown(title, r, compare_with_truth(scaling, r.inputs, r.outputs, interface.header), interface)
+        Flown(title, r, compare_with_truth(scaling, r.inputs, r.outputs), interface)
         for title, r in zip(("nominal tip-off", "start along the field"), records, strict=True)
     ]
 

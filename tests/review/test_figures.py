@@ -171,16 +171,11 @@ def test_modes_too_narrow_for_their_names_are_told_by_their_colour(flown):
 
 
 def test_short_pulses_are_counted_alike_in_figure_and_table(flown):
-    outputs, comparison = flown.record.outputs.copy(), flown.comparison
+    outputs = flown.record.outputs.copy()
     bits = [1 << flown.constant(f"S_SHORT_PULSE_{axis}") for axis in "XYZ"]
     outputs["status"] &= np.uint32(~sum(bits) & 0xFFFFFFFF)
     outputs["status"][[10, 20, 400]] |= np.uint32(bits[1])  # two in hold-off, one while damping
-    dropped = np.stack([outputs["status"] & bit != 0 for bit in bits], axis=1)
-    flown = replace(
-        flown,
-        record=replace(flown.record, outputs=outputs),
-        comparison=replace(comparison, dropped=dropped),
-    )
+    flown = replace(flown, record=replace(flown.record, outputs=outputs))
     assert [text.get_text() for text in error_figure(flown).axes[3].texts] == ["0", "1", "0"]
     assert dict(numbers([flown]))["Short pulses dropped while damping"] == ["x 0, y 1, z 0"]
 
