@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from pyharness.flight import Interface
-from pyharness.scaling import Q15, Scaling
+from pyharness.scaling import FULL_SCALE, NEVER_A_JUMP, Q15, Scaling
 
 
 @dataclass(frozen=True)
@@ -57,15 +57,19 @@ _CHOICES = {"law": "MRD_LAW_", "gain_scaling": "MRD_GAIN_", "saturation": "MRD_S
 def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interface) -> str:
     leaf = name.rpartition(".")[2]
     number = integers[0]
+    if leaf.startswith("current_"):
+        return _current(leaf, integers, s)
     if leaf.endswith("_us"):
         return _all(integers, 1e-3, "ms")
     if leaf.endswith("_ticks"):
         return _all(integers, s.timeline.tick_us * 1e-3, "ms")
     if leaf in _CHOICES:
         return interface.header.named(_CHOICES[leaf])[number].lower().replace("_", " ")
+    if leaf in _DEFENCES:
+        return _defence(leaf, number, s)
     if leaf in ("settled_rate", "wake_rate"):
         return _all(integers, math.degrees(s.rate_rad_s), "°/s")
-    if leaf in ("settle_dwell", "wake_dwell"):
+    if leaf in ("settle_dwell", "wake_dwell", "window_cycles", "pause_cycles"):
         return _all(integers, s.period_s, "s")
     if leaf in ("norm_min_sq", "norm_max_sq"):
         return f"{math.sqrt(number) * s.field_t * 1e6:.4g} µT"
@@ -75,7 +79,9 @@ def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interfac
         return f"{number} s"
     if name.startswith("path.mag."):
         return _sensor(leaf, integers, s.config["path"]["mag"]["shift"], s.raw_field_t * 1e9, s.field_t * 1e9, "nT")
-    if name.startswith("path.gyro.") and s.raw_rate_rad_s is not None:
+    if name.startswith("path.gyro."):
+        if s.raw_rate_rad_s is None:
+            return "not fitted"
         raw, count = math.degrees(s.raw_rate_rad_s), math.degrees(s.rate_rad_s)
         return _sensor(leaf, integers, s.config["path"]["gyro"]["shift"], raw, count, "°/s")
     if name.startswith("path.rate_gain.") and s.mission.control.law != "rate":
@@ -86,6 +92,54 @@ def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interfac
     if leaf == "digest":
         return f"0x{number:08x}"
     return ""
+
+
+_OFF = {
+    "jump_max_sq": NEVER_A_JUMP, "noise_limit": 65535, "frozen_limit": 0, "dead_limit": 0, "gyro_frozen_limit": 0,
+    "agree_limit": 0, "guard_rate": 65535,
+}  # fmt: skip
+"""Defences, and the value that switches each off."""
+_DEFENCES = (*_OFF, "agree_mantissa", "agree_shift", "agree_rate_max", "growth", "progress")
+
+
+def _defence(leaf: str, number: int, s: Scaling) -> str:
+    if number == _OFF.get(leaf):
+        return "off"
+    if leaf == "guard_rate":
+        return f"{number * math.degrees(s.rate_rad_s):.4g} °/s"
+    if leaf.endswith(("frozen_limit", "dead_limit")):
+        return f"{number * s.period_s:.5g} s"
+    if leaf == "jump_max_sq":
+        return f"{math.sqrt(number) * s.field_t * 1e6:.4g} µT"
+    if leaf == "noise_limit":
+        return f"{number * s.field_t * 1e6:.4g} µT"
+    if leaf == "growth":
+        return f"diverging at {100 * (number / 256 - 1):.4g} % more than a window before"
+    if leaf == "progress":
+        return f"no progress at less than {100 * (1 - number / 256):.4g} % below two windows before"
+    return _agreement(leaf, number, s)
+
+
+def _agreement(leaf: str, number: int, s: Scaling) -> str:
+    path = s.config["path"]
+    if not path["agree_limit"]:
+        return "not compared"
+    if leaf == "agree_limit":
+        return f"{math.degrees(number / FULL_SCALE / s.period_s):.4g} °/s in the greatest plausible field"
+    if leaf == "agree_rate_max":
+        return f"{math.degrees(number * s.rate_rad_s):.5g} °/s"
+    return f"{number / 2.0 ** path['agree_shift']:.5g} in counts" if leaf == "agree_mantissa" else ""
+
+
+def _current(leaf: str, integers: tuple[int, ...], s: Scaling) -> str:
+    sense = s.mission.current_sense
+    if sense is None:
+        return "not fitted"
+    if leaf == "current_fitted":
+        return "fitted"
+    if leaf == "current_ticks":
+        return _all(integers, s.timeline.tick_us * 1e-3, "ms")
+    return _all(integers, 100.0 / sense.counts_at_full, "% of full current")
 
 
 def _sensor(leaf: str, integers: tuple[int, ...], shift: int, raw: float, count: float, unit: str) -> str:

@@ -6,31 +6,20 @@ to the next mid-sample under them. The host stamps what really happened.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import math
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 
 from pyharness.controllers import Controller
-from pyharness.events import (
-    Command,
-    DropGyro,
-    DropSample,
-    Event,
-    Jitter,
-    Kick,
-    LateStamps,
-    LateSwitchOff,
-    LoseStamps,
-    LowPower,
-    jitter_us,
-)
-from pyharness.mission.model import Vector
-from pyharness.plant import Plant, Sample
+from pyharness.events import Event
+from pyharness.host import Host
+from pyharness.mission.model import Mission, Vector
+from pyharness.plant import Plant
 from pyharness.plant.field import Environment
+from pyharness.plant.orbit import orbital_period
 from pyharness.scaling import Scaling
-
-WRAP = 2**32
 
 
 @dataclass(frozen=True)
@@ -47,6 +36,16 @@ class Flight:
     orbit_s: float = 0.0  # start after the epoch of the orbit
     supply_v: float | None = None  # that drives the coils; None: nominal
     events: tuple[Event, ...] = field(default=())
+
+
+def settling_time_s(mission: Mission) -> float:
+    """By when a mission should have settled: an orbit to stop the tumble, and its hold-off and dwell, s."""
+    return orbital_period(mission.orbit) + mission.control.hold_off_s + mission.control.dwell_s
+
+
+def long_cycles(scaling: Scaling) -> int:
+    """That time in full cycles."""
+    return math.ceil(settling_time_s(scaling.mission) / scaling.period_s)
 
 
 @dataclass
@@ -72,6 +71,18 @@ class Record:
         return (self.outputs["status"] >> np.uint32(number) & 1).astype(bool)
 
 
+@dataclass(frozen=True)
+class Cycle:
+    """One cycle of all flights that are still on, in the order in which `each_cycle` was given them; n of them, and all arrays are new."""
+
+    number: int
+    inputs: np.ndarray  # (n,) records mrd_inputs
+    outputs: np.ndarray  # (n,) records mrd_outputs
+    rate_rad_s: np.ndarray  # (n, 3) true, body axes at mid-sample
+    field_t: np.ndarray  # (n, 3) true
+    applied_ticks: np.ndarray  # (n, 3) pulses as they really were
+
+
 def fly(
     flights: Sequence[Flight],
     controller: Controller,
@@ -83,58 +94,58 @@ def fly(
     `environment` takes the place of the orbits' (a `ConstantField`, say). The result of a flight does not depend on the
     others. All missions must have the same period (ValueError).
     """
-    # Longest first: the flights that are still on are always the first of the batch.
-    order = sorted(range(len(flights)), key=lambda i: -flights[i].cycles)
+    order = longest_first(flights)
     ordered = [flights[i] for i in order]
-    records = _fly_ordered(ordered, controller, progress or (lambda n: None), environment)
-    result: list[Record | None] = [None] * len(flights)
-    for place, record in zip(order, records, strict=True):
-        result[place] = record
-    return result
-
-
-def _fly_ordered(
-    flights: list[Flight], controller: Controller, progress: Callable[[int], None], environment: Environment | None
-) -> list[Record]:
-    scalings = [flight.scaling for flight in flights]
-    controller.configure(scalings)
-    n, longest = len(flights), flights[0].cycles
-    plant = _plant(flights, longest, environment)
-    host = _Host(flights)
-    lengths = np.array([flight.cycles for flight in flights])
-
+    n, longest = len(ordered), ordered[0].cycles
     inputs = np.zeros((longest, n), controller.interface.inputs)
     outputs = np.zeros((longest, n), controller.interface.outputs)
-    rate, field_t = np.empty((longest, 3, n)), np.empty((longest, 3, n))
-    applied = np.zeros((longest, 3, n), dtype=np.int32)
+    rate, field_t, applied = np.empty((longest, n, 3)), np.empty((longest, n, 3)), np.zeros((longest, n, 3), np.int32)
+    for cycle in each_cycle(ordered, controller, environment):
+        row, on = cycle.number, len(cycle.outputs)
+        inputs[row, :on], outputs[row, :on] = cycle.inputs, cycle.outputs
+        rate[row, :on], field_t[row, :on], applied[row, :on] = cycle.rate_rad_s, cycle.field_t, cycle.applied_ticks
+        if progress:
+            progress(1)
+    placed = {
+        i: Record(
+            flight=flights[i], controller=controller.name, time_s=np.arange(flights[i].cycles) * flights[i].scaling.period_s,
+            **{name: values[: flights[i].cycles, place].copy() for name, values in
+               (("inputs", inputs), ("outputs", outputs), ("rate_rad_s", rate), ("field_t", field_t), ("applied_ticks", applied))},
+        )
+        for place, i in enumerate(order)
+    }  # fmt: skip
+    return [placed[i] for i in range(len(flights))]
+
+
+def longest_first(flights: Sequence[Flight]) -> list[int]:
+    """The order in which a batch is flown: the flights that are still on are always the first of it."""
+    return sorted(range(len(flights)), key=lambda i: -flights[i].cycles)
+
+
+def each_cycle(flights: Sequence[Flight], controller: Controller, environment: Environment | None = None) -> Iterator[Cycle]:
+    """Fly a batch, longest flight first, and hand out every cycle: for those who keep only some of it."""
+    controller.configure([flight.scaling for flight in flights])
+    n, longest = len(flights), flights[0].cycles
+    plant = _plant(flights, longest, environment)
+    host = Host(flights, controller)
+    lengths = np.array([flight.cycles for flight in flights])
     ticks, late = np.zeros((3, n), dtype=np.int64), np.zeros((3, n), dtype=np.int64)
+    inputs = np.zeros(n, controller.interface.inputs)
 
     for cycle in range(longest):
         on = int((lengths > cycle).sum())
         host.kick(plant, cycle)
         offset_us = host.sample_offset_us(cycle)
-        sample = plant.sample(offset_us * 1e-6)
-        host.fill(inputs[cycle], sample, offset_us, cycle)
-        rate[cycle], field_t[cycle] = plant.rate, plant.field_body
-        outputs[cycle, :on] = controller.step(inputs[cycle, :on])
-        ticks[:, :on] = outputs[cycle, :on]["ticks"].T
+        inputs = host.inputs(plant.sample(offset_us * 1e-6), offset_us, cycle, inputs)
+        rate, field_t = plant.rate, plant.field_body
+        host.tamper(cycle)
+        outputs = controller.step(inputs[:on])
+        ticks[:, :on] = outputs["ticks"].T
         ticks[:, on:] = 0
         host.late_ticks(late, ticks, cycle)
-        applied[cycle] = ticks + np.sign(ticks) * late
-        host.stamp(plant.drive(ticks, late), ticks, cycle)
-        progress(1)
-
-    period_s = plant.period_us * 1e-6
-    return [
-        Record(
-            flight=flight, controller=controller.name,
-            inputs=inputs[: flight.cycles, i].copy(), outputs=outputs[: flight.cycles, i].copy(),
-            time_s=np.arange(flight.cycles) * period_s,
-            rate_rad_s=rate[: flight.cycles, :, i].copy(), field_t=field_t[: flight.cycles, :, i].copy(),
-            applied_ticks=applied[: flight.cycles, :, i].copy(),
-        )
-        for i, flight in enumerate(flights)
-    ]  # fmt: skip
+        applied = ticks + np.sign(ticks) * late
+        host.stamp(plant.drive(ticks, late, host.health(ticks, cycle)), ticks, cycle)
+        yield Cycle(cycle, inputs[:on], outputs, rate[:, :on].T, field_t[:, :on].T, applied[:, :on].T)
 
 
 def _plant(flights: list[Flight], cycles: int, environment: Environment | None) -> Plant:
@@ -155,89 +166,3 @@ def _plant(flights: list[Flight], cycles: int, environment: Environment | None) 
     along = np.array([flight.along_field for flight in flights])
     plant.rate = np.where(along, plant.rate_along_field(speed), plant.rate)
     return plant
-
-
-class _Host:
-    """The host computers of N spacecraft: clocks, stamps, flags and commands."""
-
-    def __init__(self, flights: list[Flight]):
-        self._flights = flights
-        self._start_us = np.array([flight.start_us for flight in flights], dtype=np.int64)
-        config = [flight.scaling.config["path"] for flight in flights]
-        self._period_us = config[0]["period_us"]
-        self._phase_us = np.array([c["phase_us"] for c in config], dtype=np.int64)
-        self._window_us = self._phase_us + np.array([c["delay_us"] for c in config], dtype=np.int64)
-        self._separation_s = np.array([flight.separation_s for flight in flights], dtype=np.int64)
-        self._gyro = np.array([c["gyro_fitted"] for c in config])
-        # Until the first pulse, the stamps say that the coils went off a cycle ago.
-        self._switch_off_us = np.repeat(self._start_us[:, None] - self._period_us, 3, axis=1)
-        self._before_us = self._switch_off_us
-        self._events = [(i, event) for i, flight in enumerate(flights) for event in flight.events]
-
-    def _of(self, kind: type, cycle: int) -> list[tuple[int, Event]]:
-        """The events of a kind that happen in this cycle, with their spacecraft."""
-        return [(i, event) for i, event in self._events if isinstance(event, kind) and event.covers(cycle)]
-
-    def kick(self, plant: Plant, cycle: int) -> None:
-        """Set the rates of those that are kicked."""
-        for i, event in self._of(Kick, cycle):
-            rate = plant.rate
-            rate[:, i] = np.radians(event.rate_deg_s)
-            plant.rate = rate
-
-    def sample_offset_us(self, cycle: int) -> np.ndarray:
-        """How far each sample is from its nominal time, (N,)."""
-        offset = np.zeros(len(self._flights), dtype=np.int64)
-        for i, event in self._of(Jitter, cycle):
-            offset[i] = jitter_us(event, cycle)
-        return offset
-
-    def fill(self, inputs: np.ndarray, sample: Sample, offset_us: np.ndarray, cycle: int) -> None:
-        """Fill the inputs (N,) of one cycle."""
-        start_us = self._start_us + cycle * self._period_us
-        path = inputs["path"]
-        path["cycle_start_us"] = start_us % WRAP
-        path["sample_us"] = (start_us + self._phase_us + offset_us) % WRAP
-        path["switch_off_us"] = self._stamps(cycle, start_us) % WRAP
-        path["mag_raw"] = sample.mag_counts.T
-        path["gyro_raw"] = sample.gyro_counts.T
-        path["mag_valid"] = 1
-        path["gyro_valid"] = self._gyro
-        inputs["separation_s"] = self._separation_s + cycle * self._period_us // 1_000_000
-        for i, _ in self._of(DropSample, cycle):
-            path["mag_valid"][i] = 0
-            path["mag_raw"][i] = 0
-        for i, _ in self._of(DropGyro, cycle):
-            path["gyro_valid"][i] = 0
-            path["gyro_raw"][i] = 0
-        for i, _ in self._of(LowPower, cycle):
-            inputs["low_power"][i] = 1
-        for i, event in self._of(Command, cycle):
-            inputs["command"][i], inputs["command_key"][i] = event.code, event.key
-            inputs["command_coil"][i], inputs["command_ticks"][i] = event.coil, event.ticks
-
-    def _stamps(self, cycle: int, start_us: np.ndarray) -> np.ndarray:
-        """The stamps that the host hands in, (N, 3)."""
-        for i, event in self._events:
-            if isinstance(event, LoseStamps) and cycle == event.end:
-                self._switch_off_us[i] = start_us[i]
-        stamps = self._switch_off_us.copy()
-        for i, _ in self._of(LateStamps, cycle):
-            stamps[i] = self._before_us[i]
-        return stamps
-
-    def late_ticks(self, late: np.ndarray, ticks: np.ndarray, cycle: int) -> None:
-        """Fill how late each coil (3, N) is switched off."""
-        late[...] = 0
-        for i, event in self._of(LateSwitchOff, cycle):
-            if ticks[event.coil, i]:
-                late[event.coil, i] = event.ticks
-
-    def stamp(self, switch_off_us: np.ndarray, ticks: np.ndarray, cycle: int) -> None:
-        """Take the actual switch-offs, µs after the start of the drive window, (3, N)."""
-        self._before_us = self._switch_off_us
-        actual = (self._start_us + cycle * self._period_us + self._window_us)[:, None] + switch_off_us.T
-        stamped = ticks.T != 0
-        for i, _ in self._of(LoseStamps, cycle):
-            stamped[i] = False
-        self._switch_off_us = np.where(stamped, actual, self._switch_off_us)

@@ -14,12 +14,14 @@ from pyharness import exact
 from pyharness.exact import constants as mrd
 from pyharness.gain import Gain, gain_of
 from pyharness.mission import Mission, MissionError
+from pyharness.mission.defence import COMPARED_RAD, PULSE_TIME_CONSTANTS, pulse_share
 from pyharness.mission.model import AXES, Matrix, Vector
 from pyharness.plant.cycle import Timeline
 from pyharness.plant.sensors import rotation_matrix
 
 FULL_SCALE = 32767
 Q15 = 32768
+NEVER_A_JUMP = 3 * FULL_SCALE**2
 TIP_OFF_MARGIN = 1.25
 """Full scale of the rate over the tip-off rate."""
 
@@ -77,10 +79,15 @@ class Scaling:
         sizes = {
             "field": Size(self.field_t * 1e9, "nT"),
             "rate": Size(math.degrees(self.rate_rad_s), "°/s"),
+            "norm": Size(self.field_t * 1e9, "nT"),
+            "norm_change": Size(self.field_t * 1e9, "nT"),
             "norm_sq": Size((self.field_t * 1e6) ** 2, "µT²"),
+            "jump_sq": Size((self.field_t * 1e6) ** 2, "µT²"),
             "derivative": Size(per_second * 1e9, "nT/s"),
             "filtered": Size(per_second * 1e9, "nT/s"),
             "filter": Size(per_second * 1e9 / 256, "nT/s"),
+            "residual": Size(per_second * 1e9, "nT/s"),
+            "across": Size(math.degrees(self.rate_rad_s), "°/s"),
             "factor": Size(1 / 16384, "period/interval"),
             "cross": Size(self.rate_rad_s * self.field_t * 1e9, "rad/s nT"),
             "demand": Size(self.command_a_m2(axis) * 1e3, "mA m²"),
@@ -92,6 +99,9 @@ class Scaling:
         }
         if self.raw_rate_rad_s is not None:
             sizes["gyro_raw"] = Size(math.degrees(self.raw_rate_rad_s), "°/s")
+        if self.mission.current_sense is not None:
+            percent = Size(100.0 / self.mission.current_sense.counts_at_full, "% of full current")
+            sizes |= {"current_driven": percent, "current_sampled": percent}
         if leaf.endswith("_us"):
             return Size(1e-3, "ms")
         return None if name == "command" else sizes.get(leaf)  # the operator's command has no size
@@ -156,6 +166,9 @@ def _path(s: Scaling, problems: list[str]) -> Config:
         "derivative_gain": _gain(s, "derivative law", s.field_t / s.period_s, 0, problems),
         "rate_gain": _gain(s, "rate-damping law", s.rate_rad_s * s.field_t, 16, problems) if control.law == "rate"
         else _no_gain(control.gain_scaling, norm_min),
+        **_continuity(s),
+        **_agreement(s),
+        **_current_sense(s),
     }  # fmt: skip
 
 
@@ -165,8 +178,65 @@ def _norm_range(s: Scaling) -> tuple[int, int]:
     return tuple(round((ut * 1e-6 / s.field_t) ** 2) for ut in (control.field_min_ut, control.field_max_ut))
 
 
+def _continuity(s: Scaling) -> Config:
+    defence = s.mission.defence
+    jump, noise = (ut * 1e-6 / s.field_t for ut in (defence.jump_ut, defence.noise_ut))
+    return {
+        "jump_max_sq": _limited(jump * jump, 1, NEVER_A_JUMP),
+        "noise_limit": _limited(noise, 1, 65535),
+        "frozen_limit": _cycles(s, defence.frozen_s),
+        "dead_limit": _cycles(s, defence.dead_axis_s),
+        "gyro_frozen_limit": _cycles(s, defence.gyro_frozen_s),
+    }
+
+
+def _agreement(s: Scaling) -> Config:
+    """Gyro against field; not compared without a gyro, or where the factor from rate to turn leaves its range."""
+    turn_rad = s.rate_rad_s * s.period_s  # in a period, of one rate count
+    mantissa, shift = _mantissa(turn_rad * 65536)
+    error_deg_s = s.mission.defence.gyro_error_deg_s
+    if s.mission.gyro is None or not 1 <= shift <= 31:
+        return {"agree_limit": 0, "agree_mantissa": Q15, "agree_shift": 31, "agree_rate_max": 1}
+    limit = math.radians(error_deg_s) * s.period_s * FULL_SCALE  # the greatest plausible field
+    return {
+        "agree_limit": _limited(limit, 1, 65535) if error_deg_s else 0,
+        "agree_mantissa": mantissa,
+        "agree_shift": shift,
+        "agree_rate_max": _limited(COMPARED_RAD / turn_rad, 1, FULL_SCALE),
+    }
+
+
+def _current_sense(s: Scaling) -> Config:
+    sense, supply = s.mission.current_sense, s.mission.supply
+    if sense is None:
+        return {"current_fitted": 0, "current_ticks": 1, "current_min": (2, 2, 2), "current_off_max": 1}
+    slowest_us = max(coil.time_constant_ms for coil in s.mission.coil) * 1e3
+    judged_ticks = _whole_up(PULSE_TIME_CONSTANTS * slowest_us / s.timeline.tick_us)
+    expected = sense.counts_at_full * supply.min_v / supply.nominal_v * pulse_share()
+    return {
+        "current_fitted": 1,
+        "current_ticks": min(s.timeline.window_ticks, judged_ticks),
+        "current_min": (round(sense.weak_percent / 100.0 * expected),) * 3,
+        "current_off_max": sense.off_counts,
+    }
+
+
+def _limited(value: float, least: int, greatest: int) -> int:
+    return min(greatest, max(least, round(value)))
+
+
+def _whole_up(value: float) -> int:
+    """Rounded up, but not over the last bit of a decimal fraction."""
+    return math.ceil(value - 1e-6)
+
+
+def _cycles(s: Scaling, seconds: float) -> int:
+    """The cycles that last this long at least."""
+    return _whole_up(seconds / s.period_s)
+
+
 def _supervisor(s: Scaling, problems: list[str]) -> Config:
-    control = s.mission.control
+    control, defence = s.mission.control, s.mission.defence
     mantissa, shift = _mantissa(1.0 / (Q15 * s.period_s * s.rate_rad_s))
     if not 1 <= shift <= 31:
         problems.append(
@@ -180,14 +250,20 @@ def _supervisor(s: Scaling, problems: list[str]) -> Config:
             f"{s.timeline.drive_window_us / 1e3:g}] ms, from one tick to the drive window"
         )
     return {
-        "settle_dwell": max(1, math.ceil(control.dwell_s / s.period_s)),
-        "wake_dwell": max(1, math.ceil(control.wake_dwell_s / s.period_s)),
+        "settle_dwell": max(1, _cycles(s, control.dwell_s)),
+        "wake_dwell": max(1, _cycles(s, control.wake_dwell_s)),
         "hold_off_s": control.hold_off_s,
         "settle_by": {"field": mrd.MRD_SETTLE_BY_FIELD, "gyro": mrd.MRD_SETTLE_BY_GYRO}[control.settle_by],
-        "settled_rate": _rate_count(s, "settled_deg_s", control.settled_deg_s, problems),
-        "wake_rate": _rate_count(s, "wake_deg_s", control.wake_deg_s, problems),
+        "settled_rate": _rate_count(s, "control.settled_deg_s", control.settled_deg_s, problems),
+        "wake_rate": _rate_count(s, "control.wake_deg_s", control.wake_deg_s, problems),
         "estimate_mantissa": mantissa,
         "estimate_shift": shift,
+        "window_cycles": max(1, _cycles(s, defence.window_s)),
+        "pause_cycles": max(1, _cycles(s, defence.pause_s)),
+        "guard_rate": _rate_count(s, "defence.guard_deg_s", defence.guard_deg_s, problems) if defence.divergence_guard else 65535,
+        "growth": _limited(256.0 * (1.0 + defence.growth_percent / 100.0), 257, 1024),
+        "progress": _limited(256.0 * (1.0 - defence.progress_percent / 100.0), 1, 256),
+        "retries": defence.retries,
         "bench_key": control.bench_key,
         "bench_limit_ticks": bench,
     }
@@ -197,7 +273,7 @@ def _rate_count(s: Scaling, key: str, deg_s: float, problems: list[str]) -> int:
     count = round(math.radians(deg_s) / s.rate_rad_s)
     if not 1 <= count <= 65534:
         problems.append(
-            f"control.{key}: {deg_s:g} °/s, must be in [{math.degrees(s.rate_rad_s):.2g}, "
+            f"{key}: {deg_s:g} °/s, must be in [{math.degrees(s.rate_rad_s):.2g}, "
             f"{math.degrees(s.rate_rad_s) * 65534:.4g}] °/s, the range of the rate at this tip-off rate"
         )
     return count

@@ -3,20 +3,30 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
 from fsw_c.runs import Bank
 
 from pyharness import exact
+from pyharness.describe import describe_config
 from pyharness.gain import gain_of, recommended_gain_n_m_s, rms_field_t
-from pyharness.mission import MissionError, demo_path, load_mission
+from pyharness.mission import MissionError, demo_path, load_mission, mission_path
 from pyharness.plant.sensors import rotation_matrix
-from pyharness.scaling import _mantissa, scale
+from pyharness.scaling import _agreement, _mantissa, scale
 
 
 def scaled(**control):
     return scale(load_mission(demo_path(), {"control": control}))
+
+
+def with_tables(mission="demo", **tables):
+    return scale(load_mission(mission_path(mission), tables))
+
+
+def path_of(**tables):
+    return with_tables(**tables).config["path"]
 
 
 def test_the_controller_accepts_the_integers(library, demo_scaling):
@@ -118,6 +128,111 @@ def test_a_gain_that_would_lose_its_mantissa_is_refused():
         for legal in (float(low), float(high)):  # the range it names is legal
             scaled(**({"K_n_m_s": legal} if scaling == "normalised" else {"K_n_m_s": None, "k_am2_s_per_t": legal}),
                    gain_scaling=scaling)  # fmt: skip
+
+
+def test_thresholds_of_the_field_in_counts():
+    """Of 62.4 µT, full scale of 32767 counts."""
+    path = path_of(defence={"jump_ut": 20.0, "noise_ut": 0.5})
+    assert math.sqrt(path["jump_max_sq"]) == pytest.approx(20.0 / 62.4 * 32767, abs=0.01)
+    assert path["noise_limit"] == round(0.5 / 62.4 * 32767)
+    widest = path_of(defence={"jump_ut": 1000.0, "noise_ut": 1000.0})
+    assert (widest["jump_max_sq"], widest["noise_limit"]) == (3 * 32767**2, 65535)
+    assert 3 * 32767**2 == 3221028867
+
+
+def test_times_in_cycles():
+    path = path_of(defence={"frozen_s": 8.6, "dead_axis_s": 100.0, "gyro_frozen_s": 0.0})
+    assert (path["frozen_limit"], path["dead_limit"], path["gyro_frozen_limit"]) == (18, 200, 0)
+    assert 0.8 / (200_000 * 1e-6) > 4, "a little more than 4 in binary"
+    short = {"period_ms": 200.0, "drive_window_ms": 100.0}
+    assert path_of(cycle=short, defence={"gyro_frozen_s": 0.8})["gyro_frozen_limit"] == 4
+    supervisor = with_tables(defence={"window_s": 1000.2, "pause_s": 60.0}).config["supervisor"]
+    assert (supervisor["window_cycles"], supervisor["pause_cycles"]) == (2001, 120)
+
+
+def test_agreement_in_counts(demo_scaling):
+    """One rate count across one field count, seen in the change of the field: ω B T by hand."""
+    s = demo_scaling
+    path = s.config["path"]
+    change_t = s.rate_rad_s * 1000 * s.field_t * 2000 * s.period_s
+    cross = 1000 * 2000
+    counts = cross * path["agree_mantissa"] / 2.0 ** (16 + path["agree_shift"])
+    assert counts * s.field_t == pytest.approx(change_t, rel=2**-15)
+    assert path["agree_limit"] * s.field_t == pytest.approx(math.radians(1.2) * 62.4e-6 * s.period_s, rel=2e-3)
+    assert path["agree_rate_max"] == 32767  # 0.5 rad in 0.5 s are more than the 23.9 °/s of full scale
+    fast = path_of(body={"tip_off_deg_s": [60.0, 0.0, 0.0]}, gyro={"counts_per_deg_s": 200.0})
+    assert fast["agree_rate_max"] == round(32767 * math.degrees(1.0) / 75.0)
+
+
+def test_what_is_not_fitted_is_not_watched():
+    blind = path_of(gyro=None, control={"settle_by": "field"})
+    names = ("gyro_frozen_limit", "agree_limit", "agree_mantissa", "agree_shift", "agree_rate_max")
+    assert [blind[name] for name in names] == [0, 0, 32768, 31, 1]
+    names = ("current_fitted", "current_ticks", "current_min", "current_off_max")
+    assert [blind[name] for name in names] == [0, 1, (2, 2, 2), 1]
+    assert path_of(defence={"gyro_error_deg_s": 0.0})["agree_limit"] == 0
+
+
+def test_a_tumble_too_slow_for_the_comparison_goes_without():
+    """2^-31 as the least factor: a rate count of 2.3e-10 rad a period, 3.5e-4 °/s at tip-off with 50 ms."""
+    config = load_mission(demo_path())
+    slow = replace(config, body=replace(config.body, tip_off_deg_s=(2e-5, 0.0, 0.0)))
+    path = _agreement(replace(scale(config), mission=slow, rate_rad_s=1e-11))
+    assert path == {"agree_limit": 0, "agree_mantissa": 32768, "agree_shift": 31, "agree_rate_max": 1}
+
+
+def test_current_sense_in_counts():
+    s = with_tables("plover", current_sense={"off_counts": 40})
+    path = s.config["path"]
+    assert path["current_fitted"] == 1
+    assert path["current_ticks"] == 105  # 3 × 0.7 ms in ticks of 20 µs
+    # 900 × 3.1 / 3.7 × (1 − e⁻³) × 50 %
+    assert path["current_min"] == (round(900 * 3.1 / 3.7 * 0.950213 * 0.5),) * 3
+    assert path["current_off_max"] == 40
+    assert s.size_of("current_driven[1]").value(450) == pytest.approx(50.0)
+    assert with_tables().size_of("current_driven[1]") is None
+
+
+def test_progress_in_q8():
+    def supervisor(**defence):
+        return with_tables(defence=defence).config["supervisor"]
+
+    usual = supervisor()
+    assert (usual["guard"], usual["growth"], usual["progress"], usual["retries"]) == (1, 288, 230, 3)
+    least = supervisor(divergence_guard=False, growth_percent=0.4, progress_percent=1e-9, retries=0)
+    assert (least["guard"], least["growth"], least["progress"], least["retries"]) == (0, 257, 256, 0)
+    most = supervisor(growth_percent=300.0, progress_percent=99.0, retries=1000)
+    assert (most["growth"], most["progress"], most["retries"]) == (1024, 3, 1000)
+
+
+@pytest.mark.parametrize("mission", ["demo", "plover"])
+def test_every_defence_is_told_in_words(library, mission):
+    s = with_tables(mission)
+    told = {row.name: row.value for row in describe_config(s, library.interface)}
+    mute = {"path.gyro_fitted", "path.polarity", "path.agree_shift", "supervisor.retries", "supervisor.bench_key"}
+    factors = (".shift", "estimate_shift", "estimate_mantissa")
+    assert {name for name, value in told.items() if not value and not name.endswith(factors)} <= mute
+    if mission == "plover":
+        assert told["path.agree_limit"] == "off" and told["path.agree_rate_max"] == "not compared"
+        assert told["path.current_ticks"] == "2.1 ms" and told["path.current_off_max"] == "5 % of full current"
+        return
+    assert told["path.jump_max_sq"] == "16 µT" and told["path.dead_limit"] == "68 s"
+    assert told["path.current_min"] == "not fitted"
+    assert told["supervisor.growth"] == "diverging at 12.5 % more than a window before"
+
+
+@pytest.mark.parametrize(
+    ("extreme", "tables"),
+    [
+        ("short", {"cycle": {"period_ms": 100.0, "blanking_ms": 20.0, "sample_ms": 10.0, "compute_delay_ms": 5.0,
+                             "drive_window_ms": 60.0}, "control": {"bench_limit_ms": 10.0}}),
+        ("coarse", {"magnetometer": {"counts_per_ut": 0.2, "noise_nt": 5e3}}),
+        ("fine", {"magnetometer": {"counts_per_ut": 160.0, "noise_nt": 0.0, "stray_ut_per_a_m2": [[0.0] * 3] * 3}}),
+        ("slow", {"body": {"tip_off_deg_s": [0.3, 0.0, 0.0]}, "control": {"settled_deg_s": 0.3, "wake_deg_s": 0.5}}),
+    ],
+)  # fmt: skip
+def test_defaults_of_unusual_missions_are_accepted(extreme, tables):
+    assert exact.init(with_tables(**tables).config) == 0, extreme
 
 
 def test_every_size_is_positive_and_named(library, demo_scaling):

@@ -90,3 +90,20 @@ uint16_t mrd_isqrt_u32(uint32_t x)
     }
     return (uint16_t)root;
 }
+
+void mrd_cross(const int16_t a[3], const int16_t b[3], int32_t out[3])
+{
+    out[0] = mrd_mul_s16(a[1], b[2]) - mrd_mul_s16(a[2], b[1]);
+    out[1] = mrd_mul_s16(a[2], b[0]) - mrd_mul_s16(a[0], b[2]);
+    out[2] = mrd_mul_s16(a[0], b[1]) - mrd_mul_s16(a[1], b[0]);
+}
+
+int32_t mrd_scale_cross(int32_t x, uint16_t mantissa, int16_t shift)
+{
+    uint32_t magnitude = mrd_abs_s32(x);
+    uint32_t high = mrd_mul_u16((uint16_t)(magnitude >> 16), mantissa);
+    uint32_t low = mrd_mul_u16((uint16_t)(magnitude & 0xFFFFu), mantissa);
+
+    /* u m + (v m >> 16) + 2^(shift - 1) is below 2^32. */
+    return mrd_with_sign_of(x, (high + (low >> 16) + MRD_BIT(shift - 1)) >> shift);
+}

@@ -60,6 +60,12 @@ static inline uint32_t mrd_norm_sq(const int16_t v[3])
     return (uint32_t)mrd_mul_s16(v[0], v[0]) + (uint32_t)mrd_mul_s16(v[1], v[1]) + (uint32_t)mrd_mul_s16(v[2], v[2]);
 }
 
+/* The larger of two. */
+static inline uint32_t mrd_max_u32(uint32_t a, uint32_t b)
+{
+    return a > b ? a : b;
+}
+
 /* Adds 1; stops at 65535. */
 static inline uint16_t mrd_count_u16(uint16_t n)
 {
@@ -71,6 +77,12 @@ static inline uint32_t mrd_count_u32(uint32_t n)
 {
     return n < UINT32_MAX ? n + 1u : n;
 }
+
+/* a x b: |.| up to 2 * 32767^2, below 2^31. No element is -32768. */
+void mrd_cross(const int16_t a[3], const int16_t b[3], int32_t out[3]);
+
+/* x * mantissa / 2^(16 + shift), rounded half away from zero, exactly, for |x| up to 2 * 32767^2 and shift 1..31; up to 2^30. */
+int32_t mrd_scale_cross(int32_t x, uint16_t mantissa, int16_t shift);
 
 /* Length of x in binary: 1..32, and 0 for 0. Five fixed steps. */
 uint16_t mrd_bits_u32(uint32_t x);

@@ -1,4 +1,4 @@
-/* Stage 4: derivative. Field counts in, field counts a period out; saturates at 32767 and says so. */
+/* Stage 6: derivative. Field counts in, field counts a period out; saturates at 32767 and says so. */
 #include "arith.h"
 #include "stages.h"
 

@@ -1,4 +1,4 @@
-/* Stage 9: estimate. Rate, or filtered derivative and norm, in; rate counts out; saturates at 65535. */
+/* Stage 12: estimate. Rate, or filtered derivative and norm, in; rate counts out; saturates at 65535. */
 #include "arith.h"
 #include "supervisor.h"
 
@@ -6,7 +6,7 @@
 static uint16_t turn_of_field(const mrd_trace *trace)
 {
     uint16_t change = mrd_isqrt_u32(mrd_norm_sq(trace->low_pass.filtered));
-    uint16_t norm = mrd_isqrt_u32(trace->plausibility.norm_sq);
+    uint16_t norm = trace->plausibility.norm;
 
     if (norm == 0u) {
         norm = 1; /* only where the norm is waived */
@@ -17,28 +17,32 @@ static uint16_t turn_of_field(const mrd_trace *trace)
     return mrd_div_u32_u16((uint32_t)change << 15, norm);
 }
 
-uint32_t mrd_estimate_rate(const mrd_config *config, const mrd_trace *trace, mrd_estimate *estimate)
+static void rate_across_field(const mrd_supervisor_config *config, mrd_trace *trace)
 {
-    uint32_t status = 0;
+    uint32_t rate;
 
-    estimate->rate = 0;
-    estimate->valid = 1;
+    if (!trace->derivative.valid) {
+        return;
+    }
+    rate = mrd_mul_u16(turn_of_field(trace), config->estimate_mantissa) >> config->estimate_shift;
+    trace->estimate.across = rate > 65535u ? (uint16_t)65535u : (uint16_t)rate;
+    trace->estimate.across_valid = 1;
+}
+
+uint32_t mrd_estimate_rate(const mrd_supervisor_config *config, mrd_trace *trace, mrd_estimate *estimate)
+{
+    rate_across_field(config, trace);
+    estimate->rate = trace->estimate.across;
+    estimate->valid = trace->estimate.across_valid;
     estimate->fell_back = 0;
-    if (config->supervisor.settle_by == MRD_SETTLE_BY_GYRO) {
-        if (trace->calibration.rate_valid) {
-            estimate->rate = mrd_isqrt_u32(mrd_norm_sq(trace->calibration.rate)); /* at most 56754 */
-            return 0;
-        }
-        estimate->fell_back = 1;
-        status |= MRD_BIT(MRD_S_ESTIMATE_FELL_BACK);
+    if (config->settle_by != MRD_SETTLE_BY_GYRO) {
+        return 0;
     }
-    if (trace->derivative.valid) {
-        uint32_t rate = mrd_mul_u16(turn_of_field(trace), config->supervisor.estimate_mantissa)
-                        >> config->supervisor.estimate_shift;
-
-        estimate->rate = rate > 65535u ? (uint16_t)65535u : (uint16_t)rate;
-    } else {
-        estimate->valid = 0;
+    if (trace->calibration.rate_valid) {
+        estimate->rate = mrd_isqrt_u32(mrd_norm_sq(trace->calibration.rate)); /* at most 56754 */
+        estimate->valid = 1;
+        return 0;
     }
-    return status;
+    estimate->fell_back = 1;
+    return MRD_BIT(MRD_S_ESTIMATE_FELL_BACK);
 }

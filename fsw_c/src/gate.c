@@ -1,5 +1,5 @@
 /*
- * Stage 3: gate. Stamps in us, which wrap after 71.6 min: every difference is unsigned and wraps with them. An age of
+ * Stage 4: gate. Stamps in us, which wrap after 71.6 min: every difference is unsigned and wraps with them. An age of
  * 2^31 or more is a switch-off that lies ahead of the sample, unless the same switch-off was old enough before. A pulse
  * stays pending until a stamp says that it ended after its drive window opened. In the first cycle after a reset nothing
  * is known of the coils, and no sample is trusted.
@@ -23,23 +23,24 @@ static uint16_t stamps_pulse(const mrd_path_state *state, uint32_t stamp_us, uin
     return stamp_us != state->switch_off_us[i] && stamp_us - state->drive_us[i] <= age_saturated_us;
 }
 
-/* A pulse that began more than 2^30 us ago is over: a stamp of the present time is taken however late it comes. */
+/*
+ * A pulse that began more than 2^30 us ago is over, and one that lies ahead was commanded before the clock was set back: in
+ * both cases a stamp of the present time is taken.
+ */
 static void age_pending(mrd_path_state *state, uint32_t cycle_start_us)
 {
     uint16_t i;
 
     for (i = 0; i < 3u; i++) {
-        uint32_t since_us = cycle_start_us - state->drive_us[i];
-
-        if (state->pending[i] && since_us > MRD_BIT(30) && since_us <= age_saturated_us) {
+        if (state->pending[i] && cycle_start_us - state->drive_us[i] > MRD_BIT(30)) {
             state->drive_us[i] = cycle_start_us - MRD_BIT(30);
         }
     }
 }
 
-/* One coil: returns status bits, and whether it is clear. timed: the sample is there and at its place. */
-static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t blanking_us, uint16_t timed, uint16_t i,
-                          uint32_t *age_us, uint16_t *clear)
+/* One coil: returns status bits, and whether it is clear. timed: the sample is there and at its place; on: the sense says so. */
+static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t blanking_us, uint16_t timed, uint16_t on,
+                          uint16_t i, uint32_t *age_us, uint16_t *clear)
 {
     uint16_t was_clear = stamp_us == state->switch_off_us[i] && state->off_clear[i];
 
@@ -52,6 +53,10 @@ static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t bla
         state->off_clear[i] = 0;
         return state->off_known ? MRD_BIT(MRD_S_SWITCH_OFF_UNSTAMPED) : 0u;
     }
+    if (on) {
+        state->off_clear[i] = 0;
+        return 0;
+    }
     if (was_clear && *age_us > age_saturated_us) {
         *age_us = age_saturated_us;
     }
@@ -61,7 +66,7 @@ static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t bla
 }
 
 uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
-                  uint16_t have_sample, mrd_gate_trace *trace)
+                  uint16_t have_sample, const mrd_currents_trace *currents, mrd_gate_trace *trace)
 {
     uint32_t start_us = have_sample ? inputs->sample_us - config->half_sample_us : inputs->cycle_start_us;
     uint16_t timed = have_sample && in_place(config, inputs);
@@ -76,7 +81,8 @@ uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mr
         uint16_t clear;
 
         trace->age_us[i] = start_us - inputs->switch_off_us[i];
-        status |= gate_coil(state, inputs->switch_off_us[i], config->blanking_us[i], timed, i, &trace->age_us[i], &clear);
+        status |= gate_coil(state, inputs->switch_off_us[i], config->blanking_us[i], timed,
+                            currents->fault[i] == MRD_COIL_ON, i, &trace->age_us[i], &clear);
         if (!clear && have_sample) {
             status |= MRD_BIT(MRD_S_BLANKED);
         }

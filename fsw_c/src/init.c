@@ -109,6 +109,34 @@ static uint16_t gain_ok(const mrd_path_config *c, const mrd_gain_config *gain)
     return 1;
 }
 
+static uint16_t continuity_ok(const mrd_path_config *c)
+{
+    return within(c->jump_max_sq, 1, 3221028867u) && c->noise_limit >= 1u;
+}
+
+static uint16_t agreement_ok(const mrd_path_config *c)
+{
+    return c->agree_mantissa >= 32768u && within(c->agree_shift, 1, 31) && c->agree_rate_max >= 1;
+}
+
+static uint16_t current_ok(const mrd_path_config *c)
+{
+    uint16_t i;
+
+    if (c->current_fitted == 0u) {
+        return 1;
+    }
+    if (c->current_fitted != 1u || c->current_ticks < 1 || c->current_ticks > c->window_ticks || c->current_off_max < 1) {
+        return 0;
+    }
+    for (i = 0; i < 3u; i++) {
+        if (c->current_min[i] <= c->current_off_max) {
+            return 0;
+        }
+    }
+    return 1;
+}
+
 static uint16_t settle_ok(const mrd_config *config)
 {
     const mrd_supervisor_config *s = &config->supervisor;
@@ -120,6 +148,12 @@ static uint16_t settle_ok(const mrd_config *config)
 static uint16_t estimate_ok(const mrd_supervisor_config *s)
 {
     return s->estimate_mantissa >= 32768u && within(s->estimate_shift, 1, 31);
+}
+
+static uint16_t progress_ok(const mrd_supervisor_config *s)
+{
+    return within(s->growth, 257, 1024) && within(s->progress, 1, 256) && s->window_cycles >= 1u
+           && s->pause_cycles >= 1u;
 }
 
 static uint16_t bench_ok(const mrd_config *config)
@@ -164,6 +198,15 @@ uint16_t mrd_path_check(const mrd_path_config *config)
     if (!gain_ok(config, &config->derivative_gain) || !gain_ok(config, &config->rate_gain)) {
         return MRD_E_GAIN;
     }
+    if (!continuity_ok(config)) {
+        return MRD_E_CONTINUITY;
+    }
+    if (!agreement_ok(config)) {
+        return MRD_E_AGREEMENT;
+    }
+    if (!current_ok(config)) {
+        return MRD_E_CURRENT;
+    }
     return MRD_OK;
 }
 
@@ -179,6 +222,9 @@ uint16_t mrd_init(const mrd_config *config)
     }
     if (!estimate_ok(&config->supervisor)) {
         return MRD_E_ESTIMATE;
+    }
+    if (!progress_ok(&config->supervisor)) {
+        return MRD_E_PROGRESS;
     }
     if (!bench_ok(config)) {
         return MRD_E_BENCH;

@@ -1,5 +1,5 @@
 /*
- * Stage 6: law. Filtered derivative, or rate and field, in; demand out, in Q15 of the dipole limit and up to 2^30.
+ * Stage 9: law. Filtered derivative, or rate and field, in; demand out, in Q15 of the dipole limit and up to 2^30.
  * Cannot overflow: the gain's mantissa has 16 bits, its shift is at least 1.
  */
 #include "arith.h"
@@ -61,24 +61,6 @@ static void apply_gain(const mrd_path_config *config, const mrd_gain_config *gai
     normalised_gain(gain, norm_sq, trace);
 }
 
-/* a x b; |.| up to 2 * 32767^2, below 2^31. */
-static void cross(const int16_t a[3], const int16_t b[3], int32_t out[3])
-{
-    out[0] = mrd_mul_s16(a[1], b[2]) - mrd_mul_s16(a[2], b[1]);
-    out[1] = mrd_mul_s16(a[2], b[0]) - mrd_mul_s16(a[0], b[2]);
-    out[2] = mrd_mul_s16(a[0], b[1]) - mrd_mul_s16(a[1], b[0]);
-}
-
-/* cross * mantissa / 2^(16 + shift), rounded half away from zero: u m + (v m >> 16) + 2^(shift - 1) is below 2^32. */
-static int32_t scaled_cross(int32_t x, uint16_t mantissa, int16_t shift)
-{
-    uint32_t magnitude = mrd_abs_s32(x);
-    uint32_t high = mrd_mul_u16((uint16_t)(magnitude >> 16), mantissa);
-    uint32_t low = mrd_mul_u16((uint16_t)(magnitude & 0xFFFFu), mantissa);
-
-    return mrd_with_sign_of(x, (high + (low >> 16) + MRD_BIT(shift - 1)) >> shift);
-}
-
 uint32_t mrd_apply_law(const mrd_path_config *config, mrd_trace *trace)
 {
     mrd_law_trace *law = &trace->law;
@@ -88,9 +70,9 @@ uint32_t mrd_apply_law(const mrd_path_config *config, mrd_trace *trace)
     law->active = choose(config, trace, &status);
     if (law->active == MRD_LAW_RATE) {
         apply_gain(config, &config->rate_gain, trace->plausibility.norm_sq, law);
-        cross(trace->calibration.rate, trace->calibration.field, law->cross);
+        mrd_cross(trace->calibration.rate, trace->calibration.field, law->cross);
         for (i = 0; i < 3u; i++) {
-            law->demand[i] = scaled_cross(law->cross[i], law->mantissa[i], law->shift[i]);
+            law->demand[i] = mrd_scale_cross(law->cross[i], law->mantissa[i], law->shift[i]);
         }
     } else if (law->active == MRD_LAW_DERIVATIVE) {
         apply_gain(config, &config->derivative_gain, trace->plausibility.norm_sq, law);

@@ -1,5 +1,5 @@
 /*
- * Stage 5: low-pass. Field counts a period in and out, the filter with 8 fraction bits, without which it would stick
+ * Stage 7: low-pass. Field counts a period in and out, the filter with 8 fraction bits, without which it would stick
  * near zero. Cannot overflow: the new filter lies between the old one and the new target, both within 32767 * 256.
  */
 #include "arith.h"

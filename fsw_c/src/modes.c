@@ -11,6 +11,7 @@ uint16_t mrd_is_mode(uint16_t mode)
     case MRD_MODE_SAFE:
     case MRD_MODE_INHIBIT:
     case MRD_MODE_BENCH:
+    case MRD_MODE_PAUSE:
         return 1;
     default:
         return 0;
@@ -38,11 +39,13 @@ static uint16_t command_safe(mrd_state *state)
 
 static uint16_t command_resume(mrd_state *state)
 {
-    if (state->mode != MRD_MODE_SAFE && state->mode != MRD_MODE_INHIBIT && state->mode != MRD_MODE_BENCH) {
+    if (state->mode == MRD_MODE_HOLD_OFF || state->mode == MRD_MODE_DAMPING || state->mode == MRD_MODE_SETTLED) {
         return 0;
     }
     state->mode = MRD_MODE_HOLD_OFF;
     state->inhibit_commanded = 0;
+    state->trips = 0;
+    mrd_path_restore(&state->path);
     return 1;
 }
 
@@ -109,35 +112,43 @@ uint32_t mrd_obey(mrd_state *state, const mrd_supervisor_config *config, const m
 
 /* ---- transitions: each returns the mode that follows ---- */
 
-static uint16_t from_hold_off(const mrd_supervisor_config *config, const mrd_inputs *inputs)
+/* One more cycle towards needed: 1 where it is reached. */
+static uint16_t dwells(mrd_state *state, uint32_t needed)
+{
+    state->dwell = mrd_count_u32(state->dwell);
+    return state->dwell >= needed;
+}
+
+static uint16_t from_hold_off(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs)
 {
     if (inputs->low_power) {
         return MRD_MODE_INHIBIT;
     }
-    return inputs->separation_s >= config->hold_off_s ? MRD_MODE_DAMPING : MRD_MODE_HOLD_OFF;
-}
-
-static uint16_t from_inhibit(const mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs)
-{
-    if (inputs->low_power || state->inhibit_commanded) {
-        return MRD_MODE_INHIBIT;
+    if (inputs->separation_s < config->hold_off_s) {
+        state->dwell = 0;
+        return MRD_MODE_HOLD_OFF;
     }
-    return from_hold_off(config, inputs);
+    return dwells(state, 2) ? MRD_MODE_DAMPING : MRD_MODE_HOLD_OFF; /* two in a row: no flipped bit ends hold-off */
 }
 
 static uint16_t from_damping(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
-                             const mrd_estimate *estimate)
+                             const mrd_estimate *estimate, uint16_t diverging)
 {
     if (inputs->low_power) {
         return MRD_MODE_INHIBIT;
     }
+    if (diverging) {
+        uint16_t again = state->trips < config->retries;
+
+        state->trips = mrd_count_u16(state->trips);
+        state->counters.trips = mrd_count_u16(state->counters.trips);
+        return again ? MRD_MODE_PAUSE : MRD_MODE_SAFE;
+    }
     if (estimate->valid && estimate->rate > config->settled_rate) {
         state->dwell = 0;
-    } else if (estimate->valid && !estimate->fell_back) {
-        state->dwell = mrd_count_u32(state->dwell);
-        if (state->dwell >= config->settle_dwell) {
-            return MRD_MODE_SETTLED;
-        }
+    } else if (estimate->valid && !estimate->fell_back && dwells(state, config->settle_dwell)) {
+        state->trips = 0;
+        return MRD_MODE_SETTLED;
     }
     return MRD_MODE_DAMPING;
 }
@@ -145,42 +156,71 @@ static uint16_t from_damping(mrd_state *state, const mrd_supervisor_config *conf
 static uint16_t from_settled(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
                              const mrd_estimate *estimate)
 {
-    if (inputs->low_power) {
-        return MRD_MODE_INHIBIT;
-    }
     if (estimate->valid && estimate->rate <= config->wake_rate) {
         state->dwell = 0;
-    } else if (estimate->valid) {
-        state->dwell = mrd_count_u32(state->dwell);
-        if (state->dwell >= config->wake_dwell) {
-            return MRD_MODE_DAMPING;
-        }
+    } else if (estimate->valid && dwells(state, config->wake_dwell) && !inputs->low_power) {
+        return MRD_MODE_DAMPING;
     }
     return MRD_MODE_SETTLED;
 }
 
-void mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
-                     const mrd_estimate *estimate)
+static uint16_t from_pause(mrd_state *state, const mrd_supervisor_config *config)
 {
-    uint16_t before = state->mode;
+    return dwells(state, config->pause_cycles) ? MRD_MODE_HOLD_OFF : MRD_MODE_PAUSE;
+}
 
+/* The mode that follows. */
+static uint16_t next_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                          const mrd_estimate *estimate, uint16_t diverging)
+{
     switch (state->mode) {
     case MRD_MODE_HOLD_OFF:
-        state->mode = from_hold_off(config, inputs);
-        break;
-    case MRD_MODE_INHIBIT:
-        state->mode = from_inhibit(state, config, inputs);
-        break;
+        return from_hold_off(state, config, inputs);
     case MRD_MODE_DAMPING:
-        state->mode = from_damping(state, config, inputs, estimate);
-        break;
+        return from_damping(state, config, inputs, estimate, diverging);
     case MRD_MODE_SETTLED:
-        state->mode = from_settled(state, config, inputs, estimate);
-        break;
-    default: /* safe and bench: left by command only */
-        break;
+        return from_settled(state, config, inputs, estimate);
+    case MRD_MODE_PAUSE:
+        return from_pause(state, config);
+    default: /* safe and bench, and inhibit by command: left by command only */
+        return state->mode;
     }
+}
+
+static uint32_t told(const mrd_state *state, uint16_t diverging)
+{
+    uint32_t status = 0;
+
+    if (state->progress.stalled) {
+        status |= MRD_BIT(MRD_S_NO_PROGRESS);
+    }
+    if (state->mode == MRD_MODE_PAUSE || (diverging && state->mode == MRD_MODE_SAFE)) {
+        status |= MRD_BIT(MRD_S_DIVERGING);
+    }
+    return status;
+}
+
+uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,
+                         const mrd_estimate_trace *across, const mrd_estimate *estimate)
+{
+    static const mrd_progress anew;
+    uint16_t diverging = 0;
+    uint16_t before;
+
+    if (state->mode == MRD_MODE_INHIBIT && !inputs->low_power && !state->inhibit_commanded) {
+        state->mode = MRD_MODE_HOLD_OFF;
+        state->dwell = 0;
+    }
+    if (state->mode == MRD_MODE_DAMPING) {
+        diverging = mrd_judge_progress(&state->progress, config, across);
+    }
+    before = state->mode;
+    state->mode = next_mode(state, config, inputs, estimate, diverging);
     if (state->mode != before) {
         state->dwell = 0;
     }
+    if (state->mode != MRD_MODE_DAMPING) {
+        state->progress = anew;
+    }
+    return told(state, diverging);
 }

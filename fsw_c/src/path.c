@@ -1,4 +1,4 @@
-/* The path: stages 1 to 8 in order. Knows nothing of modes. */
+/* The path: stages 1 to 11 in order. Knows nothing of modes. */
 #include "arith.h"
 #include "stages.h"
 
@@ -9,25 +9,47 @@ void mrd_path_reset(mrd_path_state *state)
     *state = zero;
 }
 
-uint32_t mrd_path_sense(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
-                        uint16_t waive_norm, mrd_trace *trace)
+/* Which status bits keep a sample from being used; some do not on the bench. */
+static uint32_t rejecting(uint16_t waive)
 {
-    static const mrd_trace zero;
-    const uint32_t no_field = MRD_BIT(MRD_S_SAMPLE_MISSING) | MRD_BIT(MRD_S_MAG_RANGE);
-    uint32_t rejecting = no_field | MRD_BIT(MRD_S_SAMPLE_OFF_TIME) | MRD_BIT(MRD_S_BLANKED);
-    uint32_t status;
+    const uint32_t always = MRD_BIT(MRD_S_SAMPLE_MISSING) | MRD_BIT(MRD_S_MAG_RANGE) | MRD_BIT(MRD_S_SAMPLE_OFF_TIME)
+                            | MRD_BIT(MRD_S_BLANKED);
+    const uint32_t in_flight = MRD_BIT(MRD_S_FIELD_IMPLAUSIBLE) | MRD_BIT(MRD_S_MAG_FROZEN) | MRD_BIT(MRD_S_MAG_DEAD_AXIS)
+                               | MRD_BIT(MRD_S_MAG_JUMP) | MRD_BIT(MRD_S_MAG_NOISY);
 
-    *trace = zero;
-    status = mrd_calibrate(config, inputs, &trace->calibration);
+    return waive ? always : always | in_flight;
+}
+
+/* Stages 1 to 5: is this sample to be used? */
+static uint32_t judge_sample(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
+                             uint16_t waive, mrd_trace *trace)
+{
+    const uint32_t no_field = MRD_BIT(MRD_S_SAMPLE_MISSING) | MRD_BIT(MRD_S_MAG_RANGE);
+    uint32_t status = mrd_calibrate(config, inputs, &trace->calibration);
+
     if (!(status & no_field)) {
         status |= mrd_check_norm(config, trace->calibration.field, &trace->plausibility);
     }
-    if (!waive_norm) {
-        rejecting |= MRD_BIT(MRD_S_FIELD_IMPLAUSIBLE);
-    }
-    status |= mrd_gate(state, config, inputs, !(status & MRD_BIT(MRD_S_SAMPLE_MISSING)), &trace->gate);
-    trace->gate.trusted = !(status & rejecting);
+    status |= mrd_check_currents(state, config, inputs, &trace->currents);
+    status |= mrd_gate(state, config, inputs, !(status & MRD_BIT(MRD_S_SAMPLE_MISSING)), &trace->currents, &trace->gate);
+    status |= mrd_check_continuity(state, config, inputs, status, trace);
+    trace->gate.trusted = !(status & rejecting(waive));
+    return status;
+}
 
+uint32_t mrd_path_sense(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
+                        uint16_t waive, mrd_trace *trace)
+{
+    static const mrd_trace zero;
+    int16_t earlier_field[3];
+    uint32_t status;
+    uint16_t i;
+
+    for (i = 0; i < 3u; i++) {
+        earlier_field[i] = state->field[i];
+    }
+    *trace = zero;
+    status = judge_sample(state, config, inputs, waive, trace);
     if (trace->gate.trusted) {
         status |= mrd_derive(state, config, inputs->sample_us, trace->calibration.field, &trace->derivative);
     } else {
@@ -38,7 +60,7 @@ uint32_t mrd_path_sense(mrd_path_state *state, const mrd_path_config *config, co
     } else {
         state->filter_valid = 0;
     }
-    return status;
+    return status | mrd_check_agreement(state, config, status, earlier_field, trace);
 }
 
 uint32_t mrd_path_drive(const mrd_path_config *config, mrd_trace *trace)
@@ -58,6 +80,7 @@ void mrd_path_commit(mrd_path_state *state, const mrd_path_config *config, const
     uint16_t i;
 
     for (i = 0; i < 3u; i++) {
+        state->ticks[i] = ticks[i];
         if (ticks[i] != 0) {
             state->pending[i] = 1;
             state->drive_us[i] = inputs->cycle_start_us + config->phase_us + config->delay_us;

@@ -1,4 +1,4 @@
-/* Stage 8: pulses. Command in, signed ticks of coil current out. Cannot exceed window_ticks, which is at most 16384. */
+/* Stage 11: pulses. Command in, signed ticks of coil current out. Cannot exceed window_ticks, which is at most 16384. */
 #include "arith.h"
 #include "stages.h"
 

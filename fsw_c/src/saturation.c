@@ -1,4 +1,4 @@
-/* Stage 7: saturation. Demand in, command out, both in Q15 of the dipole limit; saturates at 32767 and says so. */
+/* Stage 10: saturation. Demand in, command out, both in Q15 of the dipole limit; saturates at 32767 and says so. */
 #include "arith.h"
 #include "stages.h"
 

@@ -24,13 +24,12 @@ from pyharness.cli.common import (
 )
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import load_controller
-from pyharness.loop import Flight, fly
+from pyharness.loop import Flight, fly, long_cycles
 from pyharness.mission import load_mission
 from pyharness.mission.schema import BY_PATH
 from pyharness.review import Flown, save_figures
 from pyharness.review.numbers import numbers
 from pyharness.scaling import Scaling, scale
-from pyharness.scenarios import long_cycles
 from pyharness.whole_files import write_whole
 
 

@@ -11,11 +11,12 @@ import sys
 from collections.abc import Sequence
 
 from pyharness import __version__
-from pyharness.cli import fly, review, scale, trace, vectors
+from pyharness.cli import faults, fly, replay, review, scale, trace, vectors
 from pyharness.cli.common import UsageError
 from pyharness.controllers import ControllerError
 from pyharness.flight import BuildError, LayoutError, SourcesError
 from pyharness.mission import MissionError
+from pyharness.replay import RecordingError
 from pyharness.vectors import NoVectors, VectorError
 
 DESCRIPTION = """\
@@ -34,7 +35,7 @@ Every command takes a mission file (TOML); without one it takes the demo mission
 This is a reference, not flight-qualified. The polarity of every coil and sensor axis must be shown on the hardware.
 """
 
-EXPECTED = (MissionError, BuildError, LayoutError, SourcesError, ControllerError, VectorError, UsageError, OSError)
+EXPECTED = (MissionError, BuildError, LayoutError, SourcesError, ControllerError, VectorError, RecordingError, UsageError, OSError)
 
 
 def parser() -> argparse.ArgumentParser:
@@ -44,7 +45,7 @@ def parser() -> argparse.ArgumentParser:
     )
     top.add_argument("--version", action="version", version=f"slackwater {__version__}")
     commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
-    for module in (scale, fly, vectors, trace, review):
+    for module in (scale, fly, faults, vectors, trace, replay, review):
         module.add_to(commands)
     return top
 

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from pyharness.controllers.face import Controller
+from pyharness.controllers.face import Controller, Part
 from pyharness.flight import Library
 from pyharness.flight.records import to_record
 from pyharness.scaling import Integers, Scaling
@@ -47,3 +47,15 @@ class CController(Controller):
 
     def restore(self, snapshot: np.ndarray) -> None:
         self._states[...] = snapshot
+
+    def _memory(self, part: Part) -> np.ndarray:
+        return self._states if part == "state" else self._configs
+
+    def peek(self, index: int, part: Part) -> np.ndarray:
+        return self._memory(part)[index : index + 1].copy().reshape(())
+
+    def poke(self, index: int, part: Part, record: np.ndarray) -> None:
+        self._memory(part)[index] = record
+
+    def restart(self, index: int) -> None:
+        self.library.reset(self._states[index : index + 1])

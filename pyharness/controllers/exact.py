@@ -7,9 +7,9 @@ from collections.abc import Sequence
 import numpy as np
 
 from pyharness import exact
-from pyharness.controllers.face import Controller
+from pyharness.controllers.face import Controller, Part
 from pyharness.flight import Interface
-from pyharness.flight.records import to_dict, to_tuple
+from pyharness.flight.records import to_dict, to_record, to_tuple
 from pyharness.scaling import Integers, Scaling
 
 
@@ -42,3 +42,15 @@ class ExactController(Controller):
 
     def restore(self, snapshot: list) -> None:
         self._states = list(snapshot)
+
+    def peek(self, index: int, part: Part) -> np.ndarray:
+        if part == "state":
+            return to_record(self.interface.state, self._states[index])
+        return to_record(self.interface.config, self._configs[index])
+
+    def poke(self, index: int, part: Part, record: np.ndarray) -> None:
+        memory = self._states if part == "state" else self._configs
+        memory[index] = to_dict(record)
+
+    def restart(self, index: int) -> None:
+        self._states[index] = exact.reset()

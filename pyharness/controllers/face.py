@@ -8,12 +8,16 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 
+from pyharness import exact
 from pyharness.flight import Interface
+from pyharness.flight.records import to_dict
 from pyharness.scaling import Integers, Scaling
+
+Part = Literal["state", "config"]
 
 
 class ControllerError(Exception):
@@ -48,6 +52,25 @@ class Controller(ABC):
     @abstractmethod
     def restore(self, snapshot: Any) -> None:
         """Return to a snapshot of this controller."""
+
+    @abstractmethod
+    def peek(self, index: int, part: Part) -> np.ndarray:
+        """A copy of one controller's state or configuration, as a record (shape ())."""
+
+    @abstractmethod
+    def poke(self, index: int, part: Part, record: np.ndarray) -> None:
+        """Overwrite one controller's state or configuration, whatever is in it: as radiation does."""
+
+    @abstractmethod
+    def restart(self, index: int) -> None:
+        """Put one state at its start."""
+
+    def force_mode(self, index: int, mode: int) -> None:
+        """Overwrite the mode of one controller, with the digest that goes with it."""
+        record = self.peek(index, "state")
+        record["mode"] = mode
+        record["digest"] = exact.state_digest(to_dict(record))
+        self.poke(index, "state", record)
 
     def run(self, inputs: np.ndarray) -> np.ndarray:
         """Many cycles of the first controller: inputs (rows,), returns outputs (rows,)."""

@@ -1,4 +1,4 @@
-"""Stage 4: the derivative of the field, from two trusted samples over their measured interval."""
+"""Stage 6: the derivative of the field, from two trusted samples over their measured interval."""
 
 from __future__ import annotations
 

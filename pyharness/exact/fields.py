@@ -1,7 +1,7 @@
 """The structs of mrd.h as data: every field in declared order, with width, sign and number of elements.
 
 The digests fold over these lists, and whoever packs records for a controller walks them. A record is a
-plain dict with the names of the struct's members; an array is a tuple of ints.
+plain dict with the names of the struct's members; an array is a tuple, of ints or of such dicts.
 """
 
 from __future__ import annotations
@@ -33,10 +33,11 @@ class Field(NamedTuple):
 
 
 class Nested(NamedTuple):
-    """A struct inside a struct."""
+    """A struct inside a struct, or an array of count > 1 of them."""
 
     name: str
     struct: Struct
+    count: int = 1
 
 
 Struct = tuple[Field | Nested, ...]
@@ -84,6 +85,19 @@ PATH_CONFIG: Struct = (
     u16("filter_gain"),
     Nested("derivative_gain", GAIN_CONFIG),
     Nested("rate_gain", GAIN_CONFIG),
+    u32("jump_max_sq"),
+    u16("noise_limit"),
+    u16("frozen_limit"),
+    u16("dead_limit"),
+    u16("gyro_frozen_limit"),
+    u16("agree_limit"),
+    u16("agree_mantissa"),
+    u16("agree_shift"),
+    i16("agree_rate_max"),
+    u16("current_fitted"),
+    i16("current_ticks"),
+    i16("current_min", AXES),
+    i16("current_off_max"),
 )
 
 SUPERVISOR_CONFIG: Struct = (
@@ -95,6 +109,12 @@ SUPERVISOR_CONFIG: Struct = (
     u16("wake_rate"),
     u16("estimate_mantissa"),
     u16("estimate_shift"),
+    u32("window_cycles"),
+    u32("pause_cycles"),
+    u16("guard_rate"),
+    u16("growth"),
+    u16("progress"),
+    u16("retries"),
     u16("bench_key"),
     i16("bench_limit_ticks"),
 )
@@ -109,6 +129,9 @@ PATH_INPUTS: Struct = (
     i16("gyro_raw", AXES),
     u16("mag_valid"),
     u16("gyro_valid"),
+    u16("current_valid"),
+    i16("current_driven", AXES),
+    i16("current_sampled", AXES),
 )
 
 INPUTS: Struct = (
@@ -121,6 +144,8 @@ INPUTS: Struct = (
     i16("command_ticks"),
 )
 
+BALLOT: Struct = (u16("level"), u16("tripped"))
+
 PATH_STATE: Struct = (
     i32("filter", AXES),
     u32("sample_us"),
@@ -132,7 +157,24 @@ PATH_STATE: Struct = (
     u16("off_known"),
     u16("off_clear", AXES),
     u16("pending", AXES),
+    i16("ticks", AXES),
+    i16("mag_raw", AXES),
+    u16("mag_known"),
+    u16("mag_same", AXES),
+    u16("norm"),
+    u16("norm_known"),
+    Nested("noise", BALLOT),
+    i16("gyro_raw", AXES),
+    u16("gyro_known"),
+    u16("gyro_same"),
+    i16("rate", AXES),
+    u16("rate_known"),
+    Nested("agreement", BALLOT),
+    Nested("weak", BALLOT, AXES),
+    Nested("backward", BALLOT, AXES),
 )
+
+PROGRESS: Struct = (u32("window"), u16("peak", AXES), u16("least"), u16("in_four"), u16("stalled"))
 
 COUNTERS: Struct = (
     u16("trusted"),
@@ -141,6 +183,12 @@ COUNTERS: Struct = (
     u16("fell_back"),
     u16("refused"),
     u16("restarts"),
+    u16("corrupt"),
+    u16("mag_faults"),
+    u16("gyro_faults"),
+    u16("coil_faults"),
+    u16("time_faults"),
+    u16("trips"),
 )
 
 STATE: Struct = (
@@ -148,21 +196,28 @@ STATE: Struct = (
     u32("dwell"),
     u16("mode"),
     u16("inhibit_commanded"),
+    u16("trips"),
+    u16("cycle"),
+    Nested("progress", PROGRESS),
     Nested("counters", COUNTERS),
     u32("digest"),
 )
 
 TRACE: Struct = (
     Nested("calibration", (i16("field", AXES), i16("rate", AXES), u16("rate_valid"))),
-    Nested("plausibility", (u32("norm_sq"),)),
+    Nested("plausibility", (u32("norm_sq"), u16("norm"))),
+    Nested("currents", (u16("fault", AXES),)),
     Nested("gate", (u32("age_us", AXES), u16("trusted"))),
+    Nested("continuity", (u16("same", AXES), u32("jump_sq"), u16("norm_change"), u16("gyro_same"))),
     Nested("derivative", (u32("interval_us"), u16("factor"), i16("derivative", AXES), u16("valid"))),
     Nested("low_pass", (i32("filter", AXES), i16("filtered", AXES))),
+    Nested("agreement", (u16("judged"), i32("residual", AXES))),
     Nested("law", (
         u16("active"), i32("cross", AXES), u16("mantissa", AXES), i16("shift", AXES), i32("demand", AXES),
     )),
     Nested("saturation", (i16("command", AXES),)),
     Nested("pulses", (i16("ticks", AXES),)),
+    Nested("estimate", (u16("across"), u16("across_valid"))),
 )
 
 OUTPUTS: Struct = (
@@ -172,6 +227,7 @@ OUTPUTS: Struct = (
     u16("rate"),
     u16("rate_valid"),
     u16("handover"),
+    u16("cycle"),
     u32("digest"),
     Nested("counters", COUNTERS),
     Nested("trace", TRACE),
@@ -179,14 +235,17 @@ OUTPUTS: Struct = (
 
 
 def flatten(struct: Struct, prefix: str = "") -> tuple[Field, ...]:
-    """Every field in declared order, nested names joined by dots."""
+    """Every field in declared order, nested names joined by dots: `path.weak[0].level`."""
     flat: list[Field] = []
     for entry in struct:
         name = prefix + entry.name
-        if isinstance(entry, Nested):
-            flat.extend(flatten(entry.struct, name + "."))
-        else:
+        if isinstance(entry, Field):
             flat.append(entry._replace(name=name))
+        elif entry.count == 1:
+            flat.extend(flatten(entry.struct, f"{name}."))
+        else:
+            for i in range(entry.count):
+                flat.extend(flatten(entry.struct, f"{name}[{i}]."))
     return tuple(flat)
 
 
@@ -202,8 +261,6 @@ def zeros(struct: Struct) -> Record:
     """A record of this struct with 0 everywhere."""
     record: Record = {}
     for entry in struct:
-        if isinstance(entry, Nested):
-            record[entry.name] = zeros(entry.struct)
-        else:
-            record[entry.name] = 0 if entry.count == 1 else (0,) * entry.count
+        zero = zeros(entry.struct) if isinstance(entry, Nested) else 0
+        record[entry.name] = zero if entry.count == 1 else (zero,) * entry.count
     return record

@@ -1,4 +1,4 @@
-"""Stage 3: is the sample at its place in the cycle, and old enough after every coil's switch-off?"""
+"""Stage 4: is the sample at its place in the cycle, and old enough after every coil's switch-off?"""
 
 from __future__ import annotations
 
@@ -6,19 +6,15 @@ from typing import NamedTuple
 
 from pyharness.exact.constants import (
     MRD_S_BLANKED,
-    MRD_S_FIELD_IMPLAUSIBLE,
-    MRD_S_MAG_RANGE,
     MRD_S_SAMPLE_MISSING,
     MRD_S_SAMPLE_OFF_TIME,
     MRD_S_SWITCH_OFF_UNSTAMPED,
 )
-from pyharness.exact.num import WRAP, Record, bit, flag
+from pyharness.exact.num import WRAP, Record, Vector, bit, flag
 from pyharness.exact.ranges import check, check3
 
 OLD = 2**31 - 1  # the greatest age; one that has grown beyond it is saturated
 _MISSING = 1 << MRD_S_SAMPLE_MISSING
-_NORM = 1 << MRD_S_FIELD_IMPLAUSIBLE
-_REJECTED = _MISSING | 1 << MRD_S_MAG_RANGE | 1 << MRD_S_SAMPLE_OFF_TIME | 1 << MRD_S_BLANKED
 
 
 def off_time(config: Record, inputs: Record) -> bool:
@@ -41,17 +37,22 @@ class Coil(NamedTuple):
 
 
 def earliest_stamp(state: Record, cycle_start: int, i: int) -> int:
-    """drive_us of coil i: a pulse that began more than 2^30 us ago is over, and a stamp of the present time is taken."""
+    """drive_us of coil i, moved to 2^30 us ago in two cases, so that a stamp of the present time is taken.
+
+    A pulse that began longer ago is over; one that lies ahead was commanded before the clock was set back.
+    """
     since_start = check("gate.since_start_us", (cycle_start - state["drive_us"][i]) % WRAP)
-    if state["pending"][i] and 2**30 < since_start <= OLD:
+    if state["pending"][i] and since_start > 2**30:
         return (cycle_start - 2**30) % WRAP
     return state["drive_us"][i]
 
 
 def blanking(
-    state: Record, config: Record, stamp: int, cycle_start: int, start: int, in_time: bool, i: int,
+    state: Record, config: Record, stamp: int, cycle_start: int, start: int, in_time: bool, on: int, i: int,
 ) -> Coil:
     """Coil i, its switch-off stamped with `stamp`, at the start of the sample.
+
+    `on` tells that it carries current while the magnetometer samples.
 
     Only a sample in time (neither missing nor off its place in the cycle) can show that a switch-off is old.
     """
@@ -65,6 +66,8 @@ def blanking(
         return Coil(age, clear=0, unstamped=0, off_clear=0, pending=pending, drive_us=drive)
     if pending:
         return Coil(age, clear=0, unstamped=1, off_clear=0, pending=1, drive_us=drive)
+    if on:
+        return Coil(age, clear=0, unstamped=0, off_clear=0, pending=0, drive_us=drive)
     was_clear = not fresh and state["off_clear"][i]
     if was_clear and age > OLD:
         return Coil(OLD, clear=1, unstamped=0, off_clear=1, pending=0, drive_us=drive)
@@ -74,11 +77,11 @@ def blanking(
 
 
 def admit(
-    state: Record, config: Record, inputs: Record, status: int, waive_norm: int,
-) -> tuple[Record, Record, int]:
-    """Whether the sample is used.
+    state: Record, config: Record, inputs: Record, on: Vector, status: int,
+) -> tuple[Vector, Record, int]:
+    """Place in the cycle and blanking; `on` tells which coils carry current while the magnetometer samples.
 
-    Returns the trace's part, what the state keeps of the coils, and the status bits of this stage.
+    Returns the age of each switch-off, what the state keeps of the coils, and the status bits of this stage.
     """
     raised = 0
     if status & _MISSING:
@@ -89,16 +92,11 @@ def admit(
     in_time = not (status & _MISSING or raised)
     off_x, off_y, off_z = inputs["switch_off_us"]
     begin = inputs["cycle_start_us"]
-    x = blanking(state, config, off_x, begin, start, in_time, 0)
-    y = blanking(state, config, off_y, begin, start, in_time, 1)
-    z = blanking(state, config, off_z, begin, start, in_time, 2)
+    x = blanking(state, config, off_x, begin, start, in_time, on[0], 0)
+    y = blanking(state, config, off_y, begin, start, in_time, on[1], 1)
+    z = blanking(state, config, off_z, begin, start, in_time, on[2], 2)
     raised |= bit(x.unstamped or y.unstamped or z.unstamped, MRD_S_SWITCH_OFF_UNSTAMPED)
     raised |= bit(not (x.clear and y.clear and z.clear or status & _MISSING), MRD_S_BLANKED)
-    disqualifying = _REJECTED if waive_norm else _REJECTED | _NORM
-    trace = {
-        "age_us": check3("gate.age_us", (x.age_us, y.age_us, z.age_us)),
-        "trusted": flag(not (status | raised) & disqualifying),
-    }
     coils = {
         "switch_off_us": inputs["switch_off_us"],
         "off_known": 1,
@@ -106,4 +104,4 @@ def admit(
         "pending": (x.pending, y.pending, z.pending),
         "drive_us": (x.drive_us, y.drive_us, z.drive_us),
     }
-    return trace, coils, raised
+    return check3("gate.age_us", (x.age_us, y.age_us, z.age_us)), coils, raised

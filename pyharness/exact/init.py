@@ -5,8 +5,11 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from pyharness.exact.constants import (
+    MRD_E_AGREEMENT,
     MRD_E_BENCH,
     MRD_E_CHOICE,
+    MRD_E_CONTINUITY,
+    MRD_E_CURRENT,
     MRD_E_DIGEST,
     MRD_E_ESTIMATE,
     MRD_E_FILTER,
@@ -16,6 +19,7 @@ from pyharness.exact.constants import (
     MRD_E_NORM,
     MRD_E_PERIOD,
     MRD_E_POLARITY,
+    MRD_E_PROGRESS,
     MRD_E_SAMPLE,
     MRD_E_SETTLE,
     MRD_E_TIMELINE,
@@ -103,6 +107,21 @@ def _gain(path: Record) -> bool:
     )
 
 
+def _continuity(path: Record) -> bool:
+    return _within(path, "config.path", "jump_max_sq", "noise_limit")
+
+
+def _agreement(path: Record) -> bool:
+    return _within(path, "config.path", "agree_mantissa", "agree_shift", "agree_rate_max")
+
+
+def _current(path: Record) -> bool:
+    return _within(path, "config.path", "current_fitted") and (
+        not path["current_fitted"]
+        or (1 <= path["current_ticks"] <= path["window_ticks"]
+            and 1 <= path["current_off_max"] < min(path["current_min"])))
+
+
 def _settle(config: Record) -> bool:
     supervisor = config["supervisor"]
     return (_within(supervisor, "config.supervisor", "settle_by", "settle_dwell", "wake_dwell", "wake_rate")
@@ -112,6 +131,11 @@ def _settle(config: Record) -> bool:
 
 def _estimate(config: Record) -> bool:
     return _within(config["supervisor"], "config.supervisor", "estimate_mantissa", "estimate_shift")
+
+
+def _progress(config: Record) -> bool:
+    return _within(
+        config["supervisor"], "config.supervisor", "growth", "progress", "window_cycles", "pause_cycles")
 
 
 def _bench(config: Record) -> bool:
@@ -137,10 +161,14 @@ PATH_CHECKS: Checks = (
     (MRD_E_CHOICE, _choice),
     (MRD_E_POLARITY, _polarity),
     (MRD_E_GAIN, _gain),
+    (MRD_E_CONTINUITY, _continuity),
+    (MRD_E_AGREEMENT, _agreement),
+    (MRD_E_CURRENT, _current),
 )
 SUPERVISOR_CHECKS: Checks = (
     (MRD_E_SETTLE, _settle),
     (MRD_E_ESTIMATE, _estimate),
+    (MRD_E_PROGRESS, _progress),
     (MRD_E_BENCH, _bench),
     (MRD_E_DIGEST, _digest),
 )

@@ -32,7 +32,7 @@ def fold(words: Iterable[int]) -> int:
 def _plan(struct: Struct) -> tuple[tuple[str, int, tuple | None, bool], ...]:
     """What the walk needs of each entry: name, mask of its width, plan of a nested struct, array or not."""
     return tuple(
-        (entry.name, 0, _plan(entry.struct), False) if isinstance(entry, Nested)
+        (entry.name, 0, _plan(entry.struct), entry.count > 1) if isinstance(entry, Nested)
         else (entry.name, (1 << entry.bits) - 1, None, entry.count > 1)
         for entry in struct if entry.name != "digest"
     )
@@ -42,7 +42,8 @@ def _collect(words: list[int], record: Record, plan: tuple) -> None:
     for name, mask, nested, is_array in plan:
         value = record[name]
         if nested is not None:
-            _collect(words, value, nested)
+            for element in value if is_array else (value,):
+                _collect(words, element, nested)
         elif is_array:
             words += [element & mask for element in value]
         else:

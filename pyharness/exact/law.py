@@ -1,4 +1,4 @@
-"""Stage 6: the derivative-of-field law m = -k dB/dt, or the rate-damping law m = k (w x B)."""
+"""Stage 9: the derivative-of-field law m = -k dB/dt, or the rate-damping law m = k (w x B)."""
 
 from __future__ import annotations
 

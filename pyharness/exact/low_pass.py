@@ -1,4 +1,4 @@
-"""Stage 5: first-order low-pass of the derivative, with eight fraction bits so that it does not stick."""
+"""Stage 7: first-order low-pass of the derivative, with eight fraction bits so that it does not stick."""
 
 from __future__ import annotations
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 from pyharness.exact.constants import (
     MRD_COMMAND_ARM,
     MRD_COMMAND_BENCH,
@@ -13,24 +15,33 @@ from pyharness.exact.constants import (
     MRD_MODE_DAMPING,
     MRD_MODE_HOLD_OFF,
     MRD_MODE_INHIBIT,
+    MRD_MODE_PAUSE,
     MRD_MODE_SAFE,
     MRD_MODE_SETTLED,
     MRD_S_COMMAND_REFUSED,
 )
-from pyharness.exact.num import Record, Vector, count
+from pyharness.exact.num import UINT16_MAX, Record, Vector, count
 from pyharness.exact.ranges import UINT32_MAX
 
 MODES = (
-    MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED, MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH,
+    MRD_MODE_HOLD_OFF,
+    MRD_MODE_DAMPING,
+    MRD_MODE_SETTLED,
+    MRD_MODE_SAFE,
+    MRD_MODE_INHIBIT,
+    MRD_MODE_BENCH,
+    MRD_MODE_PAUSE,
 )
 NO_PULSE = (0, 0, 0)
 COMMANDED = 65535  # in inhibit_commanded: no flipped bit makes it 0
+SEPARATED = 2  # cycles in a row in which the separation time is reached: no single flipped bit ends hold-off
 
 _ACCEPTED_IN = {
     MRD_COMMAND_NONE: MODES,
     MRD_COMMAND_SAFE: MODES,
-    MRD_COMMAND_INHIBIT: (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED, MRD_MODE_INHIBIT),
-    MRD_COMMAND_RESUME: (MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH),
+    MRD_COMMAND_INHIBIT: (
+        MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING, MRD_MODE_SETTLED, MRD_MODE_PAUSE, MRD_MODE_INHIBIT),
+    MRD_COMMAND_RESUME: (MRD_MODE_SAFE, MRD_MODE_INHIBIT, MRD_MODE_BENCH, MRD_MODE_PAUSE),
     MRD_COMMAND_ARM: (MRD_MODE_SAFE,),
     MRD_COMMAND_BENCH: (MRD_MODE_BENCH,),
 }
@@ -76,41 +87,78 @@ def obey(
     return mode, inhibit_commanded, NO_PULSE, 0
 
 
-def dwelling(towards: bool, dwell: int, needed: int, mode: int, following: int) -> tuple[int, int]:
-    """Mode and dwell after one more cycle towards the mode that follows, or one that begins anew."""
+class Seen(NamedTuple):
+    """What a cycle has found that a transition looks at."""
+
+    rate: int
+    rate_valid: int
+    fell_back: int
+    diverging: int
+
+
+class Standing(NamedTuple):
+    """What a transition changes: the mode, its dwell, and how often the damping diverged."""
+
+    mode: int
+    dwell: int
+    trips: int
+
+
+def dwelling(now: Standing, towards: bool, needed: int, following: int, waits: int = 0) -> Standing:
+    """After one more cycle towards the mode that follows, or one that begins the dwell anew.
+
+    Where it waits, the dwell counts all the same.
+    """
     if not towards:
-        return mode, 0
-    dwell = count(dwell, UINT32_MAX)
-    return (following, 0) if dwell >= needed else (mode, dwell)
+        return now._replace(dwell=0)
+    dwell = count(now.dwell, UINT32_MAX)
+    if dwell >= needed and not waits:
+        return now._replace(mode=following, dwell=0)
+    return now._replace(dwell=dwell)
+
+
+def _from_hold_off(now: Standing, supervisor: Record, inputs: Record) -> Standing:
+    if inputs["low_power"]:
+        return now._replace(mode=MRD_MODE_INHIBIT, dwell=0)
+    separated = inputs["separation_s"] >= supervisor["hold_off_s"]
+    return dwelling(now, separated, SEPARATED, MRD_MODE_DAMPING)
+
+
+def _from_damping(now: Standing, supervisor: Record, inputs: Record, seen: Seen) -> Standing:
+    """An estimate that fell back sees only the rate across the field: it can end the dwell, not add to it."""
+    if inputs["low_power"]:
+        return now._replace(mode=MRD_MODE_INHIBIT, dwell=0)
+    if seen.diverging:
+        mode = MRD_MODE_PAUSE if now.trips < supervisor["retries"] else MRD_MODE_SAFE
+        return Standing(mode, 0, count(now.trips, UINT16_MAX))
+    slow = seen.rate <= supervisor["settled_rate"]
+    if not seen.rate_valid or (slow and seen.fell_back):
+        return now
+    after = dwelling(now, slow, supervisor["settle_dwell"], MRD_MODE_SETTLED)
+    return after._replace(trips=0) if after.mode == MRD_MODE_SETTLED else after
+
+
+def _from_settled(now: Standing, supervisor: Record, inputs: Record, seen: Seen) -> Standing:
+    """No pulse leaves, so low power changes nothing; but waking waits for its end."""
+    if not seen.rate_valid:
+        return now
+    fast = seen.rate > supervisor["wake_rate"]
+    return dwelling(now, fast, supervisor["wake_dwell"], MRD_MODE_DAMPING, waits=inputs["low_power"])
 
 
 def advance(
-    mode: int, inhibit_commanded: int, dwell: int, supervisor: Record, inputs: Record, rate: int,
-    rate_valid: int, fell_back: int,
-) -> tuple[int, int]:
-    """One transition by itself. Returns mode and dwell; a new mode begins with a dwell of 0.
-
-    An estimate that fell back sees only the rate across the field: it can end the dwell towards SETTLED, not
-    lengthen it.
-    """
-    low_power = inputs["low_power"]
-    if mode == MRD_MODE_INHIBIT and not low_power and not inhibit_commanded:
-        mode, dwell = MRD_MODE_HOLD_OFF, 0  # whose own rows follow in the same step
-    if mode == MRD_MODE_HOLD_OFF:
-        if low_power:
-            return MRD_MODE_INHIBIT, 0
-        if inputs["separation_s"] >= supervisor["hold_off_s"]:
-            return MRD_MODE_DAMPING, 0
-    elif mode == MRD_MODE_DAMPING:
-        if low_power:
-            return MRD_MODE_INHIBIT, 0
-        slow = rate <= supervisor["settled_rate"]
-        if rate_valid and not (slow and fell_back):
-            return dwelling(slow, dwell, supervisor["settle_dwell"], mode, MRD_MODE_SETTLED)
-    elif mode == MRD_MODE_SETTLED:
-        if low_power:
-            return MRD_MODE_INHIBIT, 0
-        if rate_valid:
-            fast = rate > supervisor["wake_rate"]
-            return dwelling(fast, dwell, supervisor["wake_dwell"], mode, MRD_MODE_DAMPING)
-    return mode, dwell
+    now: Standing, inhibit_commanded: int, supervisor: Record, inputs: Record, seen: Seen,
+) -> Standing:
+    """One transition by itself; a new mode begins with a dwell of 0."""
+    if now.mode == MRD_MODE_INHIBIT and not inputs["low_power"] and not inhibit_commanded:
+        # HOLD_OFF's own rows follow in the same step.
+        return _from_hold_off(now._replace(mode=MRD_MODE_HOLD_OFF, dwell=0), supervisor, inputs)
+    if now.mode == MRD_MODE_HOLD_OFF:
+        return _from_hold_off(now, supervisor, inputs)
+    if now.mode == MRD_MODE_DAMPING:
+        return _from_damping(now, supervisor, inputs, seen)
+    if now.mode == MRD_MODE_SETTLED:
+        return _from_settled(now, supervisor, inputs, seen)
+    if now.mode == MRD_MODE_PAUSE:
+        return dwelling(now, True, supervisor["pause_cycles"], MRD_MODE_HOLD_OFF)
+    return now

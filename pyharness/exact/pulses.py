@@ -1,4 +1,4 @@
-"""Stage 8: the command as widths of pulses in ticks of the timer."""
+"""Stage 11: the command as widths of pulses in ticks of the timer."""
 
 from __future__ import annotations
 

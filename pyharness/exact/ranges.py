@@ -17,6 +17,7 @@ UINT32_MAX = 2**32 - 1
 NORM_MAX = 3 * INT16_MAX**2
 FILTER_MAX = 256 * INT16_MAX
 CROSS_MAX = 2 * INT16_MAX**2
+NORM_ROOT_MAX = 56754  # of NORM_MAX
 RATE_SLOW_MAX = UINT16_MAX - 1  # the saturated estimate is never slow
 
 
@@ -82,6 +83,19 @@ def _counters(path: str) -> dict[str, Range]:
         f"{path}.fell_back": _u16("cycles", "in which the law fell back"),
         f"{path}.refused": _u16("commands", "refused"),
         f"{path}.restarts": _u16("restarts", "after a failed integrity check"),
+        f"{path}.corrupt": _u16("cycles", "with a corrupt configuration"),
+        f"{path}.mag_faults": _u16("cycles", "with a magnetometer out of range or without continuity"),
+        f"{path}.gyro_faults": _u16("cycles", "with a gyro missing, out of range, frozen or disagreeing"),
+        f"{path}.coil_faults": _u16("cycles", "with a wrong coil current or a missing stamp"),
+        f"{path}.time_faults": _u16("cycles", "with a sample off its place or a wrong interval"),
+        f"{path}.trips": _u16("divergences", "in all"),
+    }
+
+
+def _ballot(path: str, what: str) -> dict[str, Range]:
+    return {
+        f"{path}.level": Range(0, 64, "votes", f"against {what}"),
+        f"{path}.tripped": _flag(f"against {what}"),
     }
 
 
@@ -107,6 +121,19 @@ _CONFIG = {
     "config.path.filter_gain": Range(128, 2**15, "Q15", "1 - pole of the low-pass"),
     **_gain("config.path.derivative_gain", "derivative"),
     **_gain("config.path.rate_gain", "rate"),
+    "config.path.jump_max_sq": Range(1, NORM_MAX, "field count^2", "greatest change a sample, squared"),
+    "config.path.noise_limit": Range(1, UINT16_MAX, "field count", "greatest change of the norm"),
+    "config.path.frozen_limit": _u16("samples", "with the same counts on all axes; 0: never frozen"),
+    "config.path.dead_limit": _u16("samples", "with the same count on one axis; 0: never dead"),
+    "config.path.gyro_frozen_limit": _u16("samples", "with the same gyro counts; 0: never frozen"),
+    "config.path.agree_limit": _u16("field count a period", "gyro against field; 0: not compared"),
+    "config.path.agree_mantissa": Range(32768, UINT16_MAX, "mantissa", "w x B in field counts a period"),
+    "config.path.agree_shift": Range(1, 31, "bits", "w x B in field counts a period"),
+    "config.path.agree_rate_max": Range(1, INT16_MAX, "rate count", "not compared above"),
+    "config.path.current_fitted": _flag("coil current sense fitted"),
+    "config.path.current_ticks": Range(1, 2**14, "ticks", "shorter pulses are not judged"),
+    "config.path.current_min": Range(2, INT16_MAX, "current count", "less is weak"),
+    "config.path.current_off_max": Range(1, INT16_MAX - 1, "current count", "more is not off"),
     "config.supervisor.settle_dwell": Range(1, UINT32_MAX, "cycles", "slow until SETTLED"),
     "config.supervisor.wake_dwell": Range(1, UINT32_MAX, "cycles", "fast until DAMPING again"),
     "config.supervisor.hold_off_s": _u32("s", "separation to the first pulse of the law"),
@@ -115,6 +142,12 @@ _CONFIG = {
     "config.supervisor.wake_rate": Range(0, RATE_SLOW_MAX, "rate count", "fast: above"),
     "config.supervisor.estimate_mantissa": Range(32768, UINT16_MAX, "mantissa", "rate count per chord"),
     "config.supervisor.estimate_shift": Range(1, 31, "bits", "rate count per chord"),
+    "config.supervisor.window_cycles": Range(1, UINT32_MAX, "cycles", "over which progress is judged"),
+    "config.supervisor.pause_cycles": Range(1, UINT32_MAX, "cycles", "in PAUSE"),
+    "config.supervisor.guard_rate": _u16("rate count", "diverging above this only; 65535: never"),
+    "config.supervisor.growth": Range(257, 1024, "Q8", "diverging: above this times the peak before"),
+    "config.supervisor.progress": Range(1, 256, "Q8", "stalled: above this times an earlier peak"),
+    "config.supervisor.retries": _u16("pauses", "before SAFE"),
     "config.supervisor.bench_key": Range(1, UINT16_MAX, "key", "carried by the arm command"),
     "config.supervisor.bench_limit_ticks": Range(1, 2**14, "ticks", "longest bench pulse"),
     "config.digest": _u32("digest", "of the configuration"),
@@ -128,6 +161,9 @@ _INPUTS = {
     "inputs.path.gyro_raw": _i16("raw count", "gyro"),
     "inputs.path.mag_valid": _u16("flag", "magnetometer sampled"),
     "inputs.path.gyro_valid": _u16("flag", "gyro sampled"),
+    "inputs.path.current_valid": _u16("flag", "coil currents read"),
+    "inputs.path.current_driven": _i16("current count", "at the end of the last pulse"),
+    "inputs.path.current_sampled": _i16("current count", "while the magnetometer samples"),
     "inputs.separation_s": _u32("s", "since separation"),
     "inputs.low_power": _u16("flag", "coils are to stay off"),
     "inputs.command": _u16("MRD_COMMAND", "command"),
@@ -147,9 +183,31 @@ _STATE = {
     "state.path.off_known": _flag("switch_off_us holds stamps"),
     "state.path.off_clear": _flag("this switch-off was once old enough"),
     "state.path.pending": _flag("a pulse whose switch-off is not stamped yet"),
-    "state.dwell": _u32("cycles", "towards settled, or towards waking"),
-    "state.mode": Range(3, 12, "MRD_MODE", "mode"),
+    "state.path.ticks": _sym(2**14, "ticks", "pulses of the last step"),
+    "state.path.mag_raw": _i16("raw count", "magnetometer, last sample"),
+    "state.path.mag_known": _flag("mag_raw holds a sample"),
+    "state.path.mag_same": _u16("samples", "in a row with that count"),
+    "state.path.norm": Range(0, NORM_ROOT_MAX, "field count", "norm of the last step"),
+    "state.path.norm_known": _flag("norm is that of the last step"),
+    **_ballot("state.path.noise", "the norm"),
+    "state.path.gyro_raw": _i16("raw count", "gyro, last sample"),
+    "state.path.gyro_known": _flag("gyro_raw holds a sample"),
+    "state.path.gyro_same": _u16("samples", "in a row with these counts"),
+    "state.path.rate": _sym(INT16_MAX, "rate count", "rate of the last step"),
+    "state.path.rate_known": _flag("rate can be used"),
+    **_ballot("state.path.agreement", "the gyro"),
+    **_ballot("state.path.weak", "a coil's current"),
+    **_ballot("state.path.backward", "a coil's sense"),
+    "state.dwell": _u32("cycles", "towards damping, settled or waking, or in PAUSE"),
+    "state.mode": Range(3, 15, "MRD_MODE", "mode"),
     "state.inhibit_commanded": _u16("flags", "0, or 65535: inhibit stays until resume"),
+    "state.trips": _u16("divergences", "since the last RESUME or SETTLED"),
+    "state.cycle": _u16("cycles", "since reset, wraps"),
+    "state.progress.window": Range(0, UINT32_MAX - 1, "cycles", "of the present window"),
+    "state.progress.peak": _u16("rate count", "peaks of the present window and the two before"),
+    "state.progress.least": _u16("rate count", "of the present four estimates"),
+    "state.progress.in_four": Range(0, 3, "estimates", "of the present four"),
+    "state.progress.stalled": _flag("no progress at the end of the last window"),
     **_counters("state.counters"),
     "state.digest": _u32("digest", "of the state"),
 }
@@ -163,13 +221,24 @@ _TRACE = {
     "calibration.rate_valid": _flag("rate can be used"),
     # stage 2
     "plausibility.norm_sq": Range(0, NORM_MAX, "field count^2", "norm of the field, squared"),
+    "plausibility.norm": Range(0, NORM_ROOT_MAX, "field count", "norm of the field, rounded down"),
     # stage 3
+    "currents.along": Range(-INT16_MAX - 1, INT16_MAX + 1, "current count", "in the sense of the pulse"),
+    "currents.fault": Range(0, 3, "MRD_COIL", "what is held against a coil"),
+    # stage 4
     "gate.departure": _u32("us", "mid-sample against its place in the cycle, mod 2^32"),
     "gate.age_us": _u32("us", "switch-off to the start of the sample, mod 2^32"),
     "gate.since_start_us": _u32("us", "start of the cycle after the drive window opened, wraps"),
     "gate.since_drive_us": _u32("us", "start of the last pulse's drive window to the switch-off, mod 2^32"),
     "gate.trusted": _flag("sample is used"),
-    # stage 4
+    # stage 5
+    "continuity.same": _u16("samples", "in a row with the same count"),
+    "continuity.elapsed": _u32("us", "since the last trusted sample, mod 2^32"),
+    "continuity.difference": _sym(2 * INT16_MAX, "field count", "from the last trusted sample"),
+    "continuity.jump_sq": Range(0, NORM_MAX, "field count^2", "clamped difference, squared"),
+    "continuity.norm_change": Range(0, NORM_ROOT_MAX, "field count", "of the norm from the last step"),
+    "continuity.gyro_same": _u16("samples", "of the gyro in a row with the same counts"),
+    # stage 6
     "derivative.interval_us": _u32("us", "between the two samples, mod 2^32"),
     "derivative.period": Range(2**14, 2**15 - 1, "us >> k", "P: period in 15 bits"),
     "derivative.interval": Range(2**13, 49151, "us >> k", "I: interval in the unit of the period"),
@@ -180,13 +249,21 @@ _TRACE = {
     "derivative.unclamped": _sym(4 * INT16_MAX, "field count a period", "derivative before the clamp"),
     "derivative.derivative": _sym(INT16_MAX, "field count a period", "derivative of the field"),
     "derivative.valid": _flag("there is a derivative"),
-    # stage 5
+    # stage 7
     "low_pass.target": _sym(FILTER_MAX, "Q8 field count a period", "derivative in the filter's format"),
     "low_pass.error": _sym(2 * FILTER_MAX, "Q8 field count a period", "target minus filter"),
     "low_pass.product": _sym(2 * FILTER_MAX * 2**15, "Q23 field count a period", "error times gain; 40 bits"),
     "low_pass.filter": _sym(FILTER_MAX, "Q8 field count a period", "new filter"),
     "low_pass.filtered": _sym(INT16_MAX, "field count a period", "filtered derivative"),
-    # stage 6
+    # stage 8
+    "agreement.mean_rate": _sym(INT16_MAX, "rate count", "rate at the middle of the interval"),
+    "agreement.mean_field": _sym(INT16_MAX, "field count", "field at the middle of the interval"),
+    "agreement.product": _sym(
+        CROSS_MAX * UINT16_MAX, "Q(shift + 16) field count a period", "w x B times mantissa; 48 bits"),
+    "agreement.residual": _sym(INT16_MAX + 2**30, "field count a period", "derivative plus w x B"),
+    "agreement.allowed": Range(1, UINT16_MAX + 4095, "field count a period", "greatest residual that agrees"),
+    "agreement.judged": _flag("gyro and field were compared"),
+    # stage 9
     "law.active": Range(0, 2, "MRD_LAW", "law that acted"),
     "law.norm": Range(32768, NORM_MAX, "field count^2", "norm limited to its plausible range"),
     "law.exponent": Range(0, 16, "bits", "norm brought to 16 bits"),
@@ -198,14 +275,14 @@ _TRACE = {
     "law.product": _sym(INT16_MAX * UINT16_MAX, "Q(shift) command", "filtered derivative times gain"),
     "law.cross_product": _sym(CROSS_MAX * UINT16_MAX, "Q(shift + 16) command", "w x B times gain; 48 bits"),
     "law.demand": _sym(2**30, "Q15 of the dipole limit", "unsaturated command"),
-    # stage 7
+    # stage 10
     "saturation.largest": Range(0, 2**30, "Q15 of the dipole limit", "largest demand of the three axes"),
     "saturation.exponent": Range(0, 15, "bits", "largest demand brought to 16 bits"),
     "saturation.divisor": Range(32768, 65535, "demand >> exponent", "largest demand in 16 bits"),
     "saturation.reciprocal": Range(32767, 65534, "Q16", "limit / divisor"),
     "saturation.product": Range(0, INT16_MAX * 2**16 + 32767, "Q16 command", "demand times reciprocal"),
     "saturation.command": _sym(INT16_MAX, "Q15 of the dipole limit", "command"),
-    # stage 8
+    # stage 11
     "pulses.product": Range(0, INT16_MAX * 2**14, "Q15 ticks", "magnitude of the command times the window"),
     "pulses.width": Range(0, 2**14, "ticks", "width before the shortest pulse"),
     "pulses.ticks": _sym(2**14, "ticks", "signed pulse"),
@@ -215,24 +292,34 @@ _TRACE = {
 
 _ESTIMATE = {
     "estimate.sum_sq": Range(0, NORM_MAX, "count^2", "squares of the rate, or of the filtered derivative"),
-    "estimate.turn": Range(0, 56754, "field count a period", "a: norm of the filtered derivative"),
-    "estimate.norm": Range(1, 56754, "field count", "b: norm of the field"),
+    "estimate.turn": Range(0, NORM_ROOT_MAX, "field count a period", "a: norm of the filtered derivative"),
+    "estimate.norm": Range(1, NORM_ROOT_MAX, "field count", "b: norm of the field"),
     "estimate.chord": _u16("Q15 rad a period", "chord of the field's turn"),
     "estimate.product": Range(0, UINT16_MAX**2, "Q(shift) rate count", "chord times mantissa"),
+    "estimate.across": _u16("rate count", "rate across the field, saturated"),
+    "estimate.across_valid": _flag("there is a rate across the field"),
+}
+
+_PROGRESS = {
+    "ballot.level": Range(0, 64, "votes", "against"),
+    "progress.window": Range(1, UINT32_MAX, "cycles", "of the window, this one counted"),
+    "progress.grown": Range(0, 256 * UINT16_MAX, "Q8 rate count", "peak of the window"),
+    "progress.allowed": Range(0, 1024 * UINT16_MAX, "Q8 rate count", "share of an earlier peak"),
 }
 
 _OUTPUTS = {
     "outputs.ticks": _sym(2**14, "ticks", "signed pulses of this cycle"),
-    "outputs.mode": Range(3, 12, "MRD_MODE", "mode"),
-    "outputs.status": Range(0, 2**23 - 1, "bits", "status word"),
+    "outputs.mode": Range(3, 15, "MRD_MODE", "mode"),
+    "outputs.status": Range(0, UINT32_MAX, "bits", "status word"),
     "outputs.rate": _u16("rate count", "rate estimate, saturated"),
     "outputs.rate_valid": _flag("there is a rate estimate"),
     "outputs.handover": _flag("settled"),
+    "outputs.cycle": _u16("cycles", "since reset, wraps"),
     "outputs.digest": _u32("digest", "of the configuration in use"),
     **_counters("outputs.counters"),
 }
 
-RANGES: dict[str, Range] = {**_CONFIG, **_INPUTS, **_STATE, **_TRACE, **_ESTIMATE, **_OUTPUTS}
+RANGES: dict[str, Range] = {**_CONFIG, **_INPUTS, **_STATE, **_TRACE, **_ESTIMATE, **_PROGRESS, **_OUTPUTS}
 
 _BOUNDS = {name: (entry.lo, entry.hi) for name, entry in RANGES.items()}
 

@@ -1,4 +1,4 @@
-"""Stage 7: the demand brought within the dipole limit, axis by axis or with its direction kept."""
+"""Stage 10: the demand brought within the dipole limit, axis by axis or with its direction kept."""
 
 from __future__ import annotations
 

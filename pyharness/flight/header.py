@@ -51,7 +51,7 @@ def _read(path: Path, content: bytes) -> Header:
             constants[found["name"]] = int(found["value"])
             if found["text"]:
                 texts[found["name"]] = found["text"]
-    for name, value in re.findall(r"(MRD_(?:VERSION|AXES)) = (\d+)", content.decode()):
+    for name, value in re.findall(r"\b(MRD_[A-Z]+(?:_[A-Z]+)*) = (\d+)[,} ]", content.decode()):
         constants[name] = int(value)
     return Header(_own_lines(done.stdout, path), constants, texts)
 

@@ -136,3 +136,12 @@ class Library:
             self.pointer("mrd_outputs[]", outputs),
             len(inputs),
         )
+
+    def telemetry(self, outputs: np.ndarray) -> bytes:
+        """mrd_telemetry of every record (n,): n frames, one after the other."""
+        size = self.lib.MRD_TELEMETRY_BYTES
+        frames = self.ffi.new("uint8_t[]", size * len(outputs))
+        pointer = self.pointer("mrd_outputs[]", np.ascontiguousarray(outputs))
+        for i in range(len(outputs)):
+            self.lib.mrd_telemetry(self.ffi.addressof(pointer, i), frames + i * size)
+        return bytes(self.ffi.buffer(frames))

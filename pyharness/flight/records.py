@@ -5,6 +5,7 @@ A record's *columns* are its integers in declared order, named like C would: `tr
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping
 from functools import cache
 from typing import Any
@@ -36,7 +37,7 @@ def _convert(ffi: Any, ctype: Any) -> np.dtype:
 def columns(dtype: np.dtype, prefix: str = "") -> list[str]:
     """Names of all integers of a record, in declared order."""
     if dtype.subdtype:
-        return [f"{prefix}[{i}]" for i in range(dtype.shape[0])]
+        return [column for i in range(dtype.shape[0]) for column in columns(dtype.base, f"{prefix}[{i}]")]
     if dtype.names is None:
         return [prefix]
     dot = f"{prefix}." if prefix else ""
@@ -51,7 +52,7 @@ def to_columns(records: np.ndarray) -> np.ndarray:
 
 def _column_block(values: np.ndarray) -> np.ndarray:
     if values.dtype.names is not None:
-        return to_columns(values)
+        return np.concatenate([to_columns(column) for column in np.atleast_2d(values.T)], axis=1)
     return values.reshape(len(values), -1).astype(np.int64)
 
 
@@ -66,7 +67,8 @@ def _fill(records: np.ndarray, table: np.ndarray, start: int) -> int:
     for name in records.dtype.names:
         target = records[name]
         if target.dtype.names is not None:
-            start = _fill(target, table, start)
+            for column in np.atleast_2d(target.T):
+                start = _fill(column, table, start)
         elif target.ndim == 1:
             target[...] = table[:, start]
             start += 1
@@ -92,8 +94,21 @@ def _assign(record: np.ndarray, values: Mapping[str, Any]) -> None:
             raise KeyError(f"no field {name!r} here, only {', '.join(record.dtype.names)}")
         if isinstance(value, Mapping):
             _assign(record[name], value)
+        elif record.dtype[name].base.names is not None:
+            for target, element in zip(record[name], value, strict=True):
+                _assign(target, element)
         else:
             record[name] = value
+
+
+def flip_bit(record: np.ndarray | np.void, column: str, bit: int) -> None:
+    """Flip one bit of one integer of a record, in place; the integer is named as `columns` names it."""
+    *parents, leaf = (int(part) if part.isdigit() else part for part in re.findall(r"\w+", column))
+    for part in parents:
+        record = record[part]
+    value = np.asarray(record[leaf])
+    unsigned = np.dtype(f"u{value.dtype.itemsize}")
+    record[leaf] = (value.astype(unsigned) ^ unsigned.type(1 << bit)).astype(value.dtype)
 
 
 def to_dict(record: np.void | np.ndarray) -> dict[str, Any]:
@@ -115,10 +130,22 @@ def _unpacker(dtype: np.dtype) -> Callable[[tuple], dict[str, Any]]:
 def _unpack_field(dtype: np.dtype) -> Callable[[Any], Any]:
     if dtype.names is not None:
         return _unpacker(dtype)
+    if dtype.base.names is not None:
+        unpack = _unpacker(dtype.base)
+        return lambda elements: tuple(unpack(element) for element in elements.tolist())
     return (lambda value: tuple(value.tolist())) if dtype.subdtype else (lambda value: value)
 
 
 @cache
 def _packer(dtype: np.dtype) -> Callable[[Mapping[str, Any]], tuple]:
-    parts = [(name, _packer(dtype[name]) if dtype[name].names else None) for name in dtype.names]
-    return lambda values: tuple(pack(values[name]) if pack else values[name] for name, pack in parts)
+    parts = [(name, _pack_field(dtype[name])) for name in dtype.names]
+    return lambda values: tuple(pack(values[name]) for name, pack in parts)
+
+
+def _pack_field(dtype: np.dtype) -> Callable[[Any], Any]:
+    if dtype.names is not None:
+        return _packer(dtype)
+    if dtype.base.names is not None:
+        pack = _packer(dtype.base)
+        return lambda elements: [pack(element) for element in elements]
+    return lambda value: value

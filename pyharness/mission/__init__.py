@@ -1,13 +1,15 @@
 """The mission file: read, checked completely, and handed on as frozen data."""
 
 from pyharness.mission.errors import MissionError
-from pyharness.mission.load import demo_path, load_mission
+from pyharness.mission.load import demo_path, load_mission, mission_path
 from pyharness.mission.model import (
     AXES,
     Body,
     Coil,
     Control,
+    CurrentSense,
     Cycle,
+    Defence,
     Gyro,
     Magnetometer,
     Matrix,
@@ -23,7 +25,9 @@ __all__ = [
     "Body",
     "Coil",
     "Control",
+    "CurrentSense",
     "Cycle",
+    "Defence",
     "Gyro",
     "Magnetometer",
     "Matrix",
@@ -35,4 +39,5 @@ __all__ = [
     "Winding",
     "demo_path",
     "load_mission",
+    "mission_path",
 ]

@@ -12,6 +12,20 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from pyharness.mission.defence import (
+    COMPARED_RAD,
+    FAST,
+    FEWEST_CYCLES,
+    MOST_CYCLES,
+    MOVED_COUNTS,
+    PULSE_TIME_CONSTANTS,
+    fewest_still_cycles,
+    most_gyro_error_deg_s,
+    pulse_share,
+    rate_noise_deg_s,
+    sample_noise_ut,
+    turned_ut,
+)
 from pyharness.mission.model import AXES, Matrix
 from pyharness.mission.reading import Reading
 from pyharness.mission.schema import BY_PATH, ORBITAL_PERIOD
@@ -19,6 +33,7 @@ from pyharness.mission.wording import quantity, rounded
 
 INT16_MAX = 32767
 FEWEST_TICKS, MOST_TICKS = 16, 16384
+SLOWEST_TIP_OFF_DEG_S = 0.01
 SLACK = 1e-6
 """Tolerance on sums of decimal fractions, in ms or relative: far above rounding, far below what matters."""
 
@@ -93,6 +108,13 @@ def _inertia_is_that_of_a_body(*entries: Named) -> Iterator[str]:
             f"body.inertia_kg_m2: {told} violate the triangle inequality, the greatest must be at most the "
             f"sum of the others, {least + middle:.6g} {unit} (from {given} {unit})"
         )
+
+
+@_check("body.tip_off_deg_s")
+def _tip_off_is_a_tumble(tip_off: Named) -> Iterator[str]:
+    """The counts of the rate are scaled by it."""
+    if math.hypot(*tip_off.value) < SLOWEST_TIP_OFF_DEG_S:
+        yield f"{tip_off}, must have a norm of at least {SLOWEST_TIP_OFF_DEG_S:g} {tip_off.unit}"
 
 
 # Supply -----------------------------------------------------------------------------------------------------
@@ -267,9 +289,7 @@ def _settled_above_the_noise(
     settle_by: Named, settled: Named, noise: Named, period: Named, least: Named, greatest: Named
 ) -> Iterator[str]:
     """Three times the rate noise of a two-sample derivative, √2 σ / (B T), amid the plausible field."""
-    middle_ut = 0.5 * (least.value + greatest.value)
-    rate = math.sqrt(2.0) * noise.value * 1e-3 / (middle_ut * period.value * 1e-3)
-    floor = 3.0 * math.degrees(rate)
+    floor = 3.0 * rate_noise_deg_s(noise.value, period.value, least.value, greatest.value)
     if settle_by.value == "field" and settled.value < floor:
         yield (
             f"{settled}, must be at least {rounded(floor, settled.unit)}, three times the noise of a rate "
@@ -295,3 +315,145 @@ def _low_pass_is_not_endless(low_pass: Named, period: Named) -> Iterator[str]:
     longest = 100.0 * period.value * 1e-3
     if low_pass.value > longest * (1.0 + SLACK):
         yield f"{low_pass}, must be at most {rounded(longest, 's')}: 100 × {period}"
+
+
+# Defence ----------------------------------------------------------------------------------------------------
+
+
+@_check("defence.jump_ut", "control.field_max_ut", "cycle.period_ms", "body.tip_off_deg_s")
+def _tumble_is_no_jump(jump: Named, field: Named, period: Named, tip_off: Named) -> Iterator[str]:
+    least = turned_ut(tip_off.value, period.value, field.value)
+    if jump.value < least * (1.0 - SLACK):
+        yield (
+            f"{jump}, must be at least {rounded(least, jump.unit)}, by which {field} turns in {period} at "
+            f"{FAST:g} × the norm of {tip_off}"
+        )
+
+
+@_check("defence.noise_ut", "magnetometer.noise_nt")
+def _noise_is_not_noisy(limit: Named, noise: Named) -> Iterator[str]:
+    least = sample_noise_ut(noise.value)
+    if limit.value < least * (1.0 - SLACK):
+        yield f"{limit}, must be at least {rounded(least, limit.unit)}, 6 √2 × {noise}"
+
+
+_STILL = ("magnetometer.counts_per_ut", "control.field_min_ut", "cycle.period_ms", ORBITAL_PERIOD)
+
+
+@_check("defence.frozen_s", *_STILL)
+@_check("defence.dead_axis_s", *_STILL)
+def _settled_field_is_not_frozen(
+    still: Named, counts: Named, field: Named, period: Named, orbit: Named
+) -> Iterator[str]:
+    cycles = fewest_still_cycles(orbit.value, field.value, counts.value, period.value)
+    least = cycles * period.value * 1e-3
+    if 0.0 < still.value < least - SLACK:
+        yield (
+            f"{still}, must be 0 (off) or at least {rounded(least, 's')}, {cycles} × {period}: with {counts}, "
+            f"{field} that turns once in {orbit} may take as long to move by {MOVED_COUNTS} counts"
+        )
+
+
+@_check("defence.frozen_s", "cycle.period_ms")
+@_check("defence.dead_axis_s", "cycle.period_ms")
+@_check("defence.gyro_frozen_s", "cycle.period_ms")
+def _still_counts_can_be_counted(still: Named, period: Named) -> Iterator[str]:
+    most = MOST_CYCLES * period.value * 1e-3
+    if still.value > most + SLACK:
+        yield f"{still}, must be at most {rounded(most, 's')}, {MOST_CYCLES} × {period}"
+
+
+@_check("defence.gyro_frozen_s", "cycle.period_ms")
+def _gyro_may_repeat_itself(still: Named, period: Named) -> Iterator[str]:
+    least = FEWEST_CYCLES * period.value * 1e-3
+    if 0.0 < still.value < least - SLACK:
+        yield f"{still}, must be 0 (off) or at least {rounded(least, 's')}, {FEWEST_CYCLES} × {period}"
+
+
+@_check("defence.dead_axis_s", "defence.frozen_s")
+def _one_axis_may_stand_longer(dead: Named, frozen: Named) -> Iterator[str]:
+    if 0.0 < dead.value < frozen.value:
+        yield f"{dead}, must be 0 (off) or at least {frozen}"
+
+
+@_check("defence.gyro_frozen_s", "gyro")
+@_check("defence.gyro_error_deg_s", "gyro")
+def _gyro_to_be_watched_is_there(threshold: Named, gyro: Named) -> Iterator[str]:
+    if threshold.value and not gyro.value:
+        yield f"{threshold} needs a gyro, but there is no table [gyro]"
+
+
+@_check("defence.gyro_error_deg_s", "magnetometer.noise_nt", "cycle.period_ms", "control.field_min_ut",
+        "control.field_max_ut")  # fmt: skip
+def _gyro_error_is_above_the_noise(error: Named, noise: Named, period: Named, *field: Named) -> Iterator[str]:
+    least = 3.0 * rate_noise_deg_s(noise.value, period.value, *(bound.value for bound in field))
+    most = most_gyro_error_deg_s(period.value)
+    if error.value and error.value < least * (1.0 - SLACK):
+        yield (
+            f"{error}, must be 0 (off) or at least {rounded(least, error.unit)}, three times the noise of a "
+            f"rate from two samples: with {noise}, {period} and a field halfway between {field[0]} and "
+            f"{field[1]}"
+        )
+    elif error.value > most * (1.0 + SLACK):
+        yield (
+            f"{error}, must be at most {rounded(most, error.unit)}, {COMPARED_RAD:g} rad in {period}: gyro "
+            "and field are not compared beyond it"
+        )
+
+
+@_check("defence.guard_deg_s", "body.tip_off_deg_s")
+def _guard_is_above_the_tip_off(guard: Named, tip_off: Named) -> Iterator[str]:
+    """A spin along the field may show late: up to the tip-off rate that is no growth."""
+    least = math.hypot(*tip_off.value)
+    if guard.value < least * (1.0 - SLACK):
+        yield f"{guard}, must be at least {rounded(least, guard.unit)}, the norm of {tip_off}: a spin that shows late has not grown"
+
+
+@_check("defence.window_s", "cycle.period_ms")
+def _window_holds_a_peak(window: Named, period: Named) -> Iterator[str]:
+    least = FEWEST_CYCLES * period.value * 1e-3
+    if window.value < least - SLACK:
+        yield (
+            f"{window}, must be at least {rounded(least, 's')}, {FEWEST_CYCLES} × {period}: a peak is taken from "
+            "that many"
+        )
+
+
+# Current sense ----------------------------------------------------------------------------------------------
+
+
+@_check("current_sense.off_counts", "current_sense.counts_at_full", "current_sense.noise_counts", "supply.max_v",
+        "supply.nominal_v", "coil.*.blanking_ms", "coil.*.time_constant_ms")  # fmt: skip
+def _off_reads_as_off(
+    off: Named, full: Named, noise: Named, highest: Named, nominal: Named, blanking: Named, lag: Named
+) -> Iterator[str]:
+    """What is left of the largest current when the sample begins, and noise, must count as off."""
+    left = full.value * highest.value / nominal.value * math.exp(-blanking.value / lag.value)
+    least = 6.0 * noise.value + left
+    if off.value <= least:
+        yield (
+            f"{off}, must exceed {rounded(least, off.unit)}: 6 × {noise}, and what {full} at {highest} "
+            f"({nominal}) leave after {blanking} with {lag}"
+        )
+
+
+@_check("current_sense.weak_percent", "current_sense.counts_at_full", "current_sense.off_counts", "supply.min_v",
+        "supply.nominal_v")  # fmt: skip
+def _weak_is_more_than_off(weak: Named, full: Named, off: Named, lowest: Named, nominal: Named) -> Iterator[str]:
+    expected = full.value * lowest.value / nominal.value * pulse_share()
+    if round(weak.value / 100.0 * expected) <= off.value:
+        least = rounded(100.0 * (off.value + 1) / expected, weak.unit)
+        yield (
+            f"{weak} of the {rounded(expected, full.unit)} that {full} become in a pulse of "
+            f"{PULSE_TIME_CONSTANTS:g} L/R at {lowest} ({nominal}) must exceed {off}: raise it to {least}, or "
+            "lower current_sense.off_counts"
+        )
+
+
+@_check("current_sense.counts_at_full", "coil.*.time_constant_ms", "cycle.drive_window_ms")
+def _a_pulse_reaches_its_current(_sense: Named, lag: Named, window: Named) -> Iterator[str]:
+    if PULSE_TIME_CONSTANTS * lag.value > window.value:
+        yield (
+            f"{lag}, must be at most {rounded(window.value / PULSE_TIME_CONSTANTS, lag.unit)} with a table "
+            f"[current_sense], a third of {window}: no pulse reaches a current that can be judged"
+        )

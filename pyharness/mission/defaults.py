@@ -2,6 +2,15 @@
 
 from __future__ import annotations
 
+from pyharness.mission.defence import (
+    dead_axis_default_s,
+    frozen_default_s,
+    guard_default_deg_s,
+    gyro_error_default_deg_s,
+    gyro_frozen_default_s,
+    jump_default_ut,
+    noise_default_ut,
+)
 from pyharness.mission.model import AXES, Winding
 from pyharness.mission.orbit import (
     Extent,
@@ -34,6 +43,11 @@ def complete(reading: Reading) -> None:
     if not reading.is_broken("control"):
         _gain(reading)
         _default(reading, "control.settle_by", "gyro" if reading.values["gyro"] else "field")
+    if not reading.is_broken("defence"):
+        _defence(reading)
+    if reading.has("current_sense.counts_at_full"):
+        full = reading.values["current_sense.counts_at_full"]
+        _default(reading, "current_sense.off_counts", max(1, round(0.05 * full)))
 
 
 def _default(reading: Reading, path: str, value: object) -> None:
@@ -67,6 +81,8 @@ def _from_extent(reading: Reading, extent: Extent) -> None:
     _default(reading, "control.dwell_s", round(extent.period_s / 4.0, 1))
     _default(reading, "control.field_min_ut", least)
     _default(reading, "control.field_max_ut", greatest)
+    _default(reading, "defence.window_s", round(extent.period_s / 2.0, 1))
+    _default(reading, "defence.pause_s", round(extent.period_s, 1))
 
 
 def _dipole(reading: Reading, axis: str) -> None:
@@ -125,3 +141,30 @@ def _gain(reading: Reading) -> None:
         reading.problems.append(f"control: the gain is missing, give exactly one of {choices}")
     elif len(given) > 1:
         reading.problems.append(f"control: {joined(given)} exclude each other, give exactly one")
+
+
+_MAGNETOMETER = ("counts_per_ut", "noise_nt", "bias_error_ut", "misalignment_error_deg", "stray_ut_per_a_m2")
+_GYRO = ("counts_per_deg_s", "noise_deg_s", "bias_error_deg_s", "misalignment_error_deg")
+_COIL = ("dipole_a_m2", "remanence_fraction", "time_constant_ms", "blanking_ms")
+_SOURCES = (
+    "body.tip_off_deg_s", ORBITAL_PERIOD, "supply.nominal_v", "supply.max_v", "cycle.period_ms",
+    "control.field_min_ut", "control.field_max_ut", "control.wake_deg_s",
+    *(f"magnetometer.{name}" for name in _MAGNETOMETER),
+    *(f"coil.{axis}.{name}" for axis in AXES for name in _COIL),
+)  # fmt: skip
+"""What the defaults of the defences follow from, beside the gyro."""
+
+
+def _defence(reading: Reading) -> None:
+    values = reading.values
+    gyro = [f"gyro.{name}" for name in _GYRO] if values["gyro"] else []
+    if not reading.has(*_SOURCES, *gyro):
+        return  # what is missing is told already
+    _default(reading, "defence.jump_ut", jump_default_ut(values))
+    _default(reading, "defence.noise_ut", noise_default_ut(values))
+    _default(reading, "defence.frozen_s", frozen_default_s(values))
+    if reading.has("defence.frozen_s"):
+        _default(reading, "defence.dead_axis_s", dead_axis_default_s(values))
+    _default(reading, "defence.guard_deg_s", guard_default_deg_s(values))
+    _default(reading, "defence.gyro_frozen_s", gyro_frozen_default_s(values))
+    _default(reading, "defence.gyro_error_deg_s", gyro_error_default_deg_s(values))

@@ -20,7 +20,9 @@ from pyharness.mission.model import (
     Body,
     Coil,
     Control,
+    CurrentSense,
     Cycle,
+    Defence,
     Gyro,
     Magnetometer,
     Mission,
@@ -36,7 +38,12 @@ Tree = Mapping[str, object]
 
 def demo_path() -> Path:
     """The demo mission that ships with the package."""
-    return Path(str(resources.files("pyharness") / "missions" / "demo.toml"))
+    return mission_path("demo")
+
+
+def mission_path(name: str) -> Path:
+    """A mission that ships with the package, by its name: "demo" or "plover"."""
+    return Path(str(resources.files("pyharness") / "missions" / f"{name}.toml"))
 
 
 def load_mission(path: str | os.PathLike[str], overrides: Tree | None = None) -> Mission:
@@ -112,6 +119,8 @@ def _mission(values: dict[str, object], source: str, digest: str) -> Mission:
         gyro=_table(Gyro, values, "gyro") if values["gyro"] else None,
         cycle=_table(Cycle, values, "cycle"),
         control=_table(Control, values, "control"),
+        defence=_table(Defence, values, "defence"),
+        current_sense=_table(CurrentSense, values, "current_sense") if values["current_sense"] else None,
         source=source,
         digest=digest,
     )

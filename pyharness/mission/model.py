@@ -145,6 +145,35 @@ class Control:
 
 
 @dataclass(frozen=True)
+class Defence:
+    """Thresholds of the checks on board. Of a length in time or a rate error, 0 switches the check off."""
+
+    jump_ut: float
+    noise_ut: float
+    frozen_s: float
+    dead_axis_s: float
+    gyro_frozen_s: float
+    gyro_error_deg_s: float
+    divergence_guard: bool
+    guard_deg_s: float
+    window_s: float
+    pause_s: float
+    growth_percent: float
+    progress_percent: float
+    retries: int
+
+
+@dataclass(frozen=True)
+class CurrentSense:
+    """Signed readings of each coil's current: at the end of its pulse, and while the magnetometer samples."""
+
+    counts_at_full: int  # at the full current of the nominal supply voltage, every coil
+    noise_counts: float
+    off_counts: int
+    weak_percent: float
+
+
+@dataclass(frozen=True)
 class Mission:
     """Everything the mission file says, checked, with its defaults filled in."""
 
@@ -157,6 +186,8 @@ class Mission:
     gyro: Gyro | None
     cycle: Cycle
     control: Control
+    defence: Defence
+    current_sense: CurrentSense | None
     source: str  # path of the file, for messages
     digest: str  # SHA-256 of the file's bytes and of what was laid over it, first 12 hex digits
 

@@ -331,13 +331,74 @@ _CONTROL = (
         "The word that arms bench mode.", _between(1, 65_535), default=0x5AA5),
 )
 
+_OR_OFF = "0: off."
+
+_DEFENCE = (
+    Key("defence.jump_ut", "number", "µT",
+        "Largest change of the field from one sample to the next; a larger one rejects the sample.", _positive(1000),
+        default=Depends("what 1.5 × the tip-off rate turns control.field_max_ut by in a period, and noise_ut's sources "
+                        "but for the bias")),
+    Key("defence.noise_ut", "number", "µT",
+        "Change of the field's norm, which does not turn, from sample to sample beyond which the sensor is noisy.",
+        _positive(1000),
+        default=Depends("6 √2 × the noise, twice what the bias error and what coils leave behind can do, the way along "
+                        "the orbit, and 2 counts")),
+    Key("defence.frozen_s", "number", "s",
+        f"How long all magnetometer counts may stand still. {_OR_OFF}", _between(0, 1e5),
+        default=Depends("until the weakest field, turning at the orbital rate, moves by 10 counts, but at least 4 "
+                        "periods; 0 if that takes more than 65535")),
+    Key("defence.dead_axis_s", "number", "s",
+        f"How long one magnetometer count may stand still while another moves. {_OR_OFF}", _between(0, 1e5),
+        default=Depends("8 × frozen_s; with noise below half a count at least twice as long as a component stands "
+                        "still at its extremum")),
+    Key("defence.gyro_frozen_s", "number", "s",
+        f"How long all gyro counts may stand still. {_OR_OFF}", _between(0, 1e5),
+        default=Depends("20 periods; 0 without a gyro, or with one whose noise is below half a count")),
+    Key("defence.gyro_error_deg_s", "number", "°/s",
+        f"Contradiction between gyro and turn of the field that makes the gyro useless. {_OR_OFF}", _between(0, 360),
+        default=Depends("the sum of what field noise, orbit, gyro noise, bias and alignment can do, but at least "
+                        "control.wake_deg_s; 0 without a gyro, or above 0.5 rad a period")),
+    Key("defence.divergence_guard", "flag", "",
+        "Whether coils pause, and at last stay off, when the rate grows while damping.", default=True),
+    Key("defence.guard_deg_s", "number", "°/s",
+        "Growth counts as diverging above this rate only: faster than any tip-off.", _positive(1500),
+        default=Depends("1.1 × the norm of body.tip_off_deg_s")),
+    Key("defence.window_s", "number", "s",
+        "Length over which the peak rate is taken; two such windows are compared.", _between(0.1, 1e6),
+        default=Depends("half the orbital period")),
+    Key("defence.pause_s", "number", "s",
+        "How long coils stay off once the rate has grown.", _between(0.1, 1e6),
+        default=Depends("the orbital period")),
+    Key("defence.growth_percent", "number", "%",
+        "Growth of the peak rate from one window to the next that counts as diverging.", _between(0.4, 300),
+        default=5.0),
+    Key("defence.progress_percent", "number", "%",
+        "A peak rate that fell by less over two windows counts as no progress.", _positive(99), default=10.0),
+    Key("defence.retries", "integer", "",
+        "Pauses before the coils stay off for good.", _between(0, 1000), default=3),
+)
+
+_CURRENT_SENSE = (
+    Key("current_sense.counts_at_full", "integer", "counts",
+        "Reading at a coil's full current, at the nominal voltage.", _between(10, 32_000)),
+    Key("current_sense.noise_counts", "number", "counts",
+        "Noise of a reading, rms.", _between(0, 1000), default=0.0),
+    Key("current_sense.off_counts", "integer", "counts",
+        "A larger reading is not off; above 6 × the noise.", _between(1, 32_000),
+        default=Depends("5 % of counts_at_full")),
+    Key("current_sense.weak_percent", "number", "%",
+        "A coil is weak below this share of the current that the lowest supply voltage drives.", _between(1, 99),
+        default=50.0),
+)
+
 KEYS: tuple[Key, ...] = (
     Key("name", "text", "characters",
         "What the mission is called in reports.", _between(1, 80)),
-    *_BODY, *_ORBIT, *_SUPPLY, *_COIL, *_MAGNETOMETER, *_GYRO, *_CYCLE, *_CONTROL,
+    *_BODY, *_ORBIT, *_SUPPLY, *_COIL, *_MAGNETOMETER, *_GYRO, *_CYCLE, *_CONTROL, *_DEFENCE,
+    *_CURRENT_SENSE,
 )  # fmt: skip
 
-OPTIONAL_TABLES = frozenset({"gyro"})
+OPTIONAL_TABLES = frozenset({"gyro", "current_sense"})
 
 ORBITAL_PERIOD = "orbital period"
 """Name under which the period that follows from the orbit's keys stands beside them in messages."""

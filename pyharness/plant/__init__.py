@@ -3,6 +3,7 @@ spacecraft."""
 
 from pyharness.plant.cycle import Timeline
 from pyharness.plant.field import ConstantField
+from pyharness.plant.health import CoilHealth
 from pyharness.plant.plant import Plant, Sample, Snapshot
 
-__all__ = ["ConstantField", "Plant", "Sample", "Snapshot", "Timeline"]
+__all__ = ["CoilHealth", "ConstantField", "Plant", "Sample", "Snapshot", "Timeline"]

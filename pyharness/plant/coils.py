@@ -8,6 +8,9 @@ exact edges.
 
 What a core keeps of a pulse, its remanence, acts from switch-off until the next pulse of that coil starts:
 during a pulse the full dipole is all there is.
+
+A coil that is held on makes its dipole from one mid-sample to the next, and is seen by the magnetometer at the
+latter; its pulses then do nothing. It is on or off at once: against a cycle, L/R is short.
 """
 
 from __future__ import annotations
@@ -23,6 +26,7 @@ import numpy as np
 from pyharness.mission.model import AXES, Mission
 from pyharness.plant.batch import round_to, spacecraft_last
 from pyharness.plant.cycle import Timeline
+from pyharness.plant.health import CoilHealth
 
 _TABLE_BITS = 40
 
@@ -87,10 +91,15 @@ def _edge_tables(timeline: Timeline, time_constant_ms: float) -> tuple[np.ndarra
 
 @dataclass(frozen=True)
 class CoilState:
-    """What a cycle leaves behind, shape (3, N), A m², along body axes."""
+    """What a cycle leaves behind, each (3, N).
 
-    remaining: np.ndarray  # of the decaying pulse, mean over the next sample
-    remanence: np.ndarray  # in the core
+    Dipoles along body axes, A m²; currents by channel, in parts of the full one at the nominal supply voltage.
+    """
+
+    remaining: np.ndarray  # dipole of current that flows during the next sample, its mean
+    remanence: np.ndarray  # dipole in the core
+    driven: np.ndarray  # current at the end of the pulse; 0 without one
+    sampled: np.ndarray  # mean current during the next sample
 
 
 @dataclass(frozen=True)
@@ -118,11 +127,12 @@ class Coils:
     def __init__(self, missions: Sequence[Mission], supply_v: np.ndarray | None = None):
         timelines = [Timeline.of(m) for m in missions]
         nominal_v = spacecraft_last(m.supply.nominal_v for m in missions)
-        supply = 1.0 if supply_v is None else np.asarray(supply_v, dtype=float) / nominal_v
+        supply = np.ones(len(missions)) if supply_v is None else np.asarray(supply_v, dtype=float) / nominal_v
 
         def per_coil(value) -> np.ndarray:
             return spacecraft_last([value(coil) for coil in m.coil] for m in missions)
 
+        self._supply = supply
         self._full = per_coil(lambda coil: coil.polarity * coil.dipole_a_m2) * supply
         self._kept = per_coil(lambda coil: coil.remanence_fraction)
         self._tau_s = per_coil(lambda coil: coil.time_constant_ms) * 1e-3
@@ -153,7 +163,7 @@ class Coils:
 
     def at_rest(self) -> CoilState:
         """No current, no remanence."""
-        return CoilState(np.zeros_like(self._full), np.zeros_like(self._full))
+        return CoilState(*np.zeros((4, *self._full.shape)))
 
     def _widths(self, ticks: np.ndarray, late_ticks: np.ndarray | None) -> np.ndarray:
         width = np.abs(ticks)
@@ -164,21 +174,55 @@ class Coils:
         _check("ticks + late_ticks", width, self._last_tick)
         return width
 
-    def drive(self, state: CoilState, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> Drive:
+    def drive(self, state: CoilState, ticks: np.ndarray, late_ticks: np.ndarray | None = None,
+              health: CoilHealth | None = None) -> Drive:
         """Pulses of signed `ticks` (3, N) ints, each switched off `late_ticks` after it should have been.
 
-        Raises ValueError for a pulse longer than the drive window, or still on when the next sample starts.
+        Both are by channel, which is also the coil unless `health` says otherwise. Raises ValueError for a pulse
+        longer than the drive window, or still on when the next sample starts, and for a wiring that is no
+        permutation.
         """
         width = self._widths(ticks, late_ticks)
-        strength = self._full * np.sign(ticks)
+        switch_off_us = width * self._tick_us
+        if health is None:
+            return Drive(*self._pulses(state, width, np.sign(ticks), self._full), switch_off_us)
+
+        channel = health.driven_by()
+        current = health.current * np.sign(ticks)
+        current, width, held = (np.take_along_axis(a, channel, axis=0) for a in (current, width, health.held))
+        full = self._full * health.leads
+        after, cubic = self._pulses(state, np.where(current != 0, width, 0), current, full)
+        return Drive(*self._held_on(after, cubic, held, full, health.wiring), switch_off_us)
+
+    def _pulses(self, state: CoilState, width: np.ndarray, current: np.ndarray,
+                full: np.ndarray) -> tuple[CoilState, np.ndarray]:
+        """State and cubic after pulses of `width` ticks; `current` is a signed part of what makes the dipole `full`."""
+        strength = full * current
         entry = self._first + width
+        reached, left = self._reached.take(entry), self._left.take(entry)
         n = width.astype(float)
         p1, p2, p3, p4 = self._by_ticks
         pulse, rectangle = n * (p1 + n * (p2 + n * (p3 + n * p4)))
-        remanence = np.where(width > 0, self._kept * strength * self._reached.take(entry), state.remanence)
+        remanence = np.where(width > 0, self._kept * strength * reached, state.remanence)
         cubic = strength * pulse + state.remanence * self._before + remanence * (self._after - rectangle)
-        remaining = strength * self._left.take(entry)
-        return Drive(CoilState(remaining, remanence), cubic, width * self._tick_us)
+        current = self._supply * current
+        return CoilState(strength * left, remanence, current * reached, current * left), cubic
+
+    def _held_on(self, state: CoilState, cubic: np.ndarray, held: np.ndarray, full: np.ndarray,
+                 wiring: np.ndarray) -> tuple[CoilState, np.ndarray]:
+        """The same with the coils that are held on, all of it by coil; the currents returned are by channel."""
+        on = held != 0
+        dipole, current = full * held, self._supply * held
+        kept = self._kept * dipole
+        constant = np.zeros_like(cubic)
+        constant[0] = dipole
+        after = CoilState(
+            remaining=np.where(on, dipole - kept, state.remaining),  # with the remanence, the dipole
+            remanence=np.where(on, kept, state.remanence),
+            driven=np.take_along_axis(np.where(on, current, state.driven), wiring, axis=0),
+            sampled=np.take_along_axis(np.where(on, current, state.sampled), wiring, axis=0),
+        )
+        return after, np.where(on, constant, cubic)
 
     def waveform(self, ticks: np.ndarray, seconds: np.ndarray,
                  late_ticks: np.ndarray | None = None) -> np.ndarray:

@@ -13,18 +13,22 @@ from pyharness.plant.body import RigidBody, to_body, to_inertial
 from pyharness.plant.coils import Coils, CoilState
 from pyharness.plant.cycle import Timeline
 from pyharness.plant.field import FIELD, Environment, OrbitEnvironment
+from pyharness.plant.health import CoilHealth
 from pyharness.plant.noise import NoiseStream, bell
-from pyharness.plant.sensors import GyroModel, MagnetometerModel
+from pyharness.plant.sensors import CurrentSenseModel, GyroModel, MagnetometerModel
 
-_ATTITUDE_STREAM = 1  # the noise of a spacecraft is drawn from its seed alone
+_ATTITUDE_STREAM, _CURRENT_STREAM = 1, 2
+"""Second halves of a seed; the noise of magnetometer and gyro is drawn from the seed alone."""
 
 
 @dataclass(frozen=True)
 class Sample:
-    """Sensor counts of one cycle, each (3, N) int16."""
+    """Sensor counts of one cycle, each (3, N) int16. Coil currents, by channel, are 0 where no sense is fitted."""
 
     mag_counts: np.ndarray
     gyro_counts: np.ndarray
+    driven_counts: np.ndarray  # at the end of the pulse of the cycle before; without a pulse, noise
+    sampled_counts: np.ndarray  # while the magnetometer samples
 
 
 @dataclass(frozen=True)
@@ -93,7 +97,9 @@ class Plant:
         self.coils = Coils(missions, supply_v)
         self._magnetometer = MagnetometerModel(missions)
         self._gyro = GyroModel(missions)
+        self._currents = CurrentSenseModel(missions)
         self._noise = NoiseStream(seeds, channels=6)
+        self._current_noise = NoiseStream([(seed, _CURRENT_STREAM) for seed in seeds], channels=6)
 
         if attitude is None:
             attitude = np.stack([attitude_from_seed(seed) for seed in seeds], axis=-1)
@@ -115,6 +121,11 @@ class Plant:
     def time_s(self) -> np.ndarray:
         """Now, s after each orbit's epoch, (N,)."""
         return self._first_sample_s + self._cycle * self.period_us * 1e-6
+
+    @property
+    def current_fitted(self) -> np.ndarray:
+        """Which spacecraft have a current sense, (N,) bool."""
+        return self._currents.fitted.copy()
 
     @property
     def attitude(self) -> np.ndarray:
@@ -168,21 +179,34 @@ class Plant:
         if offset_s is not None and np.any(offset_s):
             turn = cross(field, rate)
             field = field + offset_s * (turn + 0.5 * offset_s * cross(turn, rate))
+        driven, sampled = self._current_counts()
         return Sample(
             mag_counts=self._magnetometer.counts(field, rate, dipole, noise[:3]),
             gyro_counts=self._gyro.counts(rate, noise[3:]),
+            driven_counts=driven,
+            sampled_counts=sampled,
         )
 
-    def drive(self, ticks: np.ndarray, late_ticks: np.ndarray | None = None) -> np.ndarray:
+    def _current_counts(self) -> tuple[np.ndarray, np.ndarray]:
+        """Counts of both readings of the current sense."""
+        state = self._coil_state
+        if not self._currents.fitted.any():
+            return np.zeros(state.driven.shape, np.int16), np.zeros(state.sampled.shape, np.int16)
+        noise = self._current_noise.at(self._cycle)
+        return self._currents.counts(state.driven, noise[:3]), self._currents.counts(state.sampled, noise[3:])
+
+    def drive(self, ticks: np.ndarray, late_ticks: np.ndarray | None = None,
+              health: CoilHealth | None = None) -> np.ndarray:
         """Drive the coils by signed `ticks` (3, N) and fly on to the next mid-sample.
 
         The sign of the ticks is that of the current; a coil of polarity −1 then makes a dipole along its
-        negative axis. `late_ticks` (3, N): how much later than commanded a pulse is switched off. Returns the
-        actual switch-off of each coil, µs after the start of the drive window, (3, N) int64, 0 for a coil not
-        driven. Raises ValueError for a pulse longer than the drive window, one that is on into the next
-        sample, or a flight beyond `duration_s`.
+        negative axis. `late_ticks` (3, N): how much later than commanded a pulse is switched off. `health`: what
+        is wrong with the coils until the next mid-sample; None: nothing. Returns the actual switch-off of each
+        channel, µs after the start of the drive window, (3, N) int64, 0 for one not driven. Raises ValueError for a
+        pulse longer than the drive window, one that is on into the next sample, a wiring that is no permutation,
+        or a flight beyond `duration_s`.
         """
-        drive = self.coils.drive(self._coil_state, np.asarray(ticks, dtype=np.int64), late_ticks)
+        drive = self.coils.drive(self._coil_state, np.asarray(ticks, dtype=np.int64), late_ticks, health)
         environment = self._environment.quadratic(self._cycle)
         self._state = self._body.propagate(self._state, environment, drive.cubic, self._period_s)
         self._coil_state = drive.state

@@ -1,4 +1,4 @@
-"""Magnetometer and gyro: from truth to counts, as the parts do it.
+"""Magnetometer, gyro and current sense: from truth to counts, as the parts do it.
 
 A misalignment is the rotation vector that turns body axes into sensor axes, so a sensor reads v_sensor = Rᵀ
 v_body. The error turns the known sensor axes on: R = R(known) R(error).
@@ -103,3 +103,18 @@ class GyroModel:
     def counts(self, rate: np.ndarray, noise: np.ndarray) -> np.ndarray:
         """Counts (3, N) int16 of the body rate (3, N), rad/s, with `noise` of standard deviation `SIGMA`."""
         return self._triad.counts(rate, noise)
+
+
+class CurrentSenseModel:
+    """Current senses of N spacecraft; one without reads zero counts."""
+
+    def __init__(self, missions: Sequence[Mission]):
+        parts = [m.current_sense for m in missions]
+        self.fitted = np.array([part is not None for part in parts])
+        self._full = np.array([part.counts_at_full if part else 0.0 for part in parts])
+        self._noise = np.array([part.noise_counts if part else 0.0 for part in parts]) / SIGMA
+
+    def counts(self, current: np.ndarray, noise: np.ndarray) -> np.ndarray:
+        """Counts (3, N) int16 of currents (3, N) in parts of the full one; `noise` of standard deviation `SIGMA`."""
+        exact = self._full * current + self._noise * noise
+        return np.clip(np.rint(exact), -_MAX_COUNTS, _MAX_COUNTS).astype(np.int16)

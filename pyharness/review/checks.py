@@ -7,9 +7,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from pyharness.loop import settling_time_s
 from pyharness.review.flown import Flown
 from pyharness.review.wording import percent
-from pyharness.scenarios import settling_time_s
 from pyharness.vectors.verdict import Verdict
 
 

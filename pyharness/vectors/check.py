@@ -22,6 +22,7 @@ _AFTER_STAGES = {
     "handover": "modes",
     "ticks": "commanded pulses",
     "status": "status word",
+    "cycle": "counters",
     "counters": "counters",
     "digest": "configuration",
 }

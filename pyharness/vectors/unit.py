@@ -36,9 +36,14 @@ class Unit:
     seed: int = 0
     overrides: dict[str, Any] = field(default_factory=dict)
 
+    @property
+    def laid_over(self) -> dict[str, Any]:
+        """What is laid over the mission: no defences that look at more than one sample, unless the overrides name some."""
+        return {"defence": _BARE, **self.overrides}
+
     def scaling(self, mission_path: str) -> Scaling:
         """The integers these vectors are for. Raises MissionError."""
-        return scale(load_mission(mission_path, self.overrides or None))
+        return scale(load_mission(mission_path, self.laid_over))
 
     def inputs(self, config: Config, dtype: np.dtype) -> np.ndarray:
         """The inputs, (rows,) records."""
@@ -254,6 +259,10 @@ def _gyro_raw(sensor: Config, rate: int) -> tuple[int, int, int]:
     return near, 0, 0
 
 
+_COMMANDS = (mrd.MRD_COMMAND_NONE, mrd.MRD_COMMAND_ARM, mrd.MRD_COMMAND_INHIBIT, mrd.MRD_COMMAND_SAFE, mrd.MRD_COMMAND_RESUME,
+             mrd.MRD_COMMAND_BENCH)  # fmt: skip
+
+
 def _modes(inputs: np.ndarray, config: Config, seed: int) -> None:
     """Every command in every mode, with and without low power; the field moves, so that pulses are asked for."""
     key, limit = config["supervisor"]["bench_key"], config["supervisor"]["bench_limit_ticks"]
@@ -267,13 +276,13 @@ def _modes(inputs: np.ndarray, config: Config, seed: int) -> None:
 
     reach = {
         "hold-off": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {"separation_s": 0})],
-        "damping": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {})],
+        "damping": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {}), (mrd.MRD_COMMAND_NONE, {}), (mrd.MRD_COMMAND_NONE, {})],
         "safe": [(mrd.MRD_COMMAND_SAFE, {})],
         "inhibit": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_RESUME, {}), (mrd.MRD_COMMAND_INHIBIT, {})],
         "bench": [(mrd.MRD_COMMAND_SAFE, {}), (mrd.MRD_COMMAND_ARM, {"command_key": key})],
     }
     for steps in reach.values():
-        for code in (0, 1, 2, 3, 4, 5, 6, 65535):
+        for code in (*_COMMANDS, 1, 65535):
             for low_power in (0, 1):
                 for step, values in steps:
                     give(step, **values)
@@ -316,7 +325,7 @@ def _random(inputs: np.ndarray, config: Config, seed: int) -> None:
         if next(draw) % 61 == 0:
             inputs["low_power"][row] = 1
         if next(draw) % 53 == 0:
-            inputs["command"][row] = next(draw) % 7
+            inputs["command"][row] = pick((*_COMMANDS, 7))
             inputs["command_key"][row] = pick((config["supervisor"]["bench_key"], 0, 1))
             inputs["command_coil"][row] = next(draw) % 4
             inputs["command_ticks"][row] = next(draw) % 2400 - 1200
@@ -330,28 +339,131 @@ def _draws(seed: int) -> Iterable[int]:
         yield from (int(word) >> 11 for word in generator.random_raw(4096))
 
 
+def _continuity(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Counts that stand still for as long as the limits, jumps on either side of theirs, a norm that trembles, a gyro that stands still."""
+    path = config["path"]
+    raw = inputs["path"]["mag_raw"].astype(np.int64)
+    row = np.arange(len(inputs))
+    raw += np.stack([row % 2, row % 3, row % 5], axis=1)  # moving, but hardly
+    frozen, dead = path["frozen_limit"], path["dead_limit"]
+    first = 10
+    raw[first : first + frozen + 3] = raw[first]  # all axes, until it shows and a little longer
+    first += frozen + 8
+    raw[first : first + frozen] = raw[first]  # one sample short of it
+    first += frozen + 5
+    raw[first : first + dead + 3, 1] = raw[first, 1]  # one axis
+    first += dead + 8
+    jump = isqrt(path["jump_max_sq"]) * 2 ** path["mag"]["shift"] // path["mag"]["matrix"][0]
+    for step in range(-3, 4):  # single samples around the limit
+        raw[first, 0] += jump + step
+        first += 4
+    tremble = path["noise_limit"] * 2 ** path["mag"]["shift"] // path["mag"]["matrix"][0]
+    for step, rows in ((-4, 20), (60, 15), (0, 70), (60, 20), (0, 70)):  # below, one vote short of tripping, clearing, tripping, clearing
+        on = slice(first, first + rows)
+        if step:
+            raw[on] += np.where(row[on, None] % 2 == 0, (tremble + step) * np.array(QUIET_FIELD) // isqrt(sum(q * q for q in QUIET_FIELD)), 0)
+        first += rows
+    inputs["path"]["mag_raw"] = raw
+    still = path["gyro_frozen_limit"]
+    inputs["path"]["gyro_raw"][:, 0] = row % 7
+    inputs["path"]["gyro_raw"][20 : 20 + still + 3] = 5
+    inputs["path"]["gyro_raw"][30 + 2 * still : 30 + 3 * still] = 9
+    inputs["path"]["mag_valid"][first - 30] = 0
+
+
+def _agreement(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """A field that stands still and a gyro that does not: around the limit, tripping, clearing, beyond the rates that are compared."""
+    path = config["path"]
+    gyro = inputs["path"]["gyro_raw"]
+    row = np.arange(len(inputs))
+    inputs["path"]["mag_raw"][:] = (40, -30, 2600)
+    near = _rate_at_limit(path)
+    plan = [(near - 2, 10), (near + 2, 10), (0, 60), (3 * near, 14), (0, 20), (-3 * near, 20), (0, 80), (5600, 20), (-near, 30), (0, 60)]
+    first = 4
+    for rate, rows in plan:
+        gyro[first : first + rows, 1] = rate
+        first += rows
+    inputs["path"]["gyro_valid"][np.isin(row, (30, 31, 95))] = 0
+    inputs["path"]["mag_valid"][120] = 0
+
+
+def _rate_at_limit(path: Config) -> int:
+    """Raw rate on y that contradicts a field of 2600 raw counts on z by just what is allowed."""
+    field = calibrate_sensor(path["mag"], (40, -30, 2600))[0][2]
+    per_raw = path["gyro"]["matrix"][4] / 2 ** path["gyro"]["shift"]
+    return round(path["agree_limit"] * 2.0 ** (16 + path["agree_shift"]) / path["agree_mantissa"] / field / per_raw)
+
+
+def _currents(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """Currents around every threshold: weak, backward and on, each on another coil, with pulses of both signs; given back by RESUME."""
+    path = config["path"]
+    row = np.arange(len(inputs))
+    driven, sampled = inputs["path"]["current_driven"], inputs["path"]["current_sampled"]
+    inputs["path"]["current_valid"] = 1
+    inputs["path"]["mag_raw"][:] = (2000, -1500, 1000)
+    inputs["path"]["gyro_raw"][:] = np.where(row[:, None] % 40 < 20, 1, -1) * np.array((2000, -1000, 500))
+    # ω × B of these counts has the signs (-, -, -), then (+, +, +): the coils' currents follow with the polarity.
+    sign = -np.where(np.maximum(row - 1, 0)[:, None] % 40 < 20, 1, -1) * np.array(path["polarity"])
+    least, off = np.array(path["current_min"]), path["current_off_max"]
+    driven[:] = sign * (least + 300)
+    driven[30:70, 0] = (sign * (least - 1))[30:70, 0]  # weak until it trips
+    driven[70:140, 0] = (sign * least)[70:140, 0]
+    driven[80:120, 1] = (sign * -(off + 1))[80:120, 1]  # backward until it trips: out of use
+    driven[150:160, 2] = (sign * -off)[150:160, 2]  # off, not backward: weak
+    sampled[170, 0], sampled[171, 0] = off, off + 1
+    sampled[172, 1], sampled[173, 1] = -off, -off - 1
+    sampled[175:180, 2] = 32767
+    sampled[180, 2] = driven[181, 2] = -32768
+    inputs["path"]["current_valid"][160:163] = 0
+    inputs["command"][200], inputs["command"][202] = mrd.MRD_COMMAND_SAFE, mrd.MRD_COMMAND_RESUME
+    inputs["path"]["mag_valid"][176] = 0
+
+
+def _progress(inputs: np.ndarray, config: Config, seed: int) -> None:
+    """A field that turns ever faster, slower, and hardly: windows of eight cycles, pauses of four, one retry, then safe."""
+    row = np.arange(len(inputs))
+    turn = np.zeros(len(inputs), dtype=np.int64)
+    for first, end, step in ((0, 8, 560), (8, 40, 600), (40, 60, 700), (60, 80, 800), (80, 96, 900), (100, 180, 400), (180, 260, 40)):
+        turn[first:end] = step + 8 * (row[first:end] - first)
+    inputs["path"]["mag_raw"][:, 0] = QUIET_FIELD[0] + np.where(row % 2 == 0, turn, -turn)
+    inputs["command"][97] = mrd.MRD_COMMAND_RESUME
+    inputs["low_power"][140:143] = 1
+
+
 _RATE = {"control": {"law": "rate"}}
 _SLOW_RATE = {"control": {"law": "rate", "K_n_m_s": 4.0e-6}}
+_BARE = {"jump_ut": 1000.0, "noise_ut": 1000.0, "frozen_s": 0.0, "dead_axis_s": 0.0, "gyro_frozen_s": 0.0, "gyro_error_deg_s": 0.0}
+"""No defence that looks at more than one sample: for vectors of single stages, whose counts stand still and jump."""
+_SENSE = {"counts_at_full": 2000, "noise_counts": 2.0}
 
 UNIT = (
     Unit("calibration", "stage 1: every sensor axis at and around its limits", 108, _calibration),
     Unit("plausibility", "stage 2: the norm of the field on either side of its bounds", 80, _plausibility),
-    Unit("gate", "stage 3: ages on either side of the blanking time and of 2^31 µs, stamps that do not change, place in the cycle", 54,
+    Unit("gate", "stage 4: ages on either side of the blanking time and of 2^31 µs, stamps that do not change, place in the cycle", 54,
          _blanking),
-    Unit("derivative", "stage 4: intervals on either side of half a period and one and a half, large changes", 60, _derivative),
-    Unit("low-pass", "stage 5: steps, ramps, single counts and a restart of the filter", 200, _low_pass,
+    Unit("derivative", "stage 6: intervals on either side of half a period and one and a half, large changes", 60, _derivative),
+    Unit("low-pass", "stage 7: steps, ramps, single counts and a restart of the filter", 200, _low_pass,
          overrides={"control": {"low_pass_s": 3.0}}),
-    Unit("saturation-per-axis", "stages 6 and 7: demand on each axis and all together, axis by axis", _saturation_rows(), _saturation,
+    Unit("saturation-per-axis", "stages 9 and 10: demand on each axis and all together, axis by axis", _saturation_rows(), _saturation,
          overrides={"control": {"law": "rate", "saturation": "per-axis", "K_n_m_s": 2.0e-4}}),
-    Unit("saturation-keep-direction", "stages 6 and 7: the same demands, keeping the direction", _saturation_rows(), _saturation,
+    Unit("saturation-keep-direction", "stages 9 and 10: the same demands, keeping the direction", _saturation_rows(), _saturation,
          overrides={"control": {"law": "rate", "K_n_m_s": 2.0e-4}}),
-    Unit("saturation-ties", "stage 7: scaled demands exactly between two counts", 12, _ties,
+    Unit("saturation-ties", "stage 10: scaled demands exactly between two counts", 12, _ties,
          overrides={"control": {"law": "rate", "K_n_m_s": 4.0e-5}}),
-    Unit("pulses", "stage 8: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
-    Unit("estimate", "stage 9: the rate from the field's turn, from nothing to its saturation", 120, _estimate,
+    Unit("pulses", "stage 11: commands around the shortest pulse", 180, _pulses, overrides=_SLOW_RATE),
+    Unit("estimate", "stage 12: the rate from the field's turn, from nothing to its saturation", 120, _estimate,
          overrides={"gyro": None, "control": {"settle_by": "field"}}),
     Unit("settling", "modes: rates on either side of the settled and the wake threshold, for the dwells", 60, _settling,
          overrides={"control": {"dwell_s": 2.5, "wake_dwell_s": 1.5}}),
+    Unit("continuity", "stage 5: counts that stand still, jumps, a norm that trembles, around every limit", 560, _continuity,
+         overrides={"control": {"hold_off_s": 100_000}, "defence": {}}),
+    Unit("agreement", "stage 8: gyro against field, around the limit, until it trips and until it clears", 360, _agreement,
+         overrides={"defence": {"frozen_s": 0.0, "dead_axis_s": 0.0, "gyro_frozen_s": 0.0, "jump_ut": 1000.0}}),
+    Unit("currents", "stage 3: coil currents around every threshold", 240, _currents,
+         overrides={"control": {"law": "rate"}, "current_sense": _SENSE}),
+    Unit("progress", "modes: peaks from window to window, divergence, pause, retries, no progress", 260, _progress,
+         overrides={"gyro": None, "control": {"settle_by": "field"}, "body": {"tip_off_deg_s": [10.0, 0.0, 0.0]},
+                    "defence": {"window_s": 4.0, "pause_s": 2.0, "retries": 1, "growth_percent": 5.0}}),
     Unit("modes", "modes: every command in every mode, with and without low power; hold-off runs out at the end", 360, _modes),
     Unit("random-derivative", "whole steps of the derivative law, drawn", 500, _random, seed=101),
     Unit("random-rate", "whole steps of the rate-damping law, drawn", 500, _random, seed=102, overrides=_RATE),

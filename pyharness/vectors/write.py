@@ -9,7 +9,7 @@ from pyharness.controllers import ExactController
 from pyharness.flight import Interface
 from pyharness.loop import Record, fly
 from pyharness.mission import MissionError
-from pyharness.scenarios import LONG, LOOP, Scenario
+from pyharness.scenarios import FAULTY, LONG, LOOP, Scenario
 from pyharness.vectors.digests import digest_text
 from pyharness.vectors.files import TIERS, VectorFile, sizes_of, to_text
 from pyharness.vectors.unit import UNIT, Unit
@@ -26,7 +26,7 @@ def make_vectors(
     All scenarios are flown in one batch, with the exact model in the loop. `progress(done, total)` counts cycles.
     Raises MissionError if a scenario's overrides do not fit the mission, naming the scenario.
     """
-    scenarios = [*LOOP, *(LONG if long_flights else ())]
+    scenarios = [*LOOP, *FAULTY, *(LONG if long_flights else ())]
     flights = [_named(scenario, lambda s=scenario: s.flight(mission_path)) for scenario in scenarios]
     units = [(unit, _named(unit, lambda u=unit: u.scaling(mission_path))) for unit in UNIT]
 
@@ -45,7 +45,7 @@ def make_vectors(
         controller.configure([scaling])
         inputs = unit.inputs(scaling.config, interface.inputs)
         vector = VectorFile(
-            name=unit.name, tier="unit", purpose=unit.purpose, seed=unit.seed, overrides=unit.overrides, command=COMMAND,
+            name=unit.name, tier="unit", purpose=unit.purpose, seed=unit.seed, overrides=unit.laid_over, command=COMMAND,
             config=scaling.config, sizes=sizes_of(scaling, interface), inputs=inputs, outputs=controller.run(inputs),
         )  # fmt: skip
         files[f"unit/{unit.name}.csv"] = to_text(vector)

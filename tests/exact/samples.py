@@ -1,7 +1,7 @@
 """A small configuration whose numbers can be followed by hand, and inputs for it.
 
 Counts pass calibration unchanged, gains are 1, period 100 ms, sample 38 to 42 ms into the cycle, window of
-5000 ticks of 10 us.
+5000 ticks of 10 us. Continuity, agreement, currents and progress say nothing unless a test has them look.
 """
 
 from __future__ import annotations
@@ -47,6 +47,19 @@ PATH = {
     "filter_gain": 32768,
     "derivative_gain": GAIN,
     "rate_gain": GAIN,
+    "jump_max_sq": 3221028867,
+    "noise_limit": 65535,
+    "frozen_limit": 0,
+    "dead_limit": 0,
+    "gyro_frozen_limit": 0,
+    "agree_limit": 0,
+    "agree_mantissa": 32768,
+    "agree_shift": 1,
+    "agree_rate_max": 32767,
+    "current_fitted": 0,
+    "current_ticks": 100,
+    "current_min": (400, 500, 600),
+    "current_off_max": 10,
 }
 SUPERVISOR = {
     "settle_dwell": 3,
@@ -57,17 +70,37 @@ SUPERVISOR = {
     "wake_rate": 200,
     "estimate_mantissa": 32768,
     "estimate_shift": 15,
+    "window_cycles": 2**32 - 1,
+    "pause_cycles": 3,
+    "guard_rate": 250,
+    "growth": 512,
+    "progress": 128,
+    "retries": 2,
     "bench_key": 4242,
     "bench_limit_ticks": 1_000,
 }
 
 
 def with_changes(record: Record, changes: Record) -> Record:
-    """The record with fields replaced; a dotted name reaches into nested records."""
+    """The record with fields replaced; a dotted name reaches into nested records: `path.weak[0].level`."""
     record = dict(record)
     for name, value in changes.items():
         head, _, rest = name.partition(".")
-        record[head] = with_changes(record[head], {rest: value}) if rest else value
+        if head.endswith("]"):
+            head, i = head[:-1].split("[")
+            elements = list(record[head])
+            elements[int(i)] = with_changes(elements[int(i)], {rest: value})
+            record[head] = tuple(elements)
+        else:
+            record[head] = with_changes(record[head], {rest: value}) if rest else value
+    return record
+
+
+def lookup(record: Record, name: str) -> Any:
+    """The value under a dotted name."""
+    for part in name.split("."):
+        head, _, i = part.removesuffix("]").partition("[")
+        record = record[head][int(i)] if i else record[head]
     return record
 
 
@@ -92,6 +125,9 @@ def path_inputs(cycle: int = 1, **changes: Any) -> Record:
         "gyro_raw": (0, 0, 0),
         "mag_valid": 1,
         "gyro_valid": 1,
+        "current_valid": 1,
+        "current_driven": (0, 0, 0),
+        "current_sampled": (0, 0, 0),
         **changes,
     }
 

@@ -5,8 +5,11 @@ from exact.samples import make_config
 
 from pyharness.exact import init, path_check
 from pyharness.exact.constants import (
+    MRD_E_AGREEMENT,
     MRD_E_BENCH,
     MRD_E_CHOICE,
+    MRD_E_CONTINUITY,
+    MRD_E_CURRENT,
     MRD_E_DIGEST,
     MRD_E_ESTIMATE,
     MRD_E_FILTER,
@@ -16,6 +19,7 @@ from pyharness.exact.constants import (
     MRD_E_NORM,
     MRD_E_PERIOD,
     MRD_E_POLARITY,
+    MRD_E_PROGRESS,
     MRD_E_SAMPLE,
     MRD_E_SETTLE,
     MRD_E_TIMELINE,
@@ -62,6 +66,9 @@ def normalised(law, *shift, **norms):
     other = "rate_gain" if law == "derivative_gain" else "derivative_gain"
     return {**NORMALISED, **norms, f"path.{law}.shift": shift, f"path.{other}.shift": (0, 0, 0)}
 
+
+FITTED = {"path.current_fitted": 1}
+UNFITTED = {"path.current_ticks": -1, "path.current_min": (0, -5, 0), "path.current_off_max": 0}
 
 CASES = [
     *sensor_cases("mag", MRD_E_MAG),
@@ -120,6 +127,24 @@ CASES = [
         (MRD_E_GAIN, normalised(law, 0, 14, 0), normalised(law, 0, 14, 0, **{"path.norm_max_sq": 131072})),
         (MRD_E_GAIN, normalised(law, 0, -15, 0), normalised(law, 0, -15, 0, **{"path.norm_min_sq": 65535})),
     ]],
+    (MRD_E_CONTINUITY, {"path.jump_max_sq": 1}, {"path.jump_max_sq": 0}),
+    (MRD_E_CONTINUITY, {"path.jump_max_sq": 3221028867}, {"path.jump_max_sq": 3221028868}),
+    (MRD_E_CONTINUITY, {"path.noise_limit": 1}, {"path.noise_limit": 0}),
+    (MRD_E_AGREEMENT, {"path.agree_mantissa": 32768}, {"path.agree_mantissa": 32767}),
+    (MRD_E_AGREEMENT, {"path.agree_mantissa": 65535, "path.gyro_fitted": 0},
+        {"path.agree_mantissa": 0, "path.gyro_fitted": 0}),
+    (MRD_E_AGREEMENT, {"path.agree_shift": 1}, {"path.agree_shift": 0}),
+    (MRD_E_AGREEMENT, {"path.agree_shift": 31}, {"path.agree_shift": 32}),
+    (MRD_E_AGREEMENT, {"path.agree_rate_max": 1}, {"path.agree_rate_max": 0}),
+    (MRD_E_AGREEMENT, {"path.agree_rate_max": 32767}, {"path.agree_rate_max": -32768}),
+    (MRD_E_CURRENT, {"path.current_fitted": 1}, {"path.current_fitted": 2}),
+    (MRD_E_CURRENT, {"path.current_fitted": 0, **UNFITTED}, {"path.current_fitted": 1, **UNFITTED}),
+    (MRD_E_CURRENT, {**FITTED, "path.current_ticks": 1}, {**FITTED, "path.current_ticks": 0}),
+    (MRD_E_CURRENT, {**FITTED, "path.current_ticks": 5000}, {**FITTED, "path.current_ticks": 5001}),
+    (MRD_E_CURRENT, {**FITTED, "path.current_off_max": 1}, {**FITTED, "path.current_off_max": 0}),
+    *[(MRD_E_CURRENT,
+       {**FITTED, "path.current_min": tuple(11 if i == coil else 500 for i in range(3))},
+       {**FITTED, "path.current_min": tuple(10 if i == coil else 500 for i in range(3))}) for coil in range(3)],
     (MRD_E_SETTLE, {"supervisor.settle_by": 1}, {"supervisor.settle_by": 0}),
     (MRD_E_SETTLE, {"supervisor.settle_by": 2}, {"supervisor.settle_by": 3}),
     (MRD_E_SETTLE, {"supervisor.settle_by": MRD_SETTLE_BY_GYRO},
@@ -133,6 +158,12 @@ CASES = [
     (MRD_E_ESTIMATE, {"supervisor.estimate_mantissa": 32768}, {"supervisor.estimate_mantissa": 32767}),
     (MRD_E_ESTIMATE, {"supervisor.estimate_shift": 1}, {"supervisor.estimate_shift": 0}),
     (MRD_E_ESTIMATE, {"supervisor.estimate_shift": 31}, {"supervisor.estimate_shift": 32}),
+    (MRD_E_PROGRESS, {"supervisor.growth": 257}, {"supervisor.growth": 256}),
+    (MRD_E_PROGRESS, {"supervisor.growth": 1024}, {"supervisor.growth": 1025}),
+    (MRD_E_PROGRESS, {"supervisor.progress": 1}, {"supervisor.progress": 0}),
+    (MRD_E_PROGRESS, {"supervisor.progress": 256}, {"supervisor.progress": 257}),
+    (MRD_E_PROGRESS, {"supervisor.window_cycles": 1}, {"supervisor.window_cycles": 0}),
+    (MRD_E_PROGRESS, {"supervisor.pause_cycles": 2**32 - 1}, {"supervisor.pause_cycles": 0}),
     (MRD_E_BENCH, {"supervisor.bench_limit_ticks": 1}, {"supervisor.bench_limit_ticks": 0}),
     (MRD_E_BENCH, {"supervisor.bench_limit_ticks": 5000}, {"supervisor.bench_limit_ticks": 5001}),
     (MRD_E_BENCH, {"supervisor.bench_key": 1}, {"supervisor.bench_key": 0}),
@@ -144,7 +175,7 @@ def test_both_sides_of_every_boundary(code, legal, illegal):
     good, bad = make_config(legal), make_config(illegal)
     assert init(good) == MRD_OK == path_check(good["path"])
     assert init(bad) == code
-    assert path_check(bad["path"]) == (code if code <= MRD_E_GAIN else MRD_OK)
+    assert path_check(bad["path"]) == (code if code <= MRD_E_CURRENT else MRD_OK)
 
 
 def test_every_code_has_a_case():

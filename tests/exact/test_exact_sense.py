@@ -1,4 +1,4 @@
-"""Stages 1 to 5 on numbers worked out by hand from the arithmetic document, on both sides of comparisons."""
+"""Stages 1, 2, 4, 6 and 7 on numbers worked out by hand from the arithmetic document, on both sides of comparisons."""
 
 import pytest
 from exact.samples import FIELD, SENSOR, path_config, path_inputs, path_state
@@ -23,8 +23,8 @@ from pyharness.exact.derivative import factor_of
 from pyharness.exact.low_pass import follow
 
 
-def sense(state=None, config=None, inputs=None, waive_norm=0):
-    return path_sense(state or path_state(), config or path_config(), inputs or path_inputs(), waive_norm)
+def sense(state=None, config=None, inputs=None, waive=0):
+    return path_sense(state or path_state(), config or path_config(), inputs or path_inputs(), waive)
 
 
 def raised(status, *numbers):
@@ -88,17 +88,17 @@ NORM_SQ = 129_000_000  # 10000² + 5000² + 2000²
 def test_norm_against_its_plausible_range(limits, plausible):
     config = path_config(norm_min_sq=limits[0], norm_max_sq=limits[1])
     _, trace, status = sense(config=config)
-    assert trace["plausibility"]["norm_sq"] == NORM_SQ
+    assert trace["plausibility"] == {"norm_sq": NORM_SQ, "norm": 11_357}  # 11357² = 128 981 449
     assert trace["gate"]["trusted"] == plausible
     assert raised(status, MRD_S_NO_PREVIOUS if plausible else MRD_S_FIELD_IMPLAUSIBLE)
 
 
 def test_a_waived_norm_is_reported_but_does_not_reject():
-    _, trace, status = sense(config=path_config(norm_max_sq=NORM_SQ - 1), waive_norm=1)
+    _, trace, status = sense(config=path_config(norm_max_sq=NORM_SQ - 1), waive=1)
     assert trace["gate"]["trusted"] == 1 and raised(status, MRD_S_FIELD_IMPLAUSIBLE, MRD_S_NO_PREVIOUS)
 
 
-# ---- stage 3 ----
+# ---- stage 4 ----
 
 @pytest.mark.parametrize(("tolerance", "departure", "at_place"), [
     (500, 500, True), (500, 501, False), (500, -500, True), (500, -501, False), (0, 0, True), (0, 1, False),
@@ -252,7 +252,7 @@ def test_a_pending_pulse_is_told_also_without_a_sample():
     assert raised(status, MRD_S_SAMPLE_MISSING) and state["pending"] == (0, 0, 0)
 
 
-# ---- stage 3: what a switch-off is known to be ----
+# ---- stage 4: what a switch-off is known to be ----
 
 @pytest.mark.parametrize(("changes", "latched"), [
     ({}, 1),
@@ -308,7 +308,7 @@ def test_without_a_sample_ages_count_to_the_start_of_the_cycle():
     assert raised(status, MRD_S_SAMPLE_MISSING)
 
 
-# ---- stage 4 ----
+# ---- stage 6 ----
 
 @pytest.mark.parametrize(("period", "interval", "factor"), [
     (100_000, 100_000, 16384),
@@ -396,7 +396,7 @@ def test_a_rejected_sample_breaks_the_chain():
     assert raised(status, MRD_S_NO_PREVIOUS) and trace["derivative"]["interval_us"] == 0
 
 
-# ---- stage 5 ----
+# ---- stage 7 ----
 
 def test_low_pass_by_hand():
     config = path_config(filter_gain=16384)

@@ -35,7 +35,8 @@ def positions(tree: object, path: tuple[object, ...] = ()) -> list[tuple[object,
 
 
 POSITIONS = positions(BASE_TREE)
-KEYS_IN_TABLES = [position for position in POSITIONS if len(position) == 2]
+DEFENCES = [("defence", path.partition(".")[2]) for path in BY_PATH if path.startswith("defence.")]
+KEYS_IN_TABLES = [position for position in POSITIONS if len(position) == 2] + DEFENCES
 ENDS = [
     value
     for key in BY_PATH.values()
@@ -124,7 +125,7 @@ def test_changed_trees(empty, changes):
 def test_ends_of_ranges_everywhere(empty, replaced):
     tree = copy.deepcopy(BASE_TREE)
     for (table, name), value in replaced.items():
-        tree[table][name] = value
+        tree.setdefault(table, {})[name] = value
     check(load(empty, tree))
 
 

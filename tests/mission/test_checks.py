@@ -12,7 +12,102 @@ def inertia(xx: float, yy: float, zz: float, xy: float) -> dict[str, object]:
     return {"body": {"inertia_kg_m2": {"xx": xx, "yy": yy, "zz": zz, "xy": xy, "xz": 0, "yz": 0}}}
 
 
+# 2 × 62.4 µT × sin 7.81226°, that is half of 1.5 × 20.8327 °/s × 0.5 s.
+TURNED = (
+    "16.9637 µT, by which control.field_max_ut 62.4 µT turns in cycle.period_ms 500 ms at 1.5 × the norm of "
+    "body.tip_off_deg_s [12, -11, 13] °/s"
+)
+# In 0.5 s the field turns by 2π / 5738.99 s × 0.5 s; 13.9 µT × 80 counts/µT then move by 0.608703 counts, by 10 in 16.4 cycles.
+STANDS = (
+    "must be 0 (off) or at least 8.5 s, 17 × cycle.period_ms 500 ms: with magnetometer.counts_per_ut 80 counts/µT, "
+    "control.field_min_ut 13.9 µT that turns once in orbital period 5738.99 s may take as long to move by 10 counts"
+)
+
 REFUSED = {
+    "no tumble": (
+        {"body": {"tip_off_deg_s": [0.0, 0.006, 0.007]}},
+        "body.tip_off_deg_s [0, 0.006, 0.007] °/s, must have a norm of at least 0.01 °/s",
+    ),
+    "a tumble that is a jump": (
+        {"defence": {"jump_ut": 16.963}},
+        f"defence.jump_ut 16.963 µT, must be at least {TURNED}",
+    ),
+    # From half a turn on the chord is twice the field. 6 s × 31.249 °/s are 187.5°.
+    "a tumble of more than half a turn": (
+        {"defence": {"jump_ut": 124.0}, "cycle": {"period_ms": 6000.0, "timing_tolerance_ms": 0.0}},
+        "defence.jump_ut 124 µT, must be at least 124.8 µT, by which control.field_max_ut 62.4 µT turns in "
+        "cycle.period_ms 6000 ms at 1.5 × the norm of body.tip_off_deg_s [12, -11, 13] °/s",
+    ),
+    # 6 √2 × 18 nT
+    "noise that is noisy": (
+        {"defence": {"noise_ut": 0.1527}},
+        "defence.noise_ut 0.1527 µT, must be at least 0.152735 µT, 6 √2 × magnetometer.noise_nt 18 nT",
+    ),
+    "frozen too soon": ({"defence": {"frozen_s": 8.4, "dead_axis_s": 9.0}}, f"defence.frozen_s 8.4 s, {STANDS}"),
+    "a dead axis too soon": (
+        {"defence": {"frozen_s": 0, "dead_axis_s": 8.4}},
+        f"defence.dead_axis_s 8.4 s, {STANDS}",
+    ),
+    "an axis before all": (
+        {"defence": {"frozen_s": 10, "dead_axis_s": 9}},
+        "defence.dead_axis_s 9 s, must be 0 (off) or at least defence.frozen_s 10 s",
+    ),
+    "still for too many cycles": (
+        {"defence": {"dead_axis_s": 32767.6}},
+        "defence.dead_axis_s 32767.6 s, must be at most 32767.5 s, 65535 × cycle.period_ms 500 ms",
+    ),
+    "still for too few cycles": (
+        {"defence": {"gyro_frozen_s": 1.9}},
+        "defence.gyro_frozen_s 1.9 s, must be 0 (off) or at least 2 s, 4 × cycle.period_ms 500 ms",
+    ),
+    "no gyro to freeze": (
+        {"gyro": None, "control": {"settle_by": "field"}, "defence": {"gyro_frozen_s": 10}},
+        "defence.gyro_frozen_s 10 s needs a gyro, but there is no table [gyro]",
+    ),
+    "no gyro to disagree": (
+        {"gyro": None, "control": {"settle_by": "field"}, "defence": {"gyro_error_deg_s": 1}},
+        "defence.gyro_error_deg_s 1 °/s needs a gyro, but there is no table [gyro]",
+    ),
+    # √2 × 18 nT / (38.15 µT × 0.5 s) are 0.0764621 °/s.
+    "a gyro that is told from noise": (
+        {"defence": {"gyro_error_deg_s": 0.229}},
+        "defence.gyro_error_deg_s 0.229 °/s, must be 0 (off) or at least 0.229386 °/s, three times the noise "
+        "of a rate from two samples: with magnetometer.noise_nt 18 nT, cycle.period_ms 500 ms and a field "
+        "halfway between control.field_min_ut 13.9 µT and control.field_max_ut 62.4 µT",
+    ),
+    "a gyro beyond comparison": (
+        {"defence": {"gyro_error_deg_s": 57.3}},
+        "defence.gyro_error_deg_s 57.3 °/s, must be at most 57.2958 °/s, 0.5 rad in cycle.period_ms 500 ms: "
+        "gyro and field are not compared beyond it",
+    ),
+    "a window without a peak": (
+        {"defence": {"window_s": 1.9}},
+        "defence.window_s 1.9 s, must be at least 2 s, 4 × cycle.period_ms 500 ms: a peak is taken from that "
+        "many",
+    ),
+    # 6 × 14.983 + 1800 × 8.4 / 7.4 × e^(−60/6.1) = 89.898 + 0.1093; on y, with 6 ms, it is just below 90.
+    "off is noise": (
+        {"current_sense": {"noise_counts": 14.983}, "coil": {"x": {"time_constant_ms": 6.1}}},
+        "current_sense.off_counts 90 counts, must exceed 90.0073 counts: 6 × current_sense.noise_counts "
+        "14.983 counts, and what current_sense.counts_at_full 1800 counts at supply.max_v 8.4 V "
+        "(supply.nominal_v 7.4 V) leave after coil.x.blanking_ms 60 ms with coil.x.time_constant_ms 6.1 ms",
+    ),
+    # 1800 × 6.6 / 7.4 × (1 − e^−3) = 1525.48; a tenth of it is 152.5.
+    "weak is off": (
+        {"current_sense": {"weak_percent": 10.0, "off_counts": 153}},
+        "current_sense.weak_percent 10 % of the 1525.48 counts that current_sense.counts_at_full 1800 counts "
+        "become in a pulse of 3 L/R at supply.min_v 6.6 V (supply.nominal_v 7.4 V) must exceed "
+        "current_sense.off_counts 153 counts: raise it to 10.0952 %, or lower current_sense.off_counts",
+    ),
+    "a coil too slow to be judged": (
+        {
+            "cycle": {"drive_window_ms": 17.0, "shortest_pulse_ms": 0.8},
+            "control": {"bench_limit_ms": 10.0},
+            "coil": {"y": {"time_constant_ms": 5.0}, "x": {"time_constant_ms": 5.7}},
+        },
+        "coil.x.time_constant_ms 5.7 ms, must be at most 5.66667 ms with a table [current_sense], a third of "
+        "cycle.drive_window_ms 17 ms: no pulse reaches a current that can be judged",
+    ),
     "windows": (
         {"cycle": {"drive_window_ms": 410.1}},
         "cycle.blanking_ms 60 ms + cycle.sample_ms 20 ms + cycle.compute_delay_ms 10 ms + "
@@ -51,7 +146,7 @@ REFUSED = {
         "[16, 16384]",
     ),
     "too few ticks": (
-        {"cycle": {"drive_window_ms": 1.5}, "control": {"bench_limit_ms": 1.0}},
+        {"cycle": {"drive_window_ms": 1.5}, "current_sense": None, "control": {"bench_limit_ms": 1.0}},
         "cycle.drive_window_ms 1.5 ms is 15 ticks of cycle.pulse_tick_us 100 µs, must be a whole number in "
         "[16, 16384]",
     ),
@@ -211,6 +306,16 @@ REFUSED = {
 }
 
 ACCEPTED = {
+    "the fastest tumble, just no jump": {"defence": {"jump_ut": 16.964}},
+    "every defence off": {
+        "defence": {"frozen_s": 0, "dead_axis_s": 0, "gyro_frozen_s": 0, "gyro_error_deg_s": 0, "divergence_guard": False}
+    },
+    "the shortest times": {"defence": {"frozen_s": 8.5, "dead_axis_s": 8.5, "gyro_frozen_s": 2, "window_s": 2}},
+    "the longest times": {"defence": {"frozen_s": 32767.5, "dead_axis_s": 32767.5, "gyro_frozen_s": 32767.5}},
+    "the smallest gyro error": {"defence": {"gyro_error_deg_s": 0.2294}},
+    "the largest gyro error": {"defence": {"gyro_error_deg_s": 57.2957}},
+    "as weak as just not off": {"current_sense": {"weak_percent": 10.1, "off_counts": 153}},
+    "no current sense": {"current_sense": None},
     "windows that fill the cycle": {"cycle": {"drive_window_ms": 410, "timing_tolerance_ms": 0}},
     "a coil that uses all of the gap": {
         "coil": {"y": {"blanking_ms": 70}},
@@ -220,12 +325,13 @@ ACCEPTED = {
     "a bench pulse as long as the window": {"control": {"bench_limit_ms": 400}},
     "a bench pulse as short as the shortest": {"control": {"bench_limit_ms": 0.8}},
     "most ticks": {"cycle": {"pulse_tick_us": 20, "drive_window_ms": 327.68}},
-    "fewest ticks": {"cycle": {"drive_window_ms": 1.6}, "control": {"bench_limit_ms": 1.0}},
+    "fewest ticks": {"cycle": {"drive_window_ms": 1.6}, "current_sense": None, "control": {"bench_limit_ms": 1.0}},
     "decimal fractions of a millisecond": {"cycle": {"period_ms": 500.003, "sample_ms": 20.002}},
     # In binary 64.4 × 1000 is a little more than 64400.
     "a fraction that is not binary": {"cycle": {"drive_window_ms": 64.4}, "control": {"bench_limit_ms": 50}},
     "all of the tolerance": {"cycle": {"timing_tolerance_ms": 5}},
     "more tolerance with fast coils": {
+        "current_sense": None,
         "coil": {axis: {"blanking_ms": 4} for axis in "xyz"},
         "cycle": {"compute_delay_ms": 20, "drive_window_ms": 390, "timing_tolerance_ms": 10},
     },

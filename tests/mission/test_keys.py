@@ -158,7 +158,7 @@ def test_unknown_keys(problems, overrides, problem):
 
 
 @pytest.mark.parametrize(
-    "table", ["body", "body.inertia_kg_m2", "orbit", "coil", "coil.y", "gyro", "cycle", "control"]
+    "table", ["body", "body.inertia_kg_m2", "orbit", "coil", "coil.y", "gyro", "cycle", "control", "defence", "current_sense"]
 )
 def test_a_table_that_is_none(problems, table):
     overrides: dict[str, object] = {}

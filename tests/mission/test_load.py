@@ -9,7 +9,7 @@ from pathlib import Path
 
 import pytest
 
-from pyharness.mission import MissionError, demo_path, load_mission, model
+from pyharness.mission import MissionError, demo_path, load_mission, mission_path, model
 from pyharness.mission.schema import BY_PATH, KEYS, OPTIONAL_TABLES
 
 BASE = Path(__file__).with_name("base.toml")
@@ -24,9 +24,34 @@ def test_the_demo_loads_and_says_that_it_is_invented():
             assert coil.dipole_a_m2 == coil.winding.dipole_a_m2(mission.supply.nominal_v)
 
 
+def test_plover_is_another_kind_of_mission():
+    demo, plover = load_mission(demo_path()), load_mission(mission_path("plover"))
+    assert mission_path("demo") == demo_path()
+    assert "invented" in plover.name
+    assert plover.gyro is None and demo.gyro is not None
+    assert plover.current_sense is not None and demo.current_sense is None
+    assert {coil.core for coil in plover.coil} == {"air"}
+    assert max(coil.time_constant_ms for coil in plover.coil) < 1.0
+    assert plover.tip_off_rad_s > 4.0 * demo.tip_off_rad_s
+    assert plover.magnetometer.noise_nt > 3.0 * demo.magnetometer.noise_nt
+    assert 8.0 * plover.magnetometer.counts_per_ut <= demo.magnetometer.counts_per_ut
+
+
+def test_the_commented_tables_of_the_demo_are_legal_and_its_own_defaults(tmp_path):
+    """Whoever takes the # away gets the same defences, and a current sense."""
+    text = demo_path().read_text(encoding="utf-8")
+    head, tail = text.split("# [defence]\n")
+    path = tmp_path / "uncommented.toml"
+    lines = [line.removeprefix("# ") if " = " in line or "[current" in line else line for line in tail.splitlines()]
+    path.write_text(head + "[defence]\n" + "\n".join(lines), encoding="utf-8")
+    given, default = load_mission(path), load_mission(demo_path())
+    assert given.defence == default.defence
+    assert given.current_sense == model.CurrentSense(1800, 4.0, 90, 50.0)
+
+
 def test_a_mission_says_what_its_file_says():
     mission = load_mission(BASE)
-    assert mission.name == "Plover (invented, for tests)"
+    assert mission.name == "Dunlin (invented, for tests)"
     assert mission.source == str(BASE)
     assert mission.body.inertia_kg_m2 == (
         (0.0108, 0.0007, -0.0005),
@@ -82,6 +107,7 @@ def test_schema_and_model_have_the_same_keys():
     tables = {
         "body": model.Body, "orbit": model.Orbit, "supply": model.Supply, "magnetometer": model.Magnetometer,
         "gyro": model.Gyro, "cycle": model.Cycle, "control": model.Control,
+        "defence": model.Defence, "current_sense": model.CurrentSense,
     }  # fmt: skip
     for table, cls in tables.items():
         named = {path.split(".")[1] for path in BY_PATH if path.startswith(f"{table}.")}
@@ -110,7 +136,8 @@ def test_a_whole_file_as_overrides_is_the_same_mission(tmp_path, base_tree):
     empty = tmp_path / "empty.toml"
     empty.write_bytes(b"")
     from_tree, from_file = load_mission(empty, base_tree), load_mission(BASE)
-    for part in ("body", "orbit", "supply", "coil", "magnetometer", "gyro", "cycle", "control"):
+    for part in ("body", "orbit", "supply", "coil", "magnetometer", "gyro", "cycle", "control", "defence",
+                 "current_sense"):
         assert getattr(from_tree, part) == getattr(from_file, part)
 
 
@@ -175,7 +202,7 @@ def test_an_empty_file_misses_every_required_key(tmp_path):
     with pytest.raises(MissionError) as caught:
         load_mission(path)
     named = [problem.split(":")[0] for problem in caught.value.problems if ": missing, must be " in problem]
-    required = [path for path, key in BY_PATH.items() if key.required and not path.startswith("gyro.")]
+    required = [path for path, key in BY_PATH.items() if key.required and path.split(".")[0] not in OPTIONAL_TABLES]
     assert set(required) < set(named)
     assert "  cycle.period_ms: missing, must be a number in [20, 10000] ms" in str(caught.value).splitlines()
 

@@ -1,0 +1,54 @@
+"""All faults at all moments: flown, judged, and told as a matrix."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+from pyharness.controllers import Controller
+from pyharness.faults.judge import Result, judge
+from pyharness.faults.moments import Case
+from pyharness.faults.watch import Watched, watch
+from pyharness.loop import Flight, long_cycles
+from pyharness.scaling import Scaling
+
+BATCH = 64
+"""Flights in one batch: one costs nearly as much as that many."""
+
+
+@dataclass(frozen=True)
+class Matrix:
+    """What came of every case, and of the flight without a fault."""
+
+    nominal: Watched
+    results: tuple[Result, ...]
+
+    @property
+    def scaling(self) -> Scaling:
+        """The integers flown."""
+        return self.nominal.flight.scaling
+
+    @property
+    def failed(self) -> list[Result]:
+        """The cases that are not as the list has them."""
+        return [result for result in self.results if not result.passed]
+
+
+def nominal_flight(scaling: Scaling, seed: int = 1) -> Flight:
+    """The flight without a fault, long enough to settle."""
+    return Flight(scaling, long_cycles(scaling), seed)
+
+
+def fly_matrix(
+    cases: Sequence[Case], nominal: Watched, controller: Controller, progress: Callable[[int], None] | None = None
+) -> Matrix:
+    """Fly and judge the cases. `progress(n)` is told of n more cycles flown, of all flights together."""
+    results: dict[int, Result] = {}
+    # Flights of like length share a batch: a long one flies on alone.
+    by_length = sorted(range(len(cases)), key=lambda i: -cases[i].flight.cycles)
+    for start in range(0, len(cases), BATCH):
+        batch = by_length[start : start + BATCH]
+        flown = watch([cases[i].flight for i in batch], controller, progress)
+        for i, one in zip(batch, flown, strict=True):
+            results[i] = judge(cases[i], one, nominal)
+    return Matrix(nominal, tuple(results[i] for i in range(len(cases))))
