@@ -27,6 +27,7 @@ from pyharness.controllers import load_controller
 from pyharness.loop import Flight, fly, long_cycles
 from pyharness.mission import load_mission
 from pyharness.mission.schema import BY_PATH
+from pyharness.replay import write_log
 from pyharness.review import Flown, save_figures
 from pyharness.review.numbers import numbers
 from pyharness.scaling import Scaling, scale
@@ -50,6 +51,7 @@ def add_to(commands) -> None:
     parser.add_argument("--plot", metavar="DIR", help="write the figures into this folder")
     parser.add_argument("--format", choices=("png", "svg"), default="png", help="of the figures; default: png")
     parser.add_argument("--csv", metavar="FILE", help="write a table with a row for each cycle, in physical units")
+    parser.add_argument("--log", metavar="FILE", help="write what the controller was given as a log, for `slackwater replay`")
     add_controller(parser)
     add_sources(parser)
     parser.set_defaults(run=run)
@@ -61,7 +63,7 @@ def run(options: argparse.Namespace) -> int:
     flight = Flight(
         scaling, _cycles(options, scaling), check_seed(options), _rate(options), options.along_field, supply_v=_supply(options, scaling)
     )
-    for option, path in (("--csv", options.csv), ("--plot", options.plot and Path(options.plot) / "x")):
+    for option, path in (("--csv", options.csv), ("--log", options.log), ("--plot", options.plot and Path(options.plot) / "x")):
         if path:
             check_writable(option, Path(path), make_folder=option == "--plot")
     controller = load_controller(options.controller, announce_sources(options))
@@ -75,6 +77,9 @@ def run(options: argparse.Namespace) -> int:
     if options.csv:
         write_whole(Path(options.csv), _csv(flown))
         print(f"\ntable     {options.csv}")
+    if options.log:
+        write_log(Path(options.log), record.inputs, [f"mission {scaling.mission.digest}, seed {flight.seed}"])
+        print(f"log       {options.log}")
     if options.plot:
         paths = save_figures(flown, Path(options.plot), options.format)
         print(f"figures   {', '.join(map(str, paths))}")
@@ -126,5 +131,5 @@ def _csv(flown: Flown) -> str:
     text.write(",".join([*columns, "mode", "status"]) + "\n")
     for i, row in enumerate(zip(*columns.values(), strict=True)):
         cells = ["" if np.isnan(value) else f"{value + 0.0:.9g}" for value in row]  # + 0.0: no negative zero
-        text.write(",".join([*cells, modes[i], f"0x{record.outputs['status'][i]:06x}"]) + "\n")
+        text.write(",".join([*cells, modes[i], f"0x{record.outputs['status'][i]:08x}"]) + "\n")
     return text.getvalue()

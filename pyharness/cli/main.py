@@ -52,6 +52,8 @@ def parser() -> argparse.ArgumentParser:
 
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command and return its exit status."""
+    for stream in (sys.stdout, sys.stderr):
+        stream.reconfigure(errors="backslashreplace")  # file names, and ° where the terminal cannot show it
     options = parser().parse_args(argv)
     try:
         status = options.run(options)

@@ -42,11 +42,28 @@ def add_to(commands) -> None:
         "with --telemetry also hold recorded frames against that: exit status 1 if they differ. Without a log, unpack telemetry.",
     )
     parser.add_argument("log", nargs="?", metavar="LOG", help="CSV with a row for each cycle; see --columns")
-    parser.add_argument("--columns", action="store_true", help="print the columns of a log instead: unit, meaning, which may be left out")
-    parser.add_argument("--mission", default=str(demo_path()), metavar="MISSION", help="mission file; default: the demo mission")
+    parser.add_argument(
+        "--columns",
+        action="store_true",
+        help="print the columns of a log instead: unit, meaning, which may be left out",
+    )
+    parser.add_argument(
+        "--mission",
+        default=str(demo_path()),
+        metavar="MISSION",
+        help="mission file; default: the demo mission",
+    )
     parser.add_argument("--telemetry", metavar="FILE", help="file of telemetry frames, one after the other")
-    parser.add_argument("--backward", action="store_true", help="take rows whose clock goes back as they are: it was set back, or restarted")
-    parser.add_argument("--csv", metavar="FILE", help="write every integer that the controller answers, or the frames have, as a table")
+    parser.add_argument(
+        "--backward",
+        action="store_true",
+        help="take rows whose clock goes back as they are: it was set back, or restarted",
+    )
+    parser.add_argument(
+        "--csv",
+        metavar="FILE",
+        help="write every integer that the controller answers, or the frames have, as a table",
+    )
     parser.add_argument("--plot", metavar="FILE", help="write a figure of the replay, .png or .svg")
     add_controller(parser)
     add_sources(parser)
@@ -56,13 +73,24 @@ def add_to(commands) -> None:
 def run(options: argparse.Namespace) -> int:
     """Run the command."""
     if options.columns:
-        print(table([("column", "unit", "given", "meaning"), *((field.title, field.unit, field.presence, field.meaning) for field in FIELDS)]))
+        print(
+            table(
+                [
+                    ("column", "unit", "given", "meaning"),
+                    *((field.title, field.unit, field.presence, field.meaning) for field in FIELDS),
+                ]
+            )
+        )
         return 0
     _check(options)
     scaling = scale(load_mission(options.mission))
     sources = announce_sources(options)
     announce_mission(scaling)
-    return _run_log(options, scaling, sources) if options.log else _run_frames(options, scaling, Interface(sources))
+    return (
+        _run_log(options, scaling, sources)
+        if options.log
+        else _run_frames(options, scaling, Interface(sources))
+    )
 
 
 def _check(options: argparse.Namespace) -> None:
@@ -94,7 +122,9 @@ def _run_log(options: argparse.Namespace, scaling: Scaling, sources: Sources) ->
     frames = read_telemetry(Path(options.telemetry), controller.interface) if options.telemetry else None
     with progress("replaying", len(log.inputs), "row") as bar:
         replayed = replay(log, scaling, controller, bar.update)
-    print(f"log       {shown(log.source)}, {replayed.rows} rows, {replayed.time_s[-1]:g} s from first to last, controller {replayed.controller}")
+    print(
+        f"log       {shown(log.source)}, {replayed.rows} rows, {replayed.time_s[-1]:g} s from first to last, controller {replayed.controller}"
+    )
     for line in clock_lines(replayed):
         print(f"clock     {line}")
     print("\n" + table(summary_rows(replayed)))
@@ -117,7 +147,9 @@ def _run_frames(options: argparse.Namespace, scaling: Scaling, interface: Interf
     print(f"telemetry {shown(options.telemetry)}, {len(frames)} frames, {lost} lost, {resets} resets")
     others = np.flatnonzero(frames["digest"] != scaling.config["digest"])
     if len(others):
-        print(f"config    0x{frames['digest'][others[0]]:08x} in frame {others[0]}: not this mission's, so that rates stay in counts")
+        print(
+            f"config    0x{frames['digest'][others[0]]:08x} in frame {others[0]}: not this mission's, so that rates stay in counts"
+        )
     sized = None if len(others) else scaling
     print("\n" + table(frame_rows(frames, sized, interface)))
     print("\n" + table(counter_rows(frames)))

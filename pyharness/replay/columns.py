@@ -49,8 +49,20 @@ FIELDS = (
     Field("path.mag_valid", "flag", "0: no magnetometer sample in this cycle"),
     Field("path.gyro_valid", "flag", "0: no gyro sample in this cycle", "gyro"),
     Field("path.current_valid", "flag", "0: no reading of the coil currents in this cycle", "currents"),
-    Field("path.current_driven", "current count", "current at the end of each coil's pulse in the cycle before", "currents", count=3),
-    Field("path.current_sampled", "current count", "current of each coil while the magnetometer sampled", "currents", count=3),
+    Field(
+        "path.current_driven",
+        "current count",
+        "current at the end of each coil's pulse in the cycle before",
+        "currents",
+        count=3,
+    ),
+    Field(
+        "path.current_sampled",
+        "current count",
+        "current of each coil while the magnetometer sampled",
+        "currents",
+        count=3,
+    ),
     Field("separation_s", "s", "since separation; the default is past any hold-off", "separation", 2**32 - 1),
     Field("low_power", "flag", "not 0: the coils are to stay off", "power"),
     Field("command", "code", "MRD_COMMAND_*, 0: none", "command"),
@@ -85,7 +97,9 @@ def _limits(dtype: np.dtype) -> list[tuple[int, int]]:
 def header_problems(names: Sequence[str], known: Sequence[str]) -> list[str]:
     """What is wrong with the column names of a log, a line each: unknown, repeated, out of order, missing."""
     if not set(names) & set(known):
-        return [f"no column names: this line must begin with {known[0]}; `slackwater replay --columns` lists them"]
+        return [
+            f"no column names: this line must begin with {known[0]}; `slackwater replay --columns` lists them"
+        ]
     problems, last = [], -1
     place: dict[str, int] = {}
     for number, name in enumerate(names, 1):
@@ -110,6 +124,10 @@ def _missing(names: Sequence[str], known: Sequence[str]) -> list[str]:
         members = [column for column in known if field_of(column).group == group]
         absent = [column for column in members if column not in names]
         if absent and (group == REQUIRED or len(absent) < len(members)):
-            rule = "required" if group == REQUIRED else f"the columns of the {group} are given together, or not at all"
+            rule = (
+                "required"
+                if group == REQUIRED
+                else f"the columns of the {group} are given together, or not at all"
+            )
             problems.append(f"missing: {joined(absent)} ({rule})")
     return problems

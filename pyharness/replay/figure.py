@@ -33,11 +33,20 @@ def replay_figure(replayed: Replayed) -> Figure:
     rows = _strip_rows(replayed)
     heights = (2.2, 1.6, 1.6, 1.6, 0.22 * len(rows))
     with house_style():
-        figure = new_figure(sum(heights) + 1.6, f"{replayed.scaling.mission.name} · {replayed.log.source.name}: replay through {replayed.controller}")
+        figure = new_figure(
+            sum(heights) + 1.6,
+            f"{replayed.scaling.mission.name} · {replayed.log.source.name}: replay through {replayed.controller}",
+        )
         rate, field, command, pulses, strips = figure.subplots(5, 1, sharex=True, height_ratios=heights)
         _rate(rate, replayed)
         _field(field, replayed)
-        _per_axis(command, replayed, replayed.commanded_a_m2 * 1e3, "Command: mean dipole that the law asks for", "[mA m²]")
+        _per_axis(
+            command,
+            replayed,
+            replayed.commanded_a_m2 * 1e3,
+            "Command: mean dipole that the law asks for",
+            "[mA m²]",
+        )
         _per_axis(pulses, replayed, replayed.pulses_ms, "Pulses that leave", "[ms]")
         _strips(strips, replayed, rows)
         edge, unit = _edges(replayed)
@@ -76,12 +85,24 @@ def _rate(axes: Axes, replayed: Replayed) -> None:
 def _field(axes: Axes, replayed: Replayed) -> None:
     bins, edge = Bins(replayed.rows), _edges(replayed)[0]
     at, field = bins.mean(edge[:-1]), replayed.field_ut
-    axes.fill_between(at, bins.least(field), bins.greatest(field), color=BLUE, linewidth=1.2, label="‖B‖ measured")
+    axes.fill_between(
+        at, bins.least(field), bins.greatest(field), color=BLUE, linewidth=1.2, label="‖B‖ measured"
+    )
     rejected = np.where(replayed.trusted, np.nan, np.nan_to_num(field))
-    axes.plot(at, bins.greatest(rejected), "x", color=VERMILLION, markersize=4, linestyle="none", label="rejected; at 0: no sample")
+    axes.plot(
+        at,
+        bins.greatest(rejected),
+        "x",
+        color=VERMILLION,
+        markersize=4,
+        linestyle="none",
+        label="rejected; at 0: no sample",
+    )
     control = replayed.scaling.mission.control
     for value, end in ((control.field_min_ut, "least"), (control.field_max_ut, "greatest")):
-        axes.axhline(value, color=GREY, linewidth=1, linestyle=(0, (1, 1.5)), label=f"{end} plausible, {value:.1f} µT")
+        axes.axhline(
+            value, color=GREY, linewidth=1, linestyle=(0, (1, 1.5)), label=f"{end} plausible, {value:.1f} µT"
+        )
     axes.set_ylim(bottom=-3)
     axes.set_ylabel("[µT]")
     axes.set_title("Field")
@@ -107,7 +128,10 @@ def _strip_rows(replayed: Replayed) -> list[tuple[str, np.ndarray, str]]:
     return [
         *((f"mode {name}", mode == code, GREEN) for code, name in names.items()),
         ("sample rejected", ~replayed.trusted, VERMILLION),
-        *((name.lower().replace("_", " "), replayed.bit(number), PURPLE) for number, name in replayed.bits_seen()),
+        *(
+            (name.lower().replace("_", " "), replayed.bit(number), PURPLE)
+            for number, name in replayed.bits_seen()
+        ),
     ]
 
 
@@ -117,7 +141,9 @@ def _strips(axes: Axes, replayed: Replayed, rows: list[tuple[str, np.ndarray, st
         spans = [(edge[a], edge[b] - edge[a]) for a, b in bins.spans(flags)]
         axes.axhline(row, color=PALE, linewidth=0.6, zorder=0)
         axes.broken_barh(spans, (row - 0.32, 0.64), facecolor=colour, edgecolor=colour, linewidth=0.6)
-        axes.annotate(f"{flags.sum()}", (1.005, row), xycoords=("axes fraction", "data"), va="center", fontsize=8)
+        axes.annotate(
+            f"{flags.sum()}", (1.005, row), xycoords=("axes fraction", "data"), va="center", fontsize=8
+        )
     axes.set_yticks(range(len(rows)), [label for label, _, _ in rows])
     axes.set_ylim(len(rows) - 0.5, -0.6)
     axes.grid(visible=False)

@@ -46,7 +46,9 @@ class Log:
 def write_log(path: Path, inputs: np.ndarray, comments: Sequence[str] = ()) -> None:
     """Write inputs (rows,) as a log with all columns, after comments of a line each. The file is written whole or not at all."""
     rows = [",".join(map(str, row)) for row in to_columns(inputs).tolist()]
-    write_whole(path, "\n".join([*(f"# {line}" for line in comments), ",".join(columns(inputs.dtype)), *rows, ""]))
+    write_whole(
+        path, "\n".join([*(f"# {line}" for line in comments), ",".join(columns(inputs.dtype)), *rows, ""])
+    )
 
 
 def read_log(path: Path, interface: Interface, backward: bool = False) -> Log:
@@ -68,7 +70,9 @@ def read_log(path: Path, interface: Interface, backward: bool = False) -> Log:
     if len(lines) - 1 > MOST_ROWS:
         raise RecordingError(path, [f"{len(lines) - 1} rows, must be {MOST_ROWS} or less"])
     table = _table(path, lines[1:], {name: limits[name] for name in names}, backward)
-    return Log(path, _records(interface, names, table), np.array([number for number, _ in lines[1:]]), tuple(names))
+    return Log(
+        path, _records(interface, names, table), np.array([number for number, _ in lines[1:]]), tuple(names)
+    )
 
 
 def _content(path: Path) -> Iterator[tuple[int, str]]:
@@ -78,13 +82,17 @@ def _content(path: Path) -> Iterator[tuple[int, str]]:
         text = content.decode("utf-8-sig")  # spreadsheets put a mark at the start
     except UnicodeDecodeError as error:
         line = content.count(b"\n", 0, error.start) + 1
-        raise RecordingError(path, [f"line {line}: not UTF-8: byte 0x{content[error.start]:02x} at offset {error.start}"]) from None
+        raise RecordingError(
+            path, [f"line {line}: not UTF-8: byte 0x{content[error.start]:02x} at offset {error.start}"]
+        ) from None
     for number, line in enumerate(text.replace("\r\n", "\n").rstrip().split("\n") if text.strip() else [], 1):
         if not line.startswith("#"):
             yield number, line
 
 
-def _table(path: Path, rows: list[tuple[int, str]], limits: dict[str, tuple[int, int]], backward: bool) -> np.ndarray:
+def _table(
+    path: Path, rows: list[tuple[int, str]], limits: dict[str, tuple[int, int]], backward: bool
+) -> np.ndarray:
     """The integers of the rows, (rows, columns)."""
     values, problems, before = array("q"), [], None
     clock = list(limits).index(_CLOCK)

@@ -24,7 +24,12 @@ class RecordingError(Exception):
         if len(self.problems) == 1:
             return f"{self.source}: {self.problems[0]}"
         more = ", reading stopped there" if len(self.problems) >= MOST_PROBLEMS else ""
-        return "\n".join([f"{self.source}: {len(self.problems)} problems{more}", *(f"  {problem}" for problem in self.problems)])
+        return "\n".join(
+            [
+                f"{self.source}: {len(self.problems)} problems{more}",
+                *(f"  {problem}" for problem in self.problems),
+            ]
+        )
 
 
 def content_of(path: Path) -> bytes:

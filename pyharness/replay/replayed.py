@@ -84,15 +84,24 @@ class Replayed:
     def bits_seen(self) -> list[tuple[int, str]]:
         """(number, name) of every status bit that is set in some row, lowest first."""
         seen = int(np.bitwise_or.reduce(self.outputs["status"]))
-        return [(number, name) for number, name in sorted(self.interface.header.named("MRD_S_").items()) if seen >> number & 1]
+        return [
+            (number, name)
+            for number, name in sorted(self.interface.header.named("MRD_S_").items())
+            if seen >> number & 1
+        ]
 
     def modes_entered(self) -> list[tuple[int, str]]:
         """(first row, name) of each stretch in one mode."""
         mode = self.outputs["mode"]
-        return [(row, self.interface.mode_name(int(mode[row]))) for row in [0, *(np.flatnonzero(np.diff(mode)) + 1).tolist()]]
+        return [
+            (row, self.interface.mode_name(int(mode[row])))
+            for row in [0, *(np.flatnonzero(np.diff(mode)) + 1).tolist()]
+        ]
 
 
-def replay(log: Log, scaling: Scaling, controller: Controller, progress: Callable[[int], None] | None = None) -> Replayed:
+def replay(
+    log: Log, scaling: Scaling, controller: Controller, progress: Callable[[int], None] | None = None
+) -> Replayed:
     """Feed a log to a controller from reset on. `progress(n)` is told of n more rows. Raises ControllerError if it is refused."""
     controller.configure([scaling])
     parts = []

@@ -63,7 +63,9 @@ def unpack_telemetry(data: bytes, interface: Interface, source: object = "teleme
     if not data:
         problems.append("no frames: it is empty")
     elif len(data) % size and len(problems) < MOST_PROBLEMS:
-        problems.append(f"frame {whole}, byte {whole * size}: ends after {len(data) % size} bytes, must have {size}")
+        problems.append(
+            f"frame {whole}, byte {whole * size}: ends after {len(data) % size} bytes, must have {size}"
+        )
     if problems:
         raise RecordingError(source, problems)
     return _frames(raw, interface)
@@ -81,7 +83,9 @@ def _problem(data: bytes, frame: np.void, layout: np.dtype, interface: Interface
         return layout.fields["mode"][1], f"mode {frame['mode']} is none of MRD_MODE_*"
     decisions = int(frame["decisions"])
     if decisions >> 3 or decisions & 3 not in interface.header.named("MRD_LAW_"):
-        return layout.fields["decisions"][1], f"0x{decisions:02x}: bits 0 and 1 must be one of MRD_LAW_*, bits 3 to 7 zero"
+        return layout.fields["decisions"][
+            1
+        ], f"0x{decisions:02x}: bits 0 and 1 must be one of MRD_LAW_*, bits 3 to 7 zero"
     return None
 
 
@@ -134,7 +138,9 @@ def _difference(frame: np.ndarray, output: np.ndarray) -> str | None:
     want = np.zeros(1, frame.dtype)
     for name in frame.dtype.names:
         want[name] = inside.get(name, output)[name]
-    for name, have, expected in zip(columns(frame.dtype), to_columns(frame)[0], to_columns(want)[0], strict=True):
+    for name, have, expected in zip(
+        columns(frame.dtype), to_columns(frame)[0], to_columns(want)[0], strict=True
+    ):
         if have != expected:
             return f"{name} is {have}, the replay has {expected}"
     return None

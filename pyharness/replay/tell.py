@@ -31,7 +31,10 @@ def summary_rows(replayed: Replayed) -> Iterator[tuple[str, str]]:
     yield "Rate estimate at the end", "none" if np.isnan(estimate) else f"{estimate:.3f} °/s"
     if replayed.damping.any():
         shares = replayed.saturated[replayed.damping].mean(axis=0)
-        yield "Damping cycles saturated", ", ".join(f"{axis} {percent(share)}" for axis, share in zip(AXES, shares, strict=True))
+        yield (
+            "Damping cycles saturated",
+            ", ".join(f"{axis} {percent(share)}" for axis, share in zip(AXES, shares, strict=True)),
+        )
 
 
 def status_rows(replayed: Replayed) -> Iterator[tuple[str, str, str]]:
@@ -39,7 +42,11 @@ def status_rows(replayed: Replayed) -> Iterator[tuple[str, str, str]]:
     yield "status", "rows", "first"
     for number, name in replayed.bits_seen():
         flags = replayed.bit(number)
-        yield replayed.interface.header.texts[f"MRD_S_{name}"], str(flags.sum()), replayed.log.place(int(np.argmax(flags)))
+        yield (
+            replayed.interface.header.texts[f"MRD_S_{name}"],
+            str(flags.sum()),
+            replayed.log.place(int(np.argmax(flags))),
+        )
 
 
 def _cut(items: list[str]) -> list[str]:

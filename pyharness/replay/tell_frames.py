@@ -15,7 +15,9 @@ MOST_FRAMES = 40
 """Shown, of those that tell something new."""
 
 
-def frame_rows(frames: np.ndarray, scaling: Scaling | None, interface: Interface) -> Iterator[tuple[str, ...]]:
+def frame_rows(
+    frames: np.ndarray, scaling: Scaling | None, interface: Interface
+) -> Iterator[tuple[str, ...]]:
     """The frames that tell something new, and the last. Rates are in counts where there is no `scaling`."""
     yield "frame", "cycle", "mode", "rate", "new"
     news = _news(frames, interface)
@@ -40,7 +42,9 @@ def _news(frames: np.ndarray, interface: Interface) -> list[list[str]]:
     mode, status = frames["mode"], frames["status"]
     seen = np.bitwise_or.accumulate(status)
     first = np.concatenate((status[:1], status[1:] & ~seen[:-1]))
-    news: list[list[str]] = [[f"first time: {text}" for text in interface.status_texts(int(bits))] for bits in first]
+    news: list[list[str]] = [
+        [f"first time: {text}" for text in interface.status_texts(int(bits))] for bits in first
+    ]
     for i in range(1, len(frames)):
         if anew[i]:
             news[i].insert(0, "reset before it")

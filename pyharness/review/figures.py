@@ -101,5 +101,6 @@ def save_figures(flown: Flown, folder: Path, kind: str = "svg") -> list[Path]:
     folder.mkdir(parents=True, exist_ok=True)
     paths = [folder / f"{plot.name}.{kind}" for plot in PLOTS]
     for plot, path in zip(PLOTS, paths, strict=True):
-        save(plot.draw(flown), path, kind)
+        with replacing(path) as new:
+            save(plot.draw(flown), new, kind)
     return paths

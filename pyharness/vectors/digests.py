@@ -96,7 +96,7 @@ def read_digest(path: Path) -> dict[str, Any]:
     """Read a digest file. Raises VectorError."""
     try:
         content = json.loads(path.read_text(encoding="utf-8"))
-    except (OSError, ValueError) as error:
+    except (OSError, ValueError, RecursionError) as error:
         raise VectorError(f"{path}: cannot be read: {error}") from None
     if not isinstance(content, dict) or content.get("format") != FORMAT:
         raise VectorError(f"{path}: not a {FORMAT} file")

@@ -102,6 +102,8 @@ def read_vector(path: Path, interface: Interface) -> VectorFile:
     lines = text.splitlines()
     count = next((i for i, line in enumerate(lines) if not line.startswith("#")), len(lines))
     header = _header(path, lines[:count])
+    if problem := _config_problem(header["config"], interface.config, "config"):
+        raise VectorError(f"{path}: {problem}")
     names = [f"inputs.{c}" for c in columns(interface.inputs)] + [f"outputs.{c}" for c in columns(interface.outputs)]
     if count == len(lines) or lines[count].split(",") != names:
         raise VectorError(f"{path}, line {count + 1}: the column names are not those of this mrd.h; write the vectors anew")
@@ -123,6 +125,8 @@ def _header(path: Path, lines: list[str]) -> dict[str, Any]:
         header = json.loads("\n".join(line.removeprefix("#") for line in lines))
     except json.JSONDecodeError as error:
         raise VectorError(f"{path}, line {error.lineno}: the header is not JSON: {error.msg}") from None
+    except (RecursionError, ValueError) as error:  # nested too deeply, or an integer of thousands of digits
+        raise VectorError(f"{path}: the header cannot be read: {error}") from None
     if not isinstance(header, dict):
         raise VectorError(f"{path}, line 1: the header must be a JSON object")
     if header.get("format") != FORMAT:
@@ -173,6 +177,23 @@ def _records(path: Path, dtype: np.dtype, table: np.ndarray, names: list[str], s
             f"{path}, line {first_line + row}: {names[start + column]}: {table[row, column]} does not fit the field of mrd.h"
         )
     return records
+
+
+def _config_problem(value: Any, dtype: np.dtype, key: str) -> str | None:
+    """The first place where a configuration is not one of mrd.h, in words; None if there is none."""
+    if dtype.subdtype:
+        if not isinstance(value, list) or len(value) != dtype.shape[0]:
+            return f"{key}: must be a JSON array of {dtype.shape[0]}"
+        parts = [(item, dtype.base, f"{key}[{i}]") for i, item in enumerate(value)]
+    elif dtype.names is None:
+        low, high = int(np.iinfo(dtype).min), int(np.iinfo(dtype).max)
+        legal = isinstance(value, int) and not isinstance(value, bool) and low <= value <= high
+        return None if legal else f"{key}: must be an integer in [{low}, {high}]"
+    else:
+        if not isinstance(value, dict) or set(value) != set(dtype.names):
+            return f"{key}: must be a JSON object of {', '.join(dtype.names)}"
+        parts = [(value[name], dtype[name], f"{key}.{name}") for name in dtype.names]
+    return next((problem for part in parts if (problem := _config_problem(*part))), None)
 
 
 def _tuples(value: Any) -> Any:

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
+import io
 import re
 import shutil
 import tempfile
 from pathlib import Path
 
-import numpy as np
 import pytest
 from hypothesis import HealthCheck, Phase, example, given, settings
 from hypothesis import strategies as st
@@ -32,7 +32,13 @@ EXTREMES = (
 @st.composite
 def mutations(draw: st.DrawFn, most: int = 4):
     """A function that damages bytes: in lines, in values, or anywhere."""
-    steps = draw(st.lists(st.tuples(st.sampled_from(sorted(_DAMAGE)), st.integers(0, 2**30), st.sampled_from(EXTREMES)), min_size=1, max_size=most))
+    steps = draw(
+        st.lists(
+            st.tuples(st.sampled_from(sorted(_DAMAGE)), st.integers(0, 2**30), st.sampled_from(EXTREMES)),
+            min_size=1,
+            max_size=most,
+        )
+    )
 
     def mutate(data: bytes) -> bytes:
         for kind, at, what in steps:
@@ -69,7 +75,11 @@ def _swap(lines: list[bytes], i: int, what: bytes) -> None:
 
 _DAMAGE = {
     "cut": lambda data, at, what: data[: at % (len(data) + 1)],
-    "flip": lambda data, at, what: data[: (k := at % max(len(data), 1))] + bytes(b ^ 1 << at % 8 for b in data[k : k + 1]) + data[k + 1 :],
+    "flip": lambda data, at, what: (
+        data[: (k := at % max(len(data), 1))]
+        + bytes(b ^ 1 << at % 8 for b in data[k : k + 1])
+        + data[k + 1 :]
+    ),
     "insert": lambda data, at, what: data[: (k := at % (len(data) + 1))] + what + data[k:],
     "remove": lambda data, at, what: data[: (k := at % (len(data) + 1))] + data[k + 1 + at % 7 :],
     "drop line": _with_line(lambda lines, i, what: lines.pop(i)),
@@ -131,7 +141,9 @@ def assert_whole(target: Path, status: int, ending: bytes = b"\n") -> None:
 
 
 QUIET = settings(
-    max_examples=40, phases=[Phase.explicit, Phase.generate], suppress_health_check=[HealthCheck.function_scoped_fixture]
+    max_examples=40,
+    phases=[Phase.explicit, Phase.generate],
+    suppress_health_check=[HealthCheck.function_scoped_fixture],
 )
 """Examples are small as they are drawn: shrinking them would only run every command a thousand times more."""
 
@@ -160,7 +172,10 @@ def test_any_mission_file(ended, scratch, samples, mutate):
     assert_whole(folder / "target", status)
     assert ended("scale", mission, "--json") == status
     if status == 0 and len(mission.read_bytes()) % 4 == 0:  # a quarter of those that are legal is flown
-        assert_whole(folder / "target", ended("fly", mission, "--cycles", "3", "--csv", folder / "target", told=str(mission)))
+        assert_whole(
+            folder / "target",
+            ended("fly", mission, "--cycles", "3", "--csv", folder / "target", told=str(mission)),
+        )
 
 
 @given(mutate=mutations(most=2))
@@ -206,20 +221,61 @@ def test_the_undamaged_files_are_taken(ended, scratch, samples, kind):
     if kind == "vector":
         (folder / "unit").mkdir()
         shutil.move(path, folder / "unit" / "short.csv")
-    argv = {"mission": ("scale", path), "log": ("replay", path), "frames": ("replay", "--telemetry", path), "vector": ("vectors", "check", folder)}
+    argv = {
+        "mission": ("scale", path),
+        "log": ("replay", path),
+        "frames": ("replay", "--telemetry", path),
+        "vector": ("vectors", "check", folder),
+    }
     assert ended(*argv[kind]) == 0
 
 
 OPTIONS = {
     "scale": ("--header", "--sources", "--json"),
-    "fly": ("--cycles", "--duration", "--seed", "--rate", "--supply", "--csv", "--plot", "--format", "--controller", "--sources", "--along-field"),
+    "fly": (
+        "--cycles",
+        "--duration",
+        "--seed",
+        "--rate",
+        "--supply",
+        "--csv",
+        "--plot",
+        "--format",
+        "--controller",
+        "--sources",
+        "--along-field",
+    ),
     "trace": ("--cycle", "--seed", "--controller", "--sources"),
-    "replay": ("--mission", "--telemetry", "--csv", "--plot", "--controller", "--sources", "--backward", "--columns"),
+    "replay": (
+        "--mission",
+        "--telemetry",
+        "--csv",
+        "--plot",
+        "--controller",
+        "--sources",
+        "--backward",
+        "--columns",
+    ),
     "vectors check": ("--mission", "--controller", "--sources", "--long"),
 }
 BARE = ("--json", "--along-field", "--backward", "--columns", "--long")
 NUMBERS = ("3", "0", "-1", "1e9", "nan", "-inf", "9" * 30, "٣", "", " ", "x")
-PLACES = ("", ".", "..", "/proc/no/such", "my.toml", "log.csv", "frames.bin", "closed", "new/file", "new.png", "a" * 300, "\udcff", "--", "-")
+PLACES = (
+    "",
+    ".",
+    "..",
+    "/proc/no/such",
+    "my.toml",
+    "log.csv",
+    "frames.bin",
+    "closed",
+    "new/file",
+    "new.png",
+    "a" * 300,
+    "\udcff",
+    "--",
+    "-",
+)
 NAMES = ("c", "exact", "truth", "C", "lib:", "lib:.", "lib:my.toml", "png", "pdf", "∞")
 
 
@@ -241,7 +297,12 @@ def test_any_command_line(ended, samples, scratch, monkeypatch, words):
     """Odd values, missing files, folders, files that may not be read: in a folder of its own, which keeps what is in it."""
     folder = scratch()
     monkeypatch.chdir(folder)
-    for name, content in (("my.toml", "mission"), ("log.csv", "log"), ("frames.bin", "frames"), ("closed", "mission")):
+    for name, content in (
+        ("my.toml", "mission"),
+        ("log.csv", "log"),
+        ("frames.bin", "frames"),
+        ("closed", "mission"),
+    ):
         Path(name).write_bytes(samples[content])
     (folder / "vectors" / "unit").mkdir(parents=True)
     (folder / "vectors" / "unit" / "short.csv").write_bytes(samples["vector"])
@@ -255,7 +316,12 @@ def test_a_folder_and_a_closed_file_in_place_of_each_input(ended, tmp_path):
     closed.write_bytes(MISSION)
     closed.chmod(0)
     for path in (tmp_path, closed):
-        for argv in (("scale", path), ("fly", path, "--cycles", "3"), ("replay", path), ("replay", "--telemetry", path)):
+        for argv in (
+            ("scale", path),
+            ("fly", path, "--cycles", "3"),
+            ("replay", path),
+            ("replay", "--telemetry", path),
+        ):
             if path is tmp_path or not _readable(closed):
                 assert ended(*argv, told=str(path)) == 2
 
@@ -267,3 +333,12 @@ def _readable(path: Path) -> bool:
     except PermissionError:
         return False
     return True
+
+
+def test_a_terminal_that_cannot_show_a_sign(monkeypatch):
+    """° and µ, and the names of files, are replaced on a terminal that does not have them."""
+    terminal = io.TextIOWrapper(io.BytesIO(), encoding="ascii")
+    monkeypatch.setattr("sys.stdout", terminal)
+    assert main(["scale"]) == 0
+    terminal.flush()
+    assert b"\\xb0/s" in terminal.buffer.getvalue()

@@ -21,7 +21,8 @@ signal.signal(signal.SIGINT, signal.default_int_handler)  # a shell may have sta
 sys.exit(main(sys.argv[1:]))
 """
 
-_WRITING = """
+_WRITING = (
+    """
 import os, time
 import pyharness.cli.vectors
 def stand_still(source, target):
@@ -29,7 +30,9 @@ def stand_still(source, target):
     time.sleep(600)
 os.replace = stand_still
 pyharness.cli.vectors.make_vectors = lambda *given: {"unit/short.csv": "new"}  # the flights take minutes
-""" + _AT_WORK
+"""
+    + _AT_WORK
+)
 
 COMMANDS = {
     "vectors write": ("vectors", "write", "--out", "mine"),
@@ -61,9 +64,18 @@ def content(folder: Path) -> dict[str, bytes]:
 
 def interrupted(program: str, argv: list[str], line: str, folder: Path) -> tuple[int, str]:
     """Run slackwater in the folder and interrupt it at the line of output that begins so; status and message."""
-    environment = {**os.environ, "PYTHONUNBUFFERED": "1", "PYTHONPATH": os.pathsep.join(filter(None, sys.path))}
+    environment = {
+        **os.environ,
+        "PYTHONUNBUFFERED": "1",
+        "PYTHONPATH": os.pathsep.join(filter(None, sys.path)),
+    }
     process = subprocess.Popen(
-        [sys.executable, "-c", program, *argv], cwd=folder, env=environment, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+        [sys.executable, "-c", program, *argv],
+        cwd=folder,
+        env=environment,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
     )
     with process:
         try:

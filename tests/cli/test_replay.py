@@ -44,7 +44,8 @@ def run(capsys, *argv: object) -> tuple[int, str, str]:
 
 
 @pytest.mark.parametrize("name", ["c", "exact"])
-def test_a_flown_flight_answers_the_same_from_its_log(record, log, demo_scaling, name):
+def test_a_flown_flight_answers_the_same_from_its_log(record, log, demo_scaling, monkeypatch, name):
+    monkeypatch.setattr("pyharness.replay.replayed._CHUNK", 40)
     controller = load_controller(name)
     told = []
     replayed = replay(read_log(log, controller.interface), demo_scaling, controller, told.append)
@@ -57,7 +58,9 @@ def test_it_tells_what_the_controller_answered(capsys, record, log, demo_scaling
     status, out, err = run(capsys, log)
     assert (status, err) == (0, "")
     assert f"config 0x{demo_scaling.config['digest']:08x}" in out
-    assert f"{CYCLES} rows, {(CYCLES - 1) * demo_scaling.period_s:g} s from first to last, controller c" in out
+    assert (
+        f"{CYCLES} rows, {(CYCLES - 1) * demo_scaling.period_s:g} s from first to last, controller c" in out
+    )
     counters = record.outputs["counters"][-1]
     assert f"{counters['trusted']} trusted, {counters['rejected']} rejected" in out
     assert "hold-off from row 0, damping from row" in out and "row 0 (line 2)" in out and "clock " not in out
@@ -66,7 +69,20 @@ def test_it_tells_what_the_controller_answered(capsys, record, log, demo_scaling
 def test_odd_clocks_are_told_by_row(capsys, tmp_path, record):
     write_log(tmp_path / "log.csv", np.delete(record.inputs, slice(17, 20)))
     _, out, _ = run(capsys, tmp_path / "log.csv")
-    assert "clock     row 17 (line 19): 3 cycles missing: begins 2000000 µs after the row before, the period is 500000 µs\n" in out
+    assert (
+        "clock     row 17 (line 19): 3 cycles missing: begins 2000000 µs after the row before, the period is 500000 µs\n"
+        in out
+    )
+
+
+def test_a_status_bit_is_told_with_its_first_row(capsys, tmp_path, record, library):
+    inputs = record.inputs.copy()
+    inputs["path"]["mag_valid"][[30, 31, 90]] = 0
+    write_log(tmp_path / "log.csv", inputs)
+    _, out, _ = run(capsys, tmp_path / "log.csv")
+    text = library.interface.header.texts["MRD_S_SAMPLE_MISSING"]
+    (line,) = [line for line in out.splitlines() if line.startswith(text)]
+    assert line.removeprefix(text).split() == ["3", "row", "30", "(line", "32)"]
 
 
 def test_the_table_has_every_integer_and_its_physical_value(capsys, tmp_path, record, log, demo_scaling):
@@ -77,7 +93,9 @@ def test_the_table_has_every_integer_and_its_physical_value(capsys, tmp_path, re
     assert header[: len(names) + 2] == ["row", "time_s", *names] and len(rows) == CYCLES
     assert (np.array([row[2 : len(names) + 2] for row in rows], np.int64) == to_columns(record.outputs)).all()
     at = header.index("trace.calibration.field[1] [nT]")
-    assert float(rows[70][at]) == pytest.approx(record.outputs["trace"]["calibration"]["field"][70, 1] * demo_scaling.field_t * 1e9)
+    assert float(rows[70][at]) == pytest.approx(
+        record.outputs["trace"]["calibration"]["field"][70, 1] * demo_scaling.field_t * 1e9
+    )
     assert float(rows[70][1]) == pytest.approx(35)
 
 
@@ -115,7 +133,12 @@ def test_telemetry_alone_is_told(capsys, tmp_path, record, telemetry):
     assert f"{rate:.3f} °/s" in lines[str(CYCLES - 5)]
     assert lines["trusted"].split()[-1] == str(record.outputs["counters"]["trusted"][-1])
     header, *rows = [line.split(",") for line in table.read_text(encoding="utf-8").splitlines()]
-    assert len(rows) == CYCLES - 4 and [row[header.index("cycle")] for row in rows[98:102]] == ["98", "99", "104", "105"]
+    assert len(rows) == CYCLES - 4 and [row[header.index("cycle")] for row in rows[98:102]] == [
+        "98",
+        "99",
+        "104",
+        "105",
+    ]
 
 
 def test_telemetry_of_another_mission_keeps_its_rates_in_counts(capsys, tmp_path, record, library):
@@ -134,7 +157,11 @@ def test_telemetry_is_held_against_the_replay(capsys, tmp_path, record, log, tel
     outputs["ticks"][70, 1] += 1
     telemetry.write_bytes(library.telemetry(outputs))
     status, out, _ = run(capsys, log, "--telemetry", telemetry)
-    assert status == 1 and f"frame 70, cycle 70: ticks[1] is {outputs['ticks'][70, 1]}, the replay has {record.outputs['ticks'][70, 1]}" in out
+    assert (
+        status == 1
+        and f"frame 70, cycle 70: ticks[1] is {outputs['ticks'][70, 1]}, the replay has {record.outputs['ticks'][70, 1]}"
+        in out
+    )
 
 
 @pytest.mark.parametrize(

@@ -20,6 +20,10 @@ def test_steps_are_found_again_through_the_wrap(start, steps):
     np.testing.assert_allclose(elapsed[-1], sum(PERIOD if s < 0 else s for s in steps) * 1e-6, atol=1e-9)
 
 
+def test_time_stands_still_in_a_repeated_cycle_and_goes_on_where_the_clock_goes_back():
+    assert elapsed_s(np.array([7, 7, 3, 10], np.uint32), PERIOD).tolist() == [0.0, 0.0, 0.5, 0.500007]
+
+
 def told(*steps: int) -> list[tuple[int, str]]:
     return remarks((np.cumsum([2**32 - 1_000_000, *steps]) % 2**32).astype(np.uint32), PERIOD)
 

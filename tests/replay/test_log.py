@@ -50,7 +50,9 @@ def test_what_is_written_is_read_back(tmp_path, library, demo_scaling):
     log = read_log(tmp_path / "log.csv", library.interface)
     assert (log.inputs == inputs).all()
     assert log.inputs["path"]["cycle_start_us"][4] < log.inputs["path"]["cycle_start_us"][0]
-    assert log.place(3) == "row 3 (line 7)" and (tmp_path / "log.csv").read_text().splitlines()[6].startswith("0,")
+    assert log.place(3) == "row 3 (line 7)" and (tmp_path / "log.csv").read_text().splitlines()[6].startswith(
+        "0,"
+    )
 
 
 def test_columns_that_are_left_out_have_their_defaults(log):
@@ -67,7 +69,13 @@ def test_columns_that_are_left_out_have_their_defaults(log):
 
 def test_comments_marks_and_line_ends_of_other_tools_are_taken(tmp_path, library):
     path = tmp_path / "log.csv"
-    path.write_bytes(b"\xef\xbb\xbf# bench\r\n" + REQUIRED.replace(",", ", ").encode() + b"\r\n# rows\r\n" + row(0).encode() + b"\r\n\r\n")
+    path.write_bytes(
+        b"\xef\xbb\xbf# bench\r\n"
+        + REQUIRED.replace(",", ", ").encode()
+        + b"\r\n# rows\r\n"
+        + row(0).encode()
+        + b"\r\n\r\n"
+    )
     log = read_log(path, library.interface)
     assert len(log.inputs) == 1 and log.place(0) == "row 0 (line 4)"
 
@@ -76,12 +84,16 @@ def test_every_column_has_its_place_in_the_table(library):
     names = [name.partition("[")[0] for name in columns(library.interface.inputs)]
     assert [field.name for field in FIELDS] == list(dict.fromkeys(names))
     assert {field.name: field.count for field in FIELDS} == {name: names.count(name) for name in names}
-    assert [field.name for field in FIELDS if field.group == "required"] == list(dict.fromkeys(c.partition("[")[0] for c in REQUIRED.split(",")))
+    assert [field.name for field in FIELDS if field.group == "required"] == list(
+        dict.fromkeys(c.partition("[")[0] for c in REQUIRED.split(","))
+    )
 
 
 def test_the_readme_has_the_table():
     readme = (ROOT / "README.md").read_text(encoding="utf-8")
-    rows = re.findall(r"^\| `((?:path\.)?\w+)(?:\[0\]` to `\[2\])?` \| (.*?) \| (.*?) \| (.*?) \|$", readme, re.MULTILINE)
+    rows = re.findall(
+        r"^\| `((?:path\.)?\w+)(?:\[0\]` to `\[2\])?` \| (.*?) \| (.*?) \| (.*?) \|$", readme, re.MULTILINE
+    )
     assert rows == [(field.name, field.unit, field.presence, field.meaning) for field in FIELDS]
 
 
@@ -110,20 +122,43 @@ def test_wrong_column_names_are_named_with_what_is_expected(log, header, told):
         ("500000,70000,0,0,0,1500,-1200,1800", "8 cells, must be 9: ends before path.mag_valid"),
         ("500000,70000,0,0,0,1500,-1200,1800,1,1", "10 cells, must be 9"),
         ("", "1 cell, must be 9: ends before path.sample_us"),
-        ("500000,70000,0,0,0,1500,,1800,1", "path.mag_raw[1]: missing, must be an integer in [-32768, 32767]"),
-        ("500000,70000,0,0,0,1500,1.5,1800,1", 'path.mag_raw[1]: "1.5", must be an integer in [-32768, 32767]'),
-        ("500000,70000,0,0,0,1500,1_0,1800,1", 'path.mag_raw[1]: "1_0", must be an integer in [-32768, 32767]'),
+        (
+            "500000,70000,0,0,0,1500,,1800,1",
+            "path.mag_raw[1]: missing, must be an integer in [-32768, 32767]",
+        ),
+        (
+            "500000,70000,0,0,0,1500,1.5,1800,1",
+            'path.mag_raw[1]: "1.5", must be an integer in [-32768, 32767]',
+        ),
+        (
+            "500000,70000,0,0,0,1500,1_0,1800,1",
+            'path.mag_raw[1]: "1_0", must be an integer in [-32768, 32767]',
+        ),
         ("500000,70000,0,0,0,1500,٣,1800,1", 'path.mag_raw[1]: "٣", must be an integer in [-32768, 32767]'),
-        ("500000,70000,0,0,0,1500,-32769,1800,1", 'path.mag_raw[1]: "-32769", must be an integer in [-32768, 32767]'),
-        ("500000,4294967296,0,0,0,1500,1,1800,1", 'path.sample_us: "4294967296", must be an integer in [0, 4294967295]'),
+        (
+            "500000,70000,0,0,0,1500,-32769,1800,1",
+            'path.mag_raw[1]: "-32769", must be an integer in [-32768, 32767]',
+        ),
+        (
+            "500000,4294967296,0,0,0,1500,1,1800,1",
+            'path.sample_us: "4294967296", must be an integer in [0, 4294967295]',
+        ),
         ("500000,70000,0,0,0,1500,1,1800,-1", 'path.mag_valid: "-1", must be an integer in [0, 65535]'),
         ("-1,70000,0,0,0,1500,1,1800,1", 'path.cycle_start_us: "-1", must be an integer in [0, 4294967295]'),
-        ("499999,70000,0,0,0,1500,1,1800,1", "path.cycle_start_us: 499999, must not be earlier than 500000, in the row before"),
-        ("9" * 5000 + ",0,0,0,0,1,1,1,1", f'path.cycle_start_us: "{"9" * 60}…", must be an integer in [0, 4294967295]'),
+        (
+            "499999,70000,0,0,0,1500,1,1800,1",
+            "path.cycle_start_us: 499999, must not be earlier than 500000, in the row before",
+        ),
+        (
+            "9" * 5000 + ",0,0,0,0,1,1,1,1",
+            f'path.cycle_start_us: "{"9" * 60}…", must be an integer in [0, 4294967295]',
+        ),
     ],
 )
 def test_a_wrong_row_is_named(log, line, told):
-    assert problems(log, REQUIRED, row(500_000), "# a comment", line, row(1_000_000)) == [f"row 1 (line 4): {told}"]
+    assert problems(log, REQUIRED, row(500_000), "# a comment", line, row(1_000_000)) == [
+        f"row 1 (line 4): {told}"
+    ]
 
 
 def test_values_at_the_ends_of_their_ranges_are_taken(log):
@@ -133,7 +168,12 @@ def test_values_at_the_ends_of_their_ranges_are_taken(log):
 
 def test_all_problems_are_told_up_to_twenty(log):
     told = problems(log, REQUIRED, row(0, "x,0,0,0,1,2,y,1"), row(1), row(0), row(2, "0,0,0,0,1,2,3,"))
-    assert [line.partition(":")[0] for line in told] == ["row 0 (line 2)", "row 0 (line 2)", "row 2 (line 4)", "row 3 (line 5)"]
+    assert [line.partition(":")[0] for line in told] == [
+        "row 0 (line 2)",
+        "row 0 (line 2)",
+        "row 2 (line 4)",
+        "row 3 (line 5)",
+    ]
     with pytest.raises(RecordingError, match="20 problems, reading stopped there") as caught:
         log(REQUIRED, *["1"] * 50)
     assert str(caught.value).count("\n") == 20
@@ -142,7 +182,9 @@ def test_all_problems_are_told_up_to_twenty(log):
 def test_a_repeated_cycle_and_on_request_a_clock_that_was_set_back_are_taken(log):
     assert len(log(REQUIRED, row(500_000), row(500_000)).inputs) == 2
     lines = REQUIRED, row(500_000), row(0), row(2**31 - 1)
-    assert problems(log, *lines) == ["row 1 (line 3): path.cycle_start_us: 0, must not be earlier than 500000, in the row before"]
+    assert problems(log, *lines) == [
+        "row 1 (line 3): path.cycle_start_us: 0, must not be earlier than 500000, in the row before"
+    ]
     assert len(log(*lines, backward=True).inputs) == 3
     assert problems(log, REQUIRED, row(0), row(2**31)) != []
 

@@ -36,7 +36,9 @@ def _rows(interface):
     for name, (low, high) in limits_of(interface.outputs).items():
         top, leaf = name.partition(".")[0], name.partition("[")[0].rpartition(".")[2]
         code = leaf in _CODES and top != "counters"
-        cells.append(st.sampled_from(_CODES[leaf](interface.header.constants)) if code else st.integers(low, high))
+        cells.append(
+            st.sampled_from(_CODES[leaf](interface.header.constants)) if code else st.integers(low, high)
+        )
     return st.lists(st.tuples(*cells), min_size=1, max_size=4)
 
 
@@ -99,7 +101,9 @@ def test_what_no_controller_sends_is_named_under_a_right_check_word(library, out
 def test_lengths_that_are_no_frames(library, outputs):
     frames = library.telemetry(outputs)
     assert problems(b"", library.interface) == ["no frames: it is empty"]
-    assert problems(frames[:-1], library.interface) == ["frame 2, byte 100: ends after 49 bytes, must have 50"]
+    assert problems(frames[:-1], library.interface) == [
+        "frame 2, byte 100: ends after 49 bytes, must have 50"
+    ]
     assert len(problems(bytes(50 * SIZE), library.interface)) == 20
 
 
@@ -134,4 +138,6 @@ def test_a_difference_in_any_field_is_seen(library):
             continue
         table = to_columns(frames)
         table[0, i] ^= 1
-        assert first_difference(from_columns(frames.dtype, table), outputs).startswith(f"frame 0, cycle 0: {name} is ")
+        assert first_difference(from_columns(frames.dtype, table), outputs).startswith(
+            f"frame 0, cycle 0: {name} is "
+        )
