@@ -96,17 +96,17 @@ def _value(name: str, integers: tuple[int, ...], s: Scaling, interface: Interfac
 
 _OFF = {
     "jump_max_sq": NEVER_A_JUMP, "noise_limit": 65535, "frozen_limit": 0, "dead_limit": 0, "gyro_frozen_limit": 0,
-    "agree_limit": 0, "guard_rate": 65535,
+    "agree_limit": 0, "guard_turn": 65535,
 }  # fmt: skip
 """Defences, and the value that switches each off."""
-_DEFENCES = (*_OFF, "agree_mantissa", "agree_shift", "agree_rate_max", "growth", "progress")
+_DEFENCES = (*_OFF, "agree_mantissa", "agree_shift", "agree_rate_max", "growth", "progress", "stall_turn")
 
 
 def _defence(leaf: str, number: int, s: Scaling) -> str:
     if number == _OFF.get(leaf):
         return "off"
-    if leaf == "guard_rate":
-        return f"{number * math.degrees(s.rate_rad_s):.4g} °/s"
+    if leaf in ("guard_turn", "stall_turn"):
+        return f"{math.degrees(2.0 * math.asin(number / 65536.0)) / s.period_s:.4g} °/s"
     if leaf.endswith(("frozen_limit", "dead_limit")):
         return f"{number * s.period_s:.5g} s"
     if leaf == "jump_max_sq":

@@ -88,6 +88,7 @@ class Scaling:
             "filter": Size(per_second * 1e9 / 256, "nT/s"),
             "residual": Size(per_second * 1e9, "nT/s"),
             "across": Size(math.degrees(self.rate_rad_s), "°/s"),
+            "turn": Size(math.degrees(1.0 / Q15), "° a period"),
             "factor": Size(1 / 16384, "period/interval"),
             "cross": Size(self.rate_rad_s * self.field_t * 1e9, "rad/s nT"),
             "demand": Size(self.command_a_m2(axis) * 1e3, "mA m²"),
@@ -260,7 +261,8 @@ def _supervisor(s: Scaling, problems: list[str]) -> Config:
         "estimate_shift": shift,
         "window_cycles": max(1, _cycles(s, defence.window_s)),
         "pause_cycles": max(1, _cycles(s, defence.pause_s)),
-        "guard_rate": _rate_count(s, "defence.guard_deg_s", defence.guard_deg_s, problems) if defence.divergence_guard else 65535,
+        "guard_turn": _turn(s, defence.guard_deg_s) if defence.divergence_guard else 65535,
+        "stall_turn": _turn(s, control.settled_deg_s),
         "growth": _limited(256.0 * (1.0 + defence.growth_percent / 100.0), 257, 1024),
         "progress": _limited(256.0 * (1.0 - defence.progress_percent / 100.0), 1, 256),
         "retries": defence.retries,
@@ -277,6 +279,12 @@ def _rate_count(s: Scaling, key: str, deg_s: float, problems: list[str]) -> int:
             f"{math.degrees(s.rate_rad_s) * 65534:.4g}] °/s, the range of the rate at this tip-off rate"
         )
     return count
+
+
+def _turn(s: Scaling, deg_s: float) -> int:
+    """The chord 2 sin(ωT/2) of the field's turn in a period, Q15 rad; from half a turn on, and as the greatest count, never exceeded."""
+    half_turn = 0.5 * math.radians(deg_s) * s.period_s
+    return min(65535, round(Q15 * 2.0 * math.sin(min(half_turn, math.pi / 2.0))))
 
 
 _NO_SENSOR: Config = {"matrix": (0,) * 9, "offset": (0,) * 3, "shift": 1, "limit": 1}

@@ -245,7 +245,8 @@ def _progress(source: Source) -> Record:
         "window_cycles": pick(source, (
             source.integer(4, 12), source.integer(4, 12), source.integer(1, 6), spread(source, 1, WRAP - 1))),
         "pause_cycles": pick(source, (source.integer(1, 6), source.integer(1, 20), spread(source, 1, WRAP - 1))),
-        "guard_rate": pick(source, (spread(source, 0, 4095), spread(source, 0, 65535), 65535)),
+        "guard_turn": pick(source, (spread(source, 0, 255), spread(source, 0, 255), spread(source, 0, 65535), 65535)),
+        "stall_turn": pick(source, (spread(source, 0, 4095), spread(source, 0, 65535))),
         "growth": pick(source, (257, span(source, 257, 1024))),
         "progress": span(source, 1, 256),
         "retries": pick(source, (source.integer(0, 3), span(source, 0, 65535))),

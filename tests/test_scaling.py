@@ -198,11 +198,15 @@ def test_progress_in_q8():
         return with_tables(defence=defence).config["supervisor"]
 
     usual = supervisor()
-    assert (usual["guard"], usual["growth"], usual["progress"], usual["retries"]) == (1, 288, 230, 3)
+    # Chords of the turn in half a second: at 1.1 × 19.105 °/s, rounded up, and at 0.5 °/s. 5 % more, 10 % less.
+    assert usual["guard_turn"] == round(2**16 * math.sin(math.radians(21.02 / 4))) == 6002
+    assert usual["stall_turn"] == round(2**16 * math.sin(math.radians(0.5 / 4))) == 143
+    assert (usual["growth"], usual["progress"], usual["retries"]) == (round(1.05 * 256), round(0.9 * 256), 3)
     least = supervisor(divergence_guard=False, growth_percent=0.4, progress_percent=1e-9, retries=0)
-    assert (least["guard"], least["growth"], least["progress"], least["retries"]) == (0, 257, 256, 0)
+    assert (least["guard_turn"], least["growth"], least["progress"], least["retries"]) == (65535, 257, 256, 0)
     most = supervisor(growth_percent=300.0, progress_percent=99.0, retries=1000)
     assert (most["growth"], most["progress"], most["retries"]) == (1024, 3, 1000)
+    assert supervisor(guard_deg_s=360.0)["guard_turn"] == supervisor(guard_deg_s=400.0)["guard_turn"] == 65535  # half a turn, and more
 
 
 @pytest.mark.parametrize("mission", ["demo", "plover"])
@@ -218,7 +222,8 @@ def test_every_defence_is_told_in_words(library, mission):
         return
     assert told["path.jump_max_sq"] == "16 µT" and told["path.dead_limit"] == "68 s"
     assert told["path.current_min"] == "not fitted"
-    assert told["supervisor.growth"] == "diverging at 12.5 % more than a window before"
+    assert told["supervisor.growth"] == "diverging at 5.078 % more than a window before"  # 269 / 256
+    assert told["supervisor.guard_turn"] == "21.02 °/s" and told["supervisor.stall_turn"] == "0.5001 °/s"
 
 
 @pytest.mark.parametrize(

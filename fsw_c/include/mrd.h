@@ -123,7 +123,7 @@ enum {
     MRD_S_CONFIG_CORRUPT = 22,       /* configuration failed its integrity check: safe */
     MRD_S_MAG_FROZEN = 23,           /* all magnetometer counts unchanged for too long */
     MRD_S_MAG_DEAD_AXIS = 24,        /* one magnetometer count unchanged for too long while another moves */
-    MRD_S_MAG_JUMP = 25,             /* field further from the last trusted sample than the fastest tumble takes it */
+    MRD_S_MAG_JUMP = 25,             /* field further from the last trusted sample than the tumble should take it */
     MRD_S_MAG_NOISY = 26,            /* norm of the field changes too much from sample to sample */
     MRD_S_GYRO_FROZEN = 27,          /* all gyro counts unchanged for too long */
     MRD_S_GYRO_DISAGREES = 28,       /* gyro and turn of the field contradict each other: gyro not used */
@@ -172,7 +172,8 @@ enum {
     MRD_F_MODE_ILLEGAL = 31,      /* computer: mode value that is none, under a right digest */
     MRD_F_WRONG_SIGN = 32,        /* divergence: all coils the wrong way round */
     MRD_F_TOO_FAST = 33,          /* divergence: tumble too fast for the cycle */
-    MRD_F_COUNT = 34
+    MRD_F_TIP_OFF = 34,           /* divergence: tip-off twice as fast as foreseen */
+    MRD_F_COUNT = 35
 };
 
 /* Result of mrd_init and mrd_path_check: the first check that fails, in this order. The comment is the text. */
@@ -261,9 +262,10 @@ typedef struct {
     uint16_t wake_rate;         /* rate count; settled_rate..65534 */
     uint16_t estimate_mantissa; /* 32768..65535: rate count per 2^-15 rad a period = mantissa / 2^shift */
     uint16_t estimate_shift;    /* 1..31 */
-    uint32_t window_cycles;     /* cycles of DAMPING over which the rate across the field is judged: half an orbit */
+    uint32_t window_cycles;     /* cycles of DAMPING over which the turn of the field is judged: half an orbit; below 4 it never is */
     uint32_t pause_cycles;      /* cycles in PAUSE: an orbit */
-    uint16_t guard_rate;        /* rate count: diverging above this only, faster than any tip-off; 65535: never */
+    uint16_t guard_turn;        /* Q15 rad a period: diverging above this only, faster than any tip-off; 65535: never */
+    uint16_t stall_turn;        /* Q15 rad a period: no progress above this only */
     uint16_t growth;            /* Q8, 257..1024: diverging if the peak is also more than this times that of the window before */
     uint16_t progress;          /* Q8, 1..256: no progress if the peak is more than this times that of two windows before */
     uint16_t retries;           /* pauses before SAFE */
@@ -328,7 +330,8 @@ typedef struct {
     uint16_t mag_same[3];      /* samples in a row with that count; stops */
     uint16_t norm;             /* field counts: |B| of the last step */
     uint16_t norm_known;       /* 0 or 1 */
-    mrd_ballot noise;
+    mrd_ballot noise;          /* against the norm */
+    mrd_ballot jumping;        /* against the field; tripped: it really turns that fast, and jumps only tell */
     int16_t gyro_raw[3];       /* raw counts: last sample */
     uint16_t gyro_known;       /* 0 or 1 */
     uint16_t gyro_same;        /* samples in a row with these counts; stops */
@@ -339,7 +342,7 @@ typedef struct {
     mrd_ballot backward[3];
 } mrd_path_state;
 
-/* Peaks of the rate across the field, rate counts; 0: none. Each is the largest of the least of four estimates in a row. */
+/* Peaks of the field's turn, Q15 rad a period; 0: none. Each is the largest of the least of four turns in a row. */
 typedef struct {
     uint32_t window;      /* cycles of the present window */
     uint16_t peak[3];     /* of the present window and the two before */
@@ -438,6 +441,7 @@ typedef struct {
 } mrd_pulses_trace;
 
 typedef struct {
+    uint16_t turn;         /* Q15 rad a period: chord of the field's turn; no more than 65535 */
     uint16_t across;       /* rate counts: rate across the field, from its derivative; no more than 65535 */
     uint16_t across_valid; /* 0 or 1 */
 } mrd_estimate_trace;

@@ -37,7 +37,7 @@ static uint32_t magnetometer_stands_still(mrd_path_state *state, const mrd_path_
     return dead ? MRD_BIT(MRD_S_MAG_DEAD_AXIS) : 0u;
 }
 
-static uint32_t jumps(const mrd_path_state *state, const mrd_path_config *config, uint32_t sample_us, const int16_t field[3],
+static uint32_t jumps(mrd_path_state *state, const mrd_path_config *config, uint32_t sample_us, const int16_t field[3],
                       uint32_t *jump_sq)
 {
     int16_t change[3];
@@ -50,6 +50,7 @@ static uint32_t jumps(const mrd_path_state *state, const mrd_path_config *config
         change[i] = mrd_clamp_s16((int32_t)field[i] - state->field[i]);
     }
     *jump_sq = mrd_norm_sq(change);
+    mrd_vote(&state->jumping, *jump_sq > config->jump_max_sq);
     return *jump_sq > config->jump_max_sq ? MRD_BIT(MRD_S_MAG_JUMP) : 0u;
 }
 

@@ -24,7 +24,8 @@ static void rate_across_field(const mrd_supervisor_config *config, mrd_trace *tr
     if (!trace->derivative.valid) {
         return;
     }
-    rate = mrd_mul_u16(turn_of_field(trace), config->estimate_mantissa) >> config->estimate_shift;
+    trace->estimate.turn = turn_of_field(trace);
+    rate = mrd_mul_u16(trace->estimate.turn, config->estimate_mantissa) >> config->estimate_shift;
     trace->estimate.across = rate > 65535u ? (uint16_t)65535u : (uint16_t)rate;
     trace->estimate.across_valid = 1;
 }

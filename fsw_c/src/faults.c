@@ -37,5 +37,6 @@ const uint32_t mrd_fault_status[MRD_F_COUNT] = {
     S(COMMAND_REFUSED),                                                                               /* COMMAND_ILLEGAL */
     0,                                                                                                /* MODE_ILLEGAL */
     S(DIVERGING),                                                                                     /* WRONG_SIGN */
-    S(NO_PROGRESS) | S(DIVERGING)                                                                     /* TOO_FAST */
+    S(NO_PROGRESS) | S(DIVERGING),                                                                    /* TOO_FAST */
+    S(MAG_JUMP)                                                                                       /* TIP_OFF */
 };

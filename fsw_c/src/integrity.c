@@ -111,7 +111,8 @@ uint32_t mrd_config_digest(const mrd_config *config)
     h = mix(h, supervisor->estimate_shift);
     h = mix(h, supervisor->window_cycles);
     h = mix(h, supervisor->pause_cycles);
-    h = mix(h, supervisor->guard_rate);
+    h = mix(h, supervisor->guard_turn);
+    h = mix(h, supervisor->stall_turn);
     h = mix(h, supervisor->growth);
     h = mix(h, supervisor->progress);
     h = mix(h, supervisor->retries);
@@ -153,6 +154,7 @@ static uint32_t mix_path_state(uint32_t h, const mrd_path_state *path)
     h = mix(h, path->norm);
     h = mix(h, path->norm_known);
     h = mix_ballots(h, &path->noise, 1);
+    h = mix_ballots(h, &path->jumping, 1);
     h = mix_s16s(h, path->gyro_raw, 3);
     h = mix(h, path->gyro_known);
     h = mix(h, path->gyro_same);

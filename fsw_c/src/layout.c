@@ -66,7 +66,8 @@ const uint16_t mrd_layout[] = {
     AT(mrd_supervisor_config, estimate_shift),
     AT(mrd_supervisor_config, window_cycles),
     AT(mrd_supervisor_config, pause_cycles),
-    AT(mrd_supervisor_config, guard_rate),
+    AT(mrd_supervisor_config, guard_turn),
+    AT(mrd_supervisor_config, stall_turn),
     AT(mrd_supervisor_config, growth),
     AT(mrd_supervisor_config, progress),
     AT(mrd_supervisor_config, retries),
@@ -121,6 +122,7 @@ const uint16_t mrd_layout[] = {
     AT(mrd_path_state, norm),
     AT(mrd_path_state, norm_known),
     AT(mrd_path_state, noise),
+    AT(mrd_path_state, jumping),
     AT(mrd_path_state, gyro_raw),
     AT(mrd_path_state, gyro_known),
     AT(mrd_path_state, gyro_same),
@@ -212,6 +214,7 @@ const uint16_t mrd_layout[] = {
     AT(mrd_pulses_trace, ticks),
 
     SIZE(mrd_estimate_trace),
+    AT(mrd_estimate_trace, turn),
     AT(mrd_estimate_trace, across),
     AT(mrd_estimate_trace, across_valid),
 

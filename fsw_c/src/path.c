@@ -9,15 +9,18 @@ void mrd_path_reset(mrd_path_state *state)
     *state = zero;
 }
 
-/* Which status bits keep a sample from being used; some do not on the bench. */
-static uint32_t rejecting(uint16_t waive)
+/* Which status bits keep a sample from being used: some do not on the bench, and jumps not in a tumble that fast. */
+static uint32_t rejecting(const mrd_path_state *state, uint16_t waive)
 {
     const uint32_t always = MRD_BIT(MRD_S_SAMPLE_MISSING) | MRD_BIT(MRD_S_MAG_RANGE) | MRD_BIT(MRD_S_SAMPLE_OFF_TIME)
                             | MRD_BIT(MRD_S_BLANKED);
     const uint32_t in_flight = MRD_BIT(MRD_S_FIELD_IMPLAUSIBLE) | MRD_BIT(MRD_S_MAG_FROZEN) | MRD_BIT(MRD_S_MAG_DEAD_AXIS)
-                               | MRD_BIT(MRD_S_MAG_JUMP) | MRD_BIT(MRD_S_MAG_NOISY);
+                               | MRD_BIT(MRD_S_MAG_NOISY);
 
-    return waive ? always : always | in_flight;
+    if (waive) {
+        return always;
+    }
+    return always | in_flight | (state->jumping.tripped ? 0u : MRD_BIT(MRD_S_MAG_JUMP));
 }
 
 /* Stages 1 to 5: is this sample to be used? */
@@ -33,7 +36,7 @@ static uint32_t judge_sample(mrd_path_state *state, const mrd_path_config *confi
     status |= mrd_check_currents(state, config, inputs, &trace->currents);
     status |= mrd_gate(state, config, inputs, !(status & MRD_BIT(MRD_S_SAMPLE_MISSING)), &trace->currents, &trace->gate);
     status |= mrd_check_continuity(state, config, inputs, status, trace);
-    trace->gate.trusted = !(status & rejecting(waive));
+    trace->gate.trusted = !(status & rejecting(state, waive));
     return status;
 }
 

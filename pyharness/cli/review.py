@@ -18,10 +18,14 @@ from pyharness.cli.common import (
     replay,
     shown,
 )
+from pyharness.cli.faults import fly_faults
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import CController, load_controller
+from pyharness.faults import nominal_flight
+from pyharness.faults.bits import flip_every_bit
 from pyharness.loop import fly
-from pyharness.review import Flown, ReviewData, review_data, write_page
+from pyharness.review import FaultsFlown, Flown, ReviewData, review_data, write_page
+from pyharness.scaling import Scaling
 from pyharness.scenarios import LONG
 from pyharness.vectors import Verdict, find_vectors
 from pyharness.vectors.digests import known_digests, verdict
@@ -35,12 +39,13 @@ def add_to(commands) -> None:
         "review",
         help="fly, replay the vectors and write the review page",
         description="Fly the mission with the C controller, as it stands and starting along the field, until it should have settled; "
-        "compare with the truth; replay the golden vectors; write one self-contained page for the reviewer. Exit status 1 if any "
-        "check fails.",
+        "compare with the truth; replay the golden vectors; with --faults also fly every fault of the list and flip every bit; write one "
+        "self-contained page for the reviewer. Exit status 1 if any check fails.",
     )
     add_mission(parser)
     parser.add_argument("--out", default=PAGE, metavar="FILE", help=f"the page; default: {PAGE}")
     parser.add_argument("--vectors", metavar="DIR", help="folder of the vectors; default: ./vectors, then the checkout's")
+    parser.add_argument("--faults", action="store_true", help="also fly every fault and flip every bit, as 'slackwater faults' does: some minutes")
     add_sources(parser)
     parser.set_defaults(run=run)
 
@@ -52,7 +57,9 @@ def run(options: argparse.Namespace) -> int:
     folder = find_vector_folder(options.vectors)
     find_vectors(folder)  # before the long flight: without vectors there is nothing to sign
     flights, digests = _fly(options.mission, controller, folder)
-    data = review_data(flights, [*replay(folder, controller, options.mission), *digests], _command(options))
+    vectors = [*replay(folder, controller, options.mission), *digests]
+    faults = _faults(flights[0].scaling, controller) if options.faults else None
+    data = review_data(flights, vectors, _command(options), faults=faults)
     write_page(data, Path(options.out))
     _tell(data, folder)
     print(f"page      {shown(options.out)}")
@@ -74,6 +81,19 @@ def _fly(mission_path: str, controller: CController, folder: Path) -> tuple[list
     return flown, [verdict(content, record) for content, record in contents]
 
 
+def _faults(scaling: Scaling, controller: CController) -> FaultsFlown:
+    matrix = fly_faults(scaling, controller)
+    flight = nominal_flight(scaling)
+    with progress("recording", flight.cycles) as bar:
+        (record,) = fly([flight], controller, bar.update)
+    tallies = []
+    with progress("flipping", None, "flip") as bar:
+        for tally in flip_every_bit(record, controller):
+            tallies.append(tally)
+            bar.update(tally.tried)
+    return FaultsFlown(matrix, tuple(tallies), controller.interface.header)
+
+
 def _command(options: argparse.Namespace) -> str:
     return shlex.join(["slackwater", *sys.argv[1:]]) if sys.argv[1:2] == ["review"] else "slackwater review"
 
@@ -87,6 +107,9 @@ def _tell(data: ReviewData, folder: Path) -> None:
     rows = sum(v.rows for v in data.vectors)
     equal = sum(v.passed for v in data.vectors)
     print(f"vectors   {equal} of {len(data.vectors)} passed, long flights included, {rows} rows, from {shown(folder)}")
+    if data.faults:
+        flown = len(data.faults.matrix.results)
+        print(f"faults    {flown - len(data.faults.matrix.failed)} of {flown} flights ended as declared, {sum(t.tried for t in data.faults.tallies)} bits flipped")
     for check in data.failed:
         print(f"FAIL      {check.name}: {check.figure}")
     passed = len(data.checks) - len(data.failed)

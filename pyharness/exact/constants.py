@@ -110,7 +110,8 @@ MRD_F_COMMAND_ILLEGAL = 30
 MRD_F_MODE_ILLEGAL = 31
 MRD_F_WRONG_SIGN = 32
 MRD_F_TOO_FAST = 33
-MRD_F_COUNT = 34
+MRD_F_TIP_OFF = 34
+MRD_F_COUNT = 35
 
 # Results of init and path_check: the first check that fails.
 MRD_OK = 0

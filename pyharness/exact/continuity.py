@@ -26,9 +26,9 @@ _WAIVABLE = (
     1 << MRD_S_FIELD_IMPLAUSIBLE
     | 1 << MRD_S_MAG_FROZEN
     | 1 << MRD_S_MAG_DEAD_AXIS
-    | 1 << MRD_S_MAG_JUMP
     | 1 << MRD_S_MAG_NOISY
 )
+_JUMP = 1 << MRD_S_MAG_JUMP
 
 
 def counts(state: Record, config: Record, inputs: Record, status: int) -> tuple[Vector, Record, int]:
@@ -51,20 +51,24 @@ def counts(state: Record, config: Record, inputs: Record, status: int) -> tuple[
     return same, kept, bit(frozen, MRD_S_MAG_FROZEN) | bit(dead, MRD_S_MAG_DEAD_AXIS)
 
 
-def jump(state: Record, config: Record, field: Vector, sample_us: int, status: int) -> tuple[int, int]:
-    """Squared change from the last trusted sample, where that is recent, and the status bits."""
+def jump(state: Record, config: Record, field: Vector, sample_us: int, status: int) -> tuple[int, Record, int]:
+    """Squared change from the last trusted sample, where that is recent.
+
+    Returns it, what the state keeps, and the status bits.
+    """
     if status & NO_NORM or not state["field_valid"]:
-        return 0, 0
+        return 0, {}, 0
     elapsed = check("continuity.elapsed", (sample_us - state["sample_us"]) % WRAP)
     if elapsed > config["period_us"] + config["period_us"] // 2:
-        return 0, 0
+        return 0, {}, 0
     x, y, z = field
     px, py, pz = state["field"]
     dx, dy, dz = check3("continuity.difference", (x - px, y - py, z - pz))
     jump_sq = check(
         "continuity.jump_sq",
         square(clamp(dx, INT16_MAX)) + square(clamp(dy, INT16_MAX)) + square(clamp(dz, INT16_MAX)))
-    return jump_sq, bit(jump_sq > config["jump_max_sq"], MRD_S_MAG_JUMP)
+    jumped = jump_sq > config["jump_max_sq"]
+    return jump_sq, {"jumping": vote(state["jumping"], jumped)}, bit(jumped, MRD_S_MAG_JUMP)
 
 
 def noise(state: Record, config: Record, norm: int, status: int) -> tuple[int, Record, int]:
@@ -101,7 +105,7 @@ def follow_on(
 ) -> tuple[Record, Record, int]:
     """All four checks. Returns the trace's part, what the state keeps, and the status bits of this stage."""
     same, mag_kept, raised = counts(state, config, inputs, status)
-    jump_sq, jumped = jump(state, config, field, inputs["sample_us"], status)
+    jump_sq, jump_kept, jumped = jump(state, config, field, inputs["sample_us"], status)
     norm_change, norm_kept, noisy = noise(state, config, norm, status)
     gyro_same, gyro_kept, frozen = gyro_counts(state, config, inputs)
     trace = {
@@ -110,9 +114,12 @@ def follow_on(
         "norm_change": norm_change,
         "gyro_same": check("continuity.gyro_same", gyro_same),
     }
-    return trace, {**mag_kept, **norm_kept, **gyro_kept}, raised | jumped | noisy | frozen
+    return trace, {**mag_kept, **jump_kept, **norm_kept, **gyro_kept}, raised | jumped | noisy | frozen
 
 
-def trust(status: int, waive: int) -> int:
-    """Whether the sample is used, by the status bits of the first five stages."""
-    return flag(not status & (_REJECTED if waive else _REJECTED | _WAIVABLE))
+def trust(status: int, jumping: int, waive: int) -> int:
+    """Whether the sample is used, by the status bits of the first five stages; `jumping`: jumps are taken for a fast tumble."""
+    if waive:
+        return flag(not status & _REJECTED)
+    in_flight = _REJECTED | _WAIVABLE
+    return flag(not status & (in_flight if jumping else in_flight | _JUMP))

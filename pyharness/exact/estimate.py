@@ -13,24 +13,29 @@ def length(v: Vector) -> int:
     return isqrt(check("estimate.sum_sq", square(x) + square(y) + square(z)))
 
 
-def rate_across_field(supervisor: Record, filtered: Vector, norm: int) -> int:
-    """Rate count across the field: the chord of its turn in one period, over its norm. Saturates at 65535."""
-    turn = check("estimate.turn", length(filtered))
+def turn_of_field(filtered: Vector, norm: int) -> int:
+    """The chord of the field's turn in one period, Q15 rad. Saturates at 65535."""
+    change = check("estimate.change", length(filtered))
     field = check("estimate.norm", vmax(1, norm))
-    chord = UINT16_MAX
-    if turn < 2 * field:
-        chord = floor_div(turn << 15, field)
-    chord = check("estimate.chord", chord)
-    product = check("estimate.product", chord * supervisor["estimate_mantissa"])
+    turn = UINT16_MAX
+    if change < 2 * field:
+        turn = floor_div(change << 15, field)
+    return check("estimate.turn", turn)
+
+
+def rate_across_field(supervisor: Record, turn: int) -> int:
+    """Rate count across the field, from its turn. Saturates at 65535."""
+    product = check("estimate.product", turn * supervisor["estimate_mantissa"])
     return check("estimate.across", vmin(UINT16_MAX, product >> supervisor["estimate_shift"]))
 
 
 def estimate(supervisor: Record, trace: Record) -> tuple[Record, int, int, int]:
     """The trace's part, rate, rate_valid and the status bits of this stage."""
-    across, across_valid = 0, trace["derivative"]["valid"]
+    turn, across, across_valid = 0, 0, trace["derivative"]["valid"]
     if across_valid:
-        across = rate_across_field(supervisor, trace["low_pass"]["filtered"], trace["plausibility"]["norm"])
-    part = {"across": across, "across_valid": across_valid}
+        turn = turn_of_field(trace["low_pass"]["filtered"], trace["plausibility"]["norm"])
+        across = rate_across_field(supervisor, turn)
+    part = {"turn": turn, "across": across, "across_valid": across_valid}
     if supervisor["settle_by"] != MRD_SETTLE_BY_GYRO:
         return part, across, across_valid, 0
     if trace["calibration"]["rate_valid"]:

@@ -111,7 +111,8 @@ SUPERVISOR_CONFIG: Struct = (
     u16("estimate_shift"),
     u32("window_cycles"),
     u32("pause_cycles"),
-    u16("guard_rate"),
+    u16("guard_turn"),
+    u16("stall_turn"),
     u16("growth"),
     u16("progress"),
     u16("retries"),
@@ -164,6 +165,7 @@ PATH_STATE: Struct = (
     u16("norm"),
     u16("norm_known"),
     Nested("noise", BALLOT),
+    Nested("jumping", BALLOT),
     i16("gyro_raw", AXES),
     u16("gyro_known"),
     u16("gyro_same"),
@@ -217,7 +219,7 @@ TRACE: Struct = (
     )),
     Nested("saturation", (i16("command", AXES),)),
     Nested("pulses", (i16("ticks", AXES),)),
-    Nested("estimate", (u16("across"), u16("across_valid"))),
+    Nested("estimate", (u16("turn"), u16("across"), u16("across_valid"))),
 )
 
 OUTPUTS: Struct = (

@@ -67,7 +67,8 @@ def path_sense(state: Record, config: Record, inputs: Record, waive: int) -> tup
     continuity, followed, raised = follow_on(state, config, inputs, field, plausibility["norm"], status)
     status |= raised
     calibration = _usable(calibration, status, MRD_S_GYRO_FROZEN)
-    trusted = trust(status, waive)
+    jumping = followed.get("jumping", state["jumping"])["tripped"]
+    trusted = trust(status, jumping, waive)
     derivative, raised = differentiate(state, config, field, inputs["sample_us"], trusted)
     status |= raised
     low_pass = smooth(state, config, derivative)

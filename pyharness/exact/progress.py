@@ -1,4 +1,4 @@
-"""Progress of the damping: does the rate across the field fall from window to window, or does it grow?"""
+"""Progress of the damping: does the turn of the field fall from window to window, or does it grow?"""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ from pyharness.exact.fields import PROGRESS, zeros
 from pyharness.exact.num import Record, flag, vmax, vmin
 from pyharness.exact.ranges import check
 
-FOUR = 4  # estimates in a row of which the least counts: a single wild sample spoils two
+FOUR = 4  # turns in a row of which the least counts: a single wild sample spoils two
 
 
 def no_progress_yet() -> Record:
@@ -14,9 +14,9 @@ def no_progress_yet() -> Record:
     return zeros(PROGRESS)
 
 
-def take(progress: Record, across: int) -> Record:
-    """One more estimate; the least of each four may become the peak of the present window."""
-    least = across if progress["in_four"] == 0 else vmin(progress["least"], across)
+def take(progress: Record, turn: int) -> Record:
+    """One more turn; the least of each four may become the peak of the present window."""
+    least = turn if progress["in_four"] == 0 else vmin(progress["least"], turn)
     in_four = progress["in_four"] + 1
     if in_four < FOUR:
         return {**progress, "least": least, "in_four": in_four}
@@ -34,12 +34,12 @@ def exceeds_share(peak: int, earlier: int, share: int) -> bool:
 def watch(progress: Record, supervisor: Record, estimate: Record) -> tuple[Record, int]:
     """One cycle of DAMPING. Returns the new progress, and whether a window has just ended in divergence."""
     if estimate["across_valid"]:
-        progress = take(progress, estimate["across"])
+        progress = take(progress, estimate["turn"])
     window = check("progress.window", progress["window"] + 1)
     if window < supervisor["window_cycles"]:
         return {**progress, "window": window}, 0
     present, last, before = progress["peak"]
-    stalled = present > supervisor["settled_rate"] and exceeds_share(present, before, supervisor["progress"])
-    diverging = present > supervisor["guard_rate"] and exceeds_share(present, last, supervisor["growth"])
+    stalled = present > supervisor["stall_turn"] and exceeds_share(present, before, supervisor["progress"])
+    diverging = present > supervisor["guard_turn"] and exceeds_share(present, last, supervisor["growth"])
     ended = {**progress, "window": 0, "peak": (0, present, last), "in_four": 0, "stalled": flag(stalled)}
     return ended, flag(diverging)

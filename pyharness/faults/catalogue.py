@@ -88,10 +88,10 @@ Inject = Callable[[Setting], tuple[Event, ...]]
 
 @dataclass(frozen=True)
 class Within:
-    """After how many cycles at most a fault shows: in words, and worked out for a setting. None: it need not show."""
+    """After how many cycles at most a fault shows: in words, and worked out for a setting, None where it need not show."""
 
     text: str
-    cycles: Callable[[Setting], int] | None = None
+    cycles: Callable[[Setting], int | None] = lambda setting: None
 
 
 @dataclass(frozen=True)
@@ -128,6 +128,15 @@ class Fault:
 
 AT_ONCE = Within("1", lambda s: 1)
 NOT_BOUNDED = Within("not bounded")
+
+
+def _with_sense(text: str, cycles: int) -> Within:
+    """Bounded where the mission has a current sense."""
+    return Within(f"{text} with a current sense, else not bounded", lambda s: cycles if s.path["current_fitted"] else None)
+
+
+SIXTEEN_PULSES = _with_sense("16 long pulses", 400)
+"""In a tumble every coil is driven far enough in some of the cycles."""
 SETTLES = frozenset({Outcome.AS_WITHOUT, Outcome.LATER})
 HELD = frozenset({Outcome.HELD})
 FLIES_ON = frozenset({Outcome.AS_WITHOUT, Outcome.LATER, Outcome.DAMPED})
@@ -194,6 +203,10 @@ def _too_fast(flight: Flight) -> Flight:
     return replace(flight, rate_deg_s=tuple(factor * rate for rate in tip_off))
 
 
+def _fast_tip_off(flight: Flight) -> Flight:
+    return replace(flight, rate_deg_s=tuple(2.0 * rate for rate in flight.scaling.mission.body.tip_off_deg_s))
+
+
 # ---- the list ----
 
 
@@ -207,8 +220,8 @@ def _gyro(name: str, shows: str, inject: Inject, within: Within, recovers: str) 
     return Fault(name, shows, inject, within, does, recovers, "gyro_faults", passing=SETTLES, lasting=FLIES_ON)
 
 
-def _coil(name: str, shows: str, inject: Inject, does: str, lasting: frozenset[Outcome], counter: str, recovers: str = "by command RESUME") -> Fault:
-    return Fault(name, shows, inject, NOT_BOUNDED, does, recovers, counter, lasting=lasting, orbits=3.2)
+def _coil(name: str, shows: str, inject: Inject, within: Within, does: str, lasting: frozenset[Outcome], counter: str, recovers: str = "by command RESUME") -> Fault:
+    return Fault(name, shows, inject, within, does, recovers, counter, lasting=lasting, orbits=3.2)
 
 
 def _time(name: str, shows: str, inject: Inject, within: Within, does: str, recovers: str, holds: bool = False) -> Fault:
@@ -238,16 +251,16 @@ FAULTS: tuple[Fault, ...] = (
           "with the next sample in range"),
     _gyro("GYRO_DRIFT", "GYRO_DISAGREES GYRO_RANGE", _drift, Within("until four times what is beyond use, and a quarter orbit", _drift_shows),
           "after 64 samples that agree"),
-    _coil("COIL_OPEN", "COIL_CURRENT NO_PROGRESS", _span(SickCoil, coil=0, current=0.0), "goes on with the others; told by a current sense, else by no progress",
+    _coil("COIL_OPEN", "COIL_CURRENT NO_PROGRESS", _span(SickCoil, coil=0, current=0.0), SIXTEEN_PULSES, "goes on with the others; told by a current sense, else by no progress",
           ANY_COIL, "coil_faults"),
-    _coil("COIL_SHORTED_ON", "COIL_CURRENT FIELD_IMPLAUSIBLE MAG_JUMP MAG_NOISY NO_PROGRESS DIVERGING", _span(SickCoil, coil=0, held=1.0),
+    _coil("COIL_SHORTED_ON", "COIL_CURRENT FIELD_IMPLAUSIBLE MAG_JUMP MAG_NOISY NO_PROGRESS DIVERGING", _span(SickCoil, coil=0, held=1.0), _with_sense("2", 2),
           "with a current sense rejects every sample, no pulse; else only what it does to field and tumble shows", STRAYS, "coil_faults",
           "when it goes off"),
-    _coil("COIL_WEAK", "COIL_CURRENT NO_PROGRESS", _span(SickCoil, coil=1, current=0.33), "goes on; told by a current sense, else by no progress", ANY_COIL, "coil_faults"),
-    _coil("COIL_REVERSED", "NO_PROGRESS DIVERGING", _span(SickCoil, coil=1, leads=-1.0), "goes on; no progress, or divergence; shown by the phasing test", STRAYS, "trips"),
-    _coil("COIL_BACKWARD", "COIL_CURRENT NO_PROGRESS DIVERGING", _span(SickCoil, coil=1, current=-1.0), "with a current sense takes the coil out of use; else as with reversed leads",
+    _coil("COIL_WEAK", "COIL_CURRENT NO_PROGRESS", _span(SickCoil, coil=1, current=0.33), SIXTEEN_PULSES, "goes on; told by a current sense, else by no progress", ANY_COIL, "coil_faults"),
+    _coil("COIL_REVERSED", "NO_PROGRESS DIVERGING", _span(SickCoil, coil=1, leads=-1.0), NOT_BOUNDED, "goes on; no progress, or divergence; shown by the phasing test", STRAYS, "trips"),
+    _coil("COIL_BACKWARD", "COIL_CURRENT NO_PROGRESS DIVERGING", _span(SickCoil, coil=1, current=-1.0), SIXTEEN_PULSES, "with a current sense takes the coil out of use; else as with reversed leads",
           STRAYS, "coil_faults"),
-    _coil("COILS_SWAPPED", "NO_PROGRESS DIVERGING", _span(SwapCoils, coils=(0, 1)), "goes on; no progress, or divergence; shown by the phasing test", STRAYS, "trips"),
+    _coil("COILS_SWAPPED", "NO_PROGRESS DIVERGING", _span(SwapCoils, coils=(0, 1)), NOT_BOUNDED, "goes on; no progress, or divergence; shown by the phasing test", STRAYS, "trips"),
     Fault("COIL_STAYS_ON", "SWITCH_OFF_UNSTAMPED COIL_CURRENT", _span(StaysOn, coil=1), Within("1 after its pulse"), "trusts no sample until the switch-off is stamped, no pulse",
           "2 cycles after the stamp", "coil_faults", passing=SETTLES, lasting=HELD, holds=True),
     _time("TIME_LATE", "SAMPLE_OFF_TIME", _off_time(1), AT_ONCE, "rejects the samples, no pulse", "2 cycles after the last", holds=True),
@@ -275,6 +288,8 @@ FAULTS: tuple[Fault, ...] = (
           "by command RESUME", "trips", lasting=frozenset({Outcome.SAFE}), orbits=-1.0),
     Fault("TOO_FAST", "NO_PROGRESS DIVERGING", lambda s: (), Within("3 window_cycles + 3", lambda s: 3 * s.supervisor["window_cycles"] + 3),
           "goes on; no progress, or divergence", "goes on", "", lasting=frozenset({Outcome.TOLD, Outcome.SAFE}), start=_too_fast, orbits=1.6),
+    Fault("TIP_OFF", "MAG_JUMP", lambda s: (), Within("not bounded"), "after 16 jumps in a row takes the field to turn that fast, and damps",
+          "once 64 samples have not jumped", "mag_faults", lasting=SETTLES | {Outcome.DAMPED, Outcome.TOLD}, start=_fast_tip_off, orbits=1.6),
 )  # fmt: skip
 """In the order of MRD_F_."""
 

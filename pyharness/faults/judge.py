@@ -84,8 +84,8 @@ def _problems(result: Result) -> list[str]:
     problems = []
     if result.outcome not in allowed:
         problems.append(f"ended as {result.outcome_text!r}, declared: {' or '.join(sorted(o.value for o in allowed))}")
-    if fault.within.cycles is not None:
-        limit = fault.within.cycles(case.setting)
+    limit = fault.within.cycles(case.setting)
+    if limit is not None:
         if result.shown_after is None:
             problems.append(f"did not show, declared: within {limit} cycles")
         elif result.shown_after > limit:

@@ -19,6 +19,7 @@ from pyharness.review.magnifier import cycle_figure
 from pyharness.review.rates import rates_figure
 from pyharness.review.samples import samples_figure
 from pyharness.review.style import save
+from pyharness.whole_files import replacing
 
 
 @dataclass(frozen=True)

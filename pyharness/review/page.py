@@ -14,6 +14,8 @@ from pyharness.flight import Interface
 from pyharness.mission import Mission
 from pyharness.review.blanking import blanking_margins
 from pyharness.review.checks import Check, checks
+from pyharness.review.fault_checks import fault_checks
+from pyharness.review.faults import FaultsFlown
 from pyharness.review.figures import PLOTS, Plot
 from pyharness.review.flown import Flown
 from pyharness.review.numbers import numbers
@@ -38,6 +40,7 @@ class ReviewData:
     vectors: tuple[Verdict, ...]
     checks: tuple[Check, ...]
     command: str  # the command line that made the page
+    faults: FaultsFlown | None = None  # None: not flown, and the page claims nothing of them
 
     @property
     def scaling(self) -> Scaling:
@@ -61,13 +64,17 @@ class ReviewData:
 
 
 def review_data(
-    flights: Sequence[Flown], vectors: Sequence[Verdict], command: str, settle_within_s: float | None = None
+    flights: Sequence[Flown],
+    vectors: Sequence[Verdict],
+    command: str,
+    settle_within_s: float | None = None,
+    faults: FaultsFlown | None = None,
 ) -> ReviewData:
     """Data, checks worked out. `settle_within_s` as in `checks`. Raises ValueError without a flight."""
     if not flights:
         raise ValueError("flights: none, the page needs at least one")
-    worked_out = checks(flights, vectors, settle_within_s)
-    return ReviewData(flights[0].interface, tuple(flights), tuple(vectors), tuple(worked_out), command)
+    worked_out = checks(flights, vectors, settle_within_s) + (fault_checks(faults) if faults else [])
+    return ReviewData(flights[0].interface, tuple(flights), tuple(vectors), tuple(worked_out), command, faults)
 
 
 @dataclass(frozen=True)
@@ -109,6 +116,7 @@ def render(data: ReviewData) -> str:
         mission_rows=mission_rows(data.mission),
         resolution=describe_resolution(data.scaling),
         configuration=describe_config(data.scaling, data.interface),
+        faults=data.faults,
         status_rows=status_rows(data.flights, data.interface.header),
     )
 

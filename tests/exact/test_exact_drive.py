@@ -28,7 +28,7 @@ from pyharness.exact.constants import (
     MRD_SETTLE_BY_FIELD,
     MRD_SETTLE_BY_GYRO,
 )
-from pyharness.exact.estimate import estimate, rate_across_field
+from pyharness.exact.estimate import estimate, rate_across_field, turn_of_field
 from pyharness.exact.law import cross_product, gain_used, rate_law
 from pyharness.exact.path import zero_trace
 from pyharness.exact.pulses import make_pulses
@@ -331,7 +331,7 @@ def test_every_axis_is_zero_or_has_the_damping_sign(config, filtered, rate, fiel
 ])
 def test_rate_across_the_field(filtered, norm, mantissa, shift, rate):
     supervisor = {**SUPERVISOR, "estimate_mantissa": mantissa, "estimate_shift": shift}
-    assert rate_across_field(supervisor, filtered, norm) == rate
+    assert rate_across_field(supervisor, turn_of_field(filtered, norm)) == rate
 
 
 @pytest.mark.parametrize(("settle_by", "rate_valid", "valid", "expected"), [
@@ -345,5 +345,5 @@ def test_rate_across_the_field(filtered, norm, mantissa, shift, rate):
 def test_source_of_the_estimate(settle_by, rate_valid, valid, expected):
     """The rate across the field, 5·32768 // 1000 = 163, is there whatever the rate is taken from."""
     trace = sensed(valid=valid, filtered=(3, 4, 0), rate=(3, 4, -12), rate_valid=rate_valid)
-    across = {"across": 163 * valid, "across_valid": valid}
+    across = {"turn": 163 * valid, "across": 163 * valid, "across_valid": valid}
     assert estimate({**SUPERVISOR, "settle_by": settle_by}, trace) == (across, *expected)

@@ -95,11 +95,11 @@ def test_negative_fields_fold_as_unsigned_of_their_width():
     """A digest by the definition, field by field, for a state with one value of each sign and width."""
     state = with_changes(reset(), {"path.filter": (-1, 2, 0), "path.field": (-2, 0, 0), "path.weak[1].level": 4})
     filtered, stamps, field = [2**32 - 1, 2, 0], [0] * 7, [65534, 0, 0]
-    flags, ticks, mag, noise, gyro, rate = [0] * 9, [0] * 3, [0] * 9, [0] * 2, [0] * 5, [0] * 4
+    flags, ticks, mag, noise_and_jumping, gyro, rate = [0] * 9, [0] * 3, [0] * 9, [0] * 4, [0] * 5, [0] * 4
     agreement, weak, backward = [0] * 2, [0, 0, 4, 0, 0, 0], [0] * 6
     dwell, mode, inhibit_commanded, trips, cycle, progress, counters = 0, 3, 0, 0, 0, [0] * 7, [0] * 12
     h = 2166136261
-    for word in (*filtered, *stamps, *field, *flags, *ticks, *mag, *noise, *gyro, *rate, *agreement, *weak,
+    for word in (*filtered, *stamps, *field, *flags, *ticks, *mag, *noise_and_jumping, *gyro, *rate, *agreement, *weak,
                  *backward, dwell, mode, inhibit_commanded, trips, cycle, *progress, *counters):
         h = (h ^ word) * 16777619 % 2**32
         h = h ^ h // 2**15

@@ -25,8 +25,8 @@ DAMPING, PAUSE, SAFE = MRD_MODE_DAMPING, MRD_MODE_PAUSE, MRD_MODE_SAFE
 def watched(estimates, begun=None, **supervisor):
     """Progress after these estimates, None for none, and the cycles in which the damping diverged."""
     progress, diverged = {**no_progress_yet(), **(begun or {})}, []
-    for cycle, across in enumerate(estimates):
-        part = {"across": across or 0, "across_valid": int(across is not None)}
+    for cycle, turn in enumerate(estimates):
+        part = {"turn": turn or 0, "across": 0, "across_valid": int(turn is not None)}
         progress, diverging = watch(progress, {**SUPERVISOR, **supervisor}, part)
         diverged += [cycle] if diverging else []
     return progress, diverged
@@ -53,9 +53,9 @@ def test_peaks_by_hand(estimates, window, peaks):
 
 @pytest.mark.parametrize(("before", "peak", "changes", "diverges"), [
     (300, 600, {}, False), (300, 601, {}, True),  # growth 512: twice
-    (100, 250, {"growth": 257}, False), (100, 251, {"growth": 257}, True),  # guard_rate 250
-    (0, 65535, {}, False), (1, 65535, {}, True), (1, 65535, {"guard_rate": 65535}, False),
-    (1, 65535, {"guard_rate": 65534}, True), (1, 3, {"guard_rate": 0}, True),
+    (100, 250, {"growth": 257}, False), (100, 251, {"growth": 257}, True),  # guard_turn 250
+    (0, 65535, {}, False), (1, 65535, {}, True), (1, 65535, {"guard_turn": 65535}, False),
+    (1, 65535, {"guard_turn": 65534}, True), (1, 3, {"guard_turn": 0}, True),
     (65535, 65535, {"growth": 257}, False), (16383, 65535, {"growth": 1024}, True),
     (16384, 65535, {"growth": 1024}, False),
 ])
@@ -66,8 +66,8 @@ def test_divergence_on_either_side_of_its_limits(before, peak, changes, diverges
 
 @pytest.mark.parametrize(("earlier", "peak", "changes", "stalled"), [
     (400, 200, {}, 0), (400, 201, {}, 1),  # progress 128: half
-    (200, 100, {"progress": 1}, 0), (200, 101, {"progress": 1}, 1),  # settled_rate 100
-    (0, 65535, {}, 0), (500, 500, {"progress": 256}, 0), (500, 501, {"progress": 256, "guard_rate": 65535}, 1),
+    (200, 100, {"progress": 1}, 0), (200, 101, {"progress": 1}, 1),  # stall_turn 100
+    (0, 65535, {}, 0), (500, 500, {"progress": 256}, 0), (500, 501, {"progress": 256, "guard_turn": 65535}, 1),
 ])
 def test_no_progress_on_either_side_of_its_limits(earlier, peak, changes, stalled):
     begun = {"peak": (0, 65535, earlier), "stalled": 1 - stalled}
@@ -138,9 +138,9 @@ def test_settling_forgets_the_trips_and_the_peaks():
 
 def test_no_progress_lasts_until_a_window_ends_otherwise_or_the_mode_changes():
     stalled = {"progress.peak": (0, 65535, 400)}
-    _, outputs = flight(stalled, 12, {"supervisor.guard_rate": 65535})
+    _, outputs = flight(stalled, 12, {"supervisor.guard_turn": 65535})
     assert tell(outputs, MRD_S_NO_PROGRESS) == [0] * 4 + [1] * 5 + [0] * 3  # against 65535 in the window after
-    state, outputs = flight(stalled, 7, {"supervisor.guard_rate": 65535}, {6: {"low_power": 1}})
+    state, outputs = flight(stalled, 7, {"supervisor.guard_turn": 65535}, {6: {"low_power": 1}})
     assert tell(outputs, MRD_S_NO_PROGRESS) == [0] * 4 + [1] * 2 + [0]
 
 

@@ -20,7 +20,7 @@ from pyharness.exact import FIELDS, RANGES, RangeError, constants, path_drive, p
 from pyharness.exact.agreement import residual_of
 from pyharness.exact.ballot import vote
 from pyharness.exact.derivative import differentiate, factor_of
-from pyharness.exact.estimate import rate_across_field
+from pyharness.exact.estimate import rate_across_field, turn_of_field
 from pyharness.exact.law import gain_used
 from pyharness.exact.path import path_reset, zero_trace
 from pyharness.exact.progress import no_progress_yet, watch
@@ -111,10 +111,9 @@ KNOWN = {**path_state(), "field_valid": 1, "sample_us": 1_040_000}
         path_config(window_ticks=16385), low_pass={"filtered": (0, 0, -32767)})),
     ("pulses.ticks", lambda: drive(
         path_config(window_ticks=16384, polarity=(2, 1, 1)), low_pass={"filtered": (-32767, 0, 0)})),
-    ("estimate.sum_sq", lambda: rate_across_field(SUPERVISOR, (32768, 32767, 32767), 200)),
-    ("estimate.norm", lambda: rate_across_field(SUPERVISOR, (0, 0, 0), 56755)),
-    ("estimate.product", lambda: rate_across_field({**SUPERVISOR, "estimate_mantissa": 65536},
-        (32767, 0, 0), 200)),
+    ("estimate.sum_sq", lambda: turn_of_field((32768, 32767, 32767), 200)),
+    ("estimate.norm", lambda: turn_of_field((0, 0, 0), 56755)),
+    ("estimate.product", lambda: rate_across_field({**SUPERVISOR, "estimate_mantissa": 65538}, 65535)),
     ("ballot.level", lambda: vote({"level": 66, "tripped": 0}, False)),
     ("continuity.difference", lambda: path_sense({**KNOWN, "field": (-60_000, 0, 0)}, path_config(),
         path_inputs(), 0)),
@@ -125,7 +124,7 @@ KNOWN = {**path_state(), "field_valid": 1, "sample_us": 1_040_000}
     ("agreement.residual", lambda: residual_of({"agree_mantissa": 65535, "agree_shift": 0}, (0, 0, 0),
         (0, 32767, -32767), (0, 32767, 32767))),
     ("progress.window", lambda: watch({**no_progress_yet(), "window": 2**32 - 1}, SUPERVISOR,
-        {"across": 0, "across_valid": 0})),
+        {"turn": 0, "across": 0, "across_valid": 0})),
     ("inputs.path.mag_raw", lambda: path_sense(path_reset(), path_config(),
         path_inputs(mag_raw=(32768, 0, 0)), 0)),
     ("inputs.path.sample_us", lambda: path_sense(path_reset(), path_config(),

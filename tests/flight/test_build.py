@@ -12,6 +12,8 @@ from pyharness.flight import BuildError, LayoutError, Library, SourcesError, fin
 from pyharness.flight import build as building
 from pyharness.flight.library import Interface
 
+VERSION = Interface(find_sources()).header.constants["MRD_VERSION"]
+
 
 @pytest.fixture
 def copy(tmp_path):
@@ -20,7 +22,7 @@ def copy(tmp_path):
     return find_sources(tmp_path / "fsw_c")
 
 
-@pytest.mark.parametrize("name", ["src/pulses.c", "src/arith.h", "include/mrd.h", "src/supervisor.h"])
+@pytest.mark.parametrize("name", ["src/pulses.c", "src/arith.h", "include/mrd.h", "src/supervisor.h", "src/faults.c"])
 def test_an_edit_of_any_file_is_built(copy, name):
     before = Library(sources=copy)
     digest = copy.digest
@@ -66,7 +68,7 @@ def foreign(copy, tmp_path) -> str:
 
 
 def test_a_library_of_the_same_header_is_taken(copy, tmp_path):
-    assert Library(foreign(copy, tmp_path)).lib.mrd_layout[0] == 1
+    assert Library(foreign(copy, tmp_path)).lib.mrd_layout[0] == VERSION
 
 
 def test_a_library_with_another_layout_is_refused(copy, tmp_path):
@@ -77,9 +79,12 @@ def test_a_library_with_another_layout_is_refused(copy, tmp_path):
 
 
 def test_a_library_of_another_version_is_refused(copy, tmp_path):
-    copy.header.write_text(copy.header.read_text().replace("MRD_VERSION = 1", "MRD_VERSION = 7"))
-    with pytest.raises(LayoutError, match="version is 7, this header has 1"):
-        Library(foreign(copy, tmp_path))
+    text, built = copy.header.read_text(), f"MRD_VERSION = {VERSION},"
+    assert built in text
+    copy.header.write_text(text.replace(built, "MRD_VERSION = 77,"))
+    library = foreign(copy, tmp_path)
+    with pytest.raises(LayoutError, match=f"version is 77, this header has {VERSION}; build it from this header"):
+        Library(library)
 
 
 def test_a_library_without_a_layout_is_refused(copy, tmp_path):

@@ -166,7 +166,8 @@ def test_mission_configuration_and_digests(data, reader):
     assert "body.inertia_kg_m2.xz -0.0008 kg m²" in mission
     assert "coil.z.dipole_a_m2 0.208195822 A m²" in mission  # 240 × 0.0072 × 7.4 / (58 × 1.05895)
     assert mission.index("coil.x.polarity") < mission.index("coil.y.core")
-    assert all(key.path.partition(".")[0] in mission for key in KEYS)
+    tables = {key.path.partition(".")[0] for key in KEYS} - {"current_sense"}  # which the demo does not have
+    assert all(table in mission for table in tables)
     configuration = rows(reader, "configuration")
     for words in (
         "path.window_ticks 4000 400 ms",
@@ -190,7 +191,7 @@ def test_mission_configuration_and_digests(data, reader):
 def test_status_dictionary_has_the_header_s_texts_and_the_counts(data, reader):
     shown = rows(reader, "status")
     names = data.interface.header.named("MRD_S_")
-    assert len(names) == 23
+    assert len(names) == 32
     for bit, name in names.items():
         counts = " ".join(str(int((f.record.outputs["status"] >> bit & 1).sum())) for f in data.flights)
         assert f"{bit} {name} {data.interface.header.texts[f'MRD_S_{name}']} {counts} " in shown

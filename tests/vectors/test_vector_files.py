@@ -100,11 +100,11 @@ def test_differences_are_told_in_counts_and_units(c):
     outputs["trace"]["derivative"]["derivative"][100, 1] += 50
     outputs["status"][20] ^= 1
     detail = check_vector(replace(vector, outputs=outputs), c).detail
-    assert re.match(r"row 20, stage status word: outputs\.status is \d+, expected \d+; 2 of 2400 rows differ$", detail)
+    assert re.match(r"row 20, stage status word: outputs\.status is \d+, expected \d+; 2 of 1500 rows differ$", detail)
     outputs["status"][20] ^= 1
     detail = check_vector(replace(vector, outputs=outputs), c).detail
     assert re.match(r"row 100, stage derivative: outputs\.trace\.derivative\.derivative\[1\] is (-?\d+), expected (-?\d+) "
-                    r"\(\S+ against \S+ nT/s\); 1 of 2400 rows differ$", detail)  # fmt: skip
+                    r"\(\S+ against \S+ nT/s\); 1 of 1500 rows differ$", detail)  # fmt: skip
 
 
 def edited(tmp_path: Path, old: str, new: str, count: int = 1) -> Path:
