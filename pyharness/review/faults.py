@@ -76,7 +76,7 @@ class FaultRow:
         """The outcome at this moment; None where it was not flown."""
         for result in self.results:
             if result.case.moment.name == moment:
-                return Cell(result.outcome, ENDINGS[result.outcome].cell.format(result.later_s), result.passed)
+                return Cell(result.outcome, _short(result), result.passed)
         return None
 
     @property
@@ -131,6 +131,11 @@ class FaultRow:
     def may_go_unseen(self) -> bool:
         """Whether it did, or is declared so."""
         return Outcome.UNSEEN in {*self.fault.passing, *self.fault.lasting, *(result.outcome for result in self.results)}
+
+
+def _short(result: Result) -> str:
+    at_once = result.outcome is Outcome.SAFE and result.later_s < 0.5
+    return "safe at once" if at_once else ENDINGS[result.outcome].cell.format(result.later_s)
 
 
 def _words(outcomes: Collection[Outcome]) -> str:
@@ -209,6 +214,6 @@ class FaultsFlown:
         return (
             f"{sum(tried)} flips at {len(self.flips)} moments: of {tried[0]} in state and configuration {sum(t.caught for t in memory)} were caught "
             f"in the same cycle with all coils off; of {tried[1]} in the inputs {sum(t.unchanged for t in inputs)} had no effect, "
-            f"{sum(t.forgotten for t in inputs)} were forgotten after at most {longest} cycles and {sum(t.lasting for t in inputs)} acted to the end; "
+            f"{sum(t.forgotten for t in inputs)} were forgotten after at most {longest} cycles and {sum(t.lasting for t in inputs)} differed to the end; "
             f"{sum(t.wild for t in self.tallies)} led to a pulse beyond a limit or from a mode that makes none."
         )

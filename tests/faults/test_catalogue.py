@@ -29,7 +29,6 @@ WITHOUT_VECTOR = {
 
 def test_the_faults_are_those_of_the_header_in_its_order():
     named = INTERFACE.header.named("MRD_F_")
-    del named[INTERFACE.header.constants["MRD_F_COUNT"]]
     assert [fault.name for fault in FAULTS] == [named[number] for number in range(len(named))]
     assert all(INTERFACE.header.texts[f"MRD_F_{fault.name}"] for fault in FAULTS)
 
@@ -67,5 +66,5 @@ def test_its_golden_vector_shows_it_in_time(scenario):
     assert shows.size and shows[0] >= FAULT_FIRST
     within = fault.within.cycles(Setting(scenario.scaling(str(demo_path())), FAULT_FIRST, FAULT_FIRST + scenario.fault_lasts))
     assert within is None or shows[0] - FAULT_FIRST + 1 <= within
-    assert counters[fault.counter][-1] > counters[fault.counter][FAULT_FIRST - 1]
+    assert not fault.counter or counters[fault.counter][-1] > counters[fault.counter][FAULT_FIRST - 1]
     assert not (fault.holds and (vector.outputs["ticks"][shows] != 0).any())

@@ -121,6 +121,8 @@ def test_cells_stand_under_their_moment(faults):
     by_name = {row.fault.name: row for row in faults.rows}
     cells = [by_name["MAG_FROZEN"].cell(moment) for moment in faults.moments]
     assert [cell and cell.text for cell in cells] == ["+31 s", "+412 s", None]
+    safe = next(r for r in faults.matrix.results if r.outcome is Outcome.SAFE)
+    assert with_results(faults, replace(safe, later_s=0.0)).rows[0].cell("early").text == "safe at once"
     assert by_name["COIL_REVERSED"].cell("half-way, for good").style == "unseen"
     assert [part for part, _ in faults.groups] == ["magnetometer", "gyro", "coils", "time", "computer"]
 
@@ -172,7 +174,7 @@ def test_flips_have_their_table_and_totals(shown, faults):
     section = rows(shown(faults), "faults").split("Every single bit flipped")[1]
     assert (
         "3622 flips at 2 moments: of 3008 in state and configuration 3008 were caught in the same cycle with all coils off; "
-        "of 614 in the inputs 500 had no effect, 114 were forgotten after at most 3 cycles and 0 acted to the end; 0 led to a pulse"
+        "of 614 in the inputs 500 had no effect, 114 were forgotten after at most 3 cycles and 0 differed to the end; 0 led to a pulse"
     ) in section
     assert "hold-off state 1001 1001 1001 0 – 0 0 PASS configuration 503 503 0 0 – 503 0 PASS inputs 307 – 300 7 2 0 0 PASS damping state" in section
 
