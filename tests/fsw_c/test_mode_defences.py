@@ -71,9 +71,16 @@ def test_a_tumble_that_grows_pauses_tries_again_and_ends_in_safe(library):
     assert (np.flatnonzero(np.diff(trips, prepend=0)).tolist(), int(trips[-1])) == ([17, 40], 2)
 
 
+@pytest.mark.parametrize(("fast", "diverges"), [(range(10, 13), False), (range(10, 14), True), (range(14, 18), True), (range(12, 16), False)])
+def test_four_turns_count_by_their_least(library, fast, diverges):
+    """The second window's fours are cycles 10 to 13 and 14 to 17: less than a whole one is no peak."""
+    outputs = Bank(library, config_of("derivative", supervisor=supervisor(growth=300))).run(turning([8.0 if n in fast else 3.0 for n in range(18)]))
+    assert has(outputs, "DIVERGING") == [False] * 17 + [diverges]
+
+
 @pytest.mark.parametrize("retries", [0, 1, 3])
 def test_there_are_as_many_pauses_as_retries(library, retries):
-    config = config_of("derivative", supervisor=supervisor(retries=retries, growth=257))
+    config = config_of("derivative", supervisor=supervisor(retries=retries))
     outputs = Bank(library, config).run(turning([1.02**n for n in range(100)]))
     entered = [b for a, b in zip(modes(outputs), modes(outputs)[1:], strict=False) if a != b]
     assert entered.count(PAUSE) == retries and entered[-1] == SAFE

@@ -108,8 +108,10 @@ def test_single_wild_samples_are_not_noise(library):
     assert not any(has(outputs, "MAG_NOISY"))
 
 
-def test_a_frozen_gyro_is_not_used_until_a_count_changes(library):
-    sequence = [stamped(n, mag_raw=moved(n), gyro_raw=RATE if n < 9 else (2000, -1000, 501)) for n in range(11)]
+@pytest.mark.parametrize("axis", range(3))
+def test_a_frozen_gyro_is_not_used_until_a_count_changes(library, axis):
+    changed = tuple(count + (i == axis) for i, count in enumerate(RATE))
+    sequence = [stamped(n, mag_raw=moved(n), gyro_raw=RATE if n < 9 else changed) for n in range(11)]
     outputs = Bank(library, config_of(path={"gyro_frozen_limit": 4})).run(sequence)
     assert when(has(outputs, "GYRO_FROZEN")) == [4, 5, 6, 7, 8]
     assert active(outputs) == [0, 2, 2, 2, 1, 1, 1, 1, 1, 2, 2]

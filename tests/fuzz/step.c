@@ -93,6 +93,7 @@ static void mend(mrd_config *config)
     supervisor->estimate_shift = (uint16_t)(1 + supervisor->estimate_shift % 31u);
     supervisor->window_cycles = 1u + supervisor->window_cycles % 6u;
     supervisor->pause_cycles = 1u + supervisor->pause_cycles % 6u;
+    supervisor->guard_turn %= 1024u;
     supervisor->growth = (uint16_t)(257 + supervisor->growth % 768u);
     supervisor->progress = (uint16_t)(1 + supervisor->progress % 256u);
     supervisor->bench_key |= 1u;

@@ -75,7 +75,8 @@ def test_gyro_error():
 def test_windows_follow_the_orbit():
     assert (defence().window_s, defence().pause_s) == (2869.5, 5739.0)
     plain = defence()
-    assert (plain.divergence_guard, plain.growth_percent, plain.progress_percent, plain.retries) == (True, 12.5, 10.0, 3)
+    assert (plain.divergence_guard, plain.growth_percent, plain.progress_percent, plain.retries) == (True, 5.0, 10.0, 3)
+    assert plain.guard_deg_s == pytest.approx(1.1 * math.hypot(*load_mission(BASE).body.tip_off_deg_s), abs=0.01)
 
 
 def test_current_sense():
@@ -87,7 +88,7 @@ def test_current_sense():
 def test_given_values_stay():
     given = {
         "jump_ut": 30.0, "noise_ut": 2.0, "frozen_s": 20.0, "dead_axis_s": 30.0, "gyro_frozen_s": 40.0, "gyro_error_deg_s": 3.0,
-        "divergence_guard": False, "window_s": 100.0, "pause_s": 200.0, "growth_percent": 50.0, "progress_percent": 5.0,
+        "divergence_guard": False, "guard_deg_s": 25.0, "window_s": 100.0, "pause_s": 200.0, "growth_percent": 50.0, "progress_percent": 5.0,
         "retries": 0,
     }  # fmt: skip
     assert vars(defence(defence=given)) == given

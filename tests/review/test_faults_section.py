@@ -150,6 +150,8 @@ def test_declared_stands_beside_measured(shown, faults):
 def test_shown_in_some_flights_only_is_said(faults, results):
     silent = with_results(faults, results[3], replace(results[4], shown_after=None))
     assert silent.rows[0].shown_after == "17; not told in 1 of 2 flights"
+    by_name = {row.fault.name: row for row in faults.rows}
+    assert by_name["COIL_REVERSED"].shown_after == "not told" and by_name["TIME_WRAP"].shown_after == "–"  # has no bit
 
 
 def test_what_may_go_unseen_is_a_caution(shown, faults):
