@@ -147,7 +147,7 @@ class Host:
             if cycle == event.end:
                 self._switch_off_us[i] = start_us[i]
         for i, event in self._of(StaysOn):
-            if cycle == event.end:
+            if cycle == event.end + 1:  # it was on up to the sample of `end`
                 self._switch_off_us[i, event.coil] = start_us[i]
         for i, _ in self._now(RestartController, cycle):
             self._switch_off_us[i] = start_us[i]

@@ -129,7 +129,7 @@ enum {
     MRD_S_GYRO_DISAGREES = 28,       /* gyro and turn of the field contradict each other: gyro not used */
     MRD_S_COIL_CURRENT = 29,         /* a coil's current is not what was commanded */
     MRD_S_NO_PROGRESS = 30,          /* rate across the field hardly lower than an orbit before */
-    MRD_S_DIVERGING = 31,            /* rate across the field grew while damping: pause, or safe */
+    MRD_S_DIVERGING = 31,            /* rate across the field grew while damping, or did not fall after a pause: pause, or safe */
     MRD_S_COUNT = 32
 };
 

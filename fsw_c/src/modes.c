@@ -212,7 +212,7 @@ uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, 
         state->dwell = 0;
     }
     if (state->mode == MRD_MODE_DAMPING) {
-        diverging = mrd_judge_progress(&state->progress, config, across);
+        diverging = mrd_judge_progress(&state->progress, config, state->trips, across);
     }
     before = state->mode;
     state->mode = next_mode(state, config, inputs, estimate, diverging);

@@ -27,7 +27,8 @@ static uint16_t exceeds(uint16_t peak, uint16_t earlier, uint16_t factor)
     return earlier != 0u && ((uint32_t)peak << 8) > mrd_mul_u16(earlier, factor);
 }
 
-uint16_t mrd_judge_progress(mrd_progress *progress, const mrd_supervisor_config *config, const mrd_estimate_trace *estimate)
+uint16_t mrd_judge_progress(mrd_progress *progress, const mrd_supervisor_config *config, uint16_t trips,
+                            const mrd_estimate_trace *estimate)
 {
     uint16_t *peak = progress->peak;
     uint16_t diverging;
@@ -40,7 +41,7 @@ uint16_t mrd_judge_progress(mrd_progress *progress, const mrd_supervisor_config 
         return 0;
     }
     progress->stalled = peak[0] > config->stall_turn && exceeds(peak[0], peak[2], config->progress);
-    diverging = peak[0] > config->guard_turn && exceeds(peak[0], peak[1], config->growth);
+    diverging = peak[0] > config->guard_turn && (exceeds(peak[0], peak[1], config->growth) || (trips && progress->stalled));
     peak[2] = peak[1];
     peak[1] = peak[0];
     peak[0] = 0;

@@ -20,8 +20,9 @@ uint16_t mrd_is_mode(uint16_t mode);
 /* The command. bench_pulse becomes 1 where the bench command of this cycle is accepted. Returns status bits. */
 uint32_t mrd_obey(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs, uint16_t *bench_pulse);
 
-/* One cycle of DAMPING: 1 if the tumble grows. */
-uint16_t mrd_judge_progress(mrd_progress *progress, const mrd_supervisor_config *config, const mrd_estimate_trace *estimate);
+/* One cycle of DAMPING, after so many trips: 1 if the tumble grows, or after a trip does not shrink. */
+uint16_t mrd_judge_progress(mrd_progress *progress, const mrd_supervisor_config *config, uint16_t trips,
+                            const mrd_estimate_trace *estimate);
 
 /* One transition. Returns status bits. */
 uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, const mrd_inputs *inputs,

@@ -48,6 +48,6 @@ class SwapCoils(Span):
 
 @dataclass(frozen=True)
 class StaysOn(Span):
-    """A coil is not switched off after its next pulse, hence not stamped either; at the end it is both."""
+    """A coil is not switched off after its next pulse, hence not stamped either: it stays on up to the sample of `end`, and is stamped after."""
 
     coil: int = 0

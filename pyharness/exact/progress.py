@@ -31,8 +31,8 @@ def exceeds_share(peak: int, earlier: int, share: int) -> bool:
     return earlier != 0 and grown > allowed
 
 
-def watch(progress: Record, supervisor: Record, estimate: Record) -> tuple[Record, int]:
-    """One cycle of DAMPING. Returns the new progress, and whether a window has just ended in divergence."""
+def watch(progress: Record, supervisor: Record, trips: int, estimate: Record) -> tuple[Record, int]:
+    """One cycle of DAMPING, after so many trips. Returns the new progress, and whether a window has just ended in divergence."""
     if estimate["across_valid"]:
         progress = take(progress, estimate["turn"])
     window = check("progress.window", progress["window"] + 1)
@@ -40,6 +40,7 @@ def watch(progress: Record, supervisor: Record, estimate: Record) -> tuple[Recor
         return {**progress, "window": window}, 0
     present, last, before = progress["peak"]
     stalled = present > supervisor["stall_turn"] and exceeds_share(present, before, supervisor["progress"])
-    diverging = present > supervisor["guard_turn"] and exceeds_share(present, last, supervisor["growth"])
+    grown = exceeds_share(present, last, supervisor["growth"])
+    diverging = present > supervisor["guard_turn"] and (grown or (trips and stalled))
     ended = {**progress, "window": 0, "peak": (0, present, last), "in_four": 0, "stalled": flag(stalled)}
     return ended, flag(diverging)

@@ -211,7 +211,7 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     status |= raised
     progress, diverging = no_progress_yet(), 0
     if state["mode"] == MRD_MODE_DAMPING:
-        progress, diverging = watch(state["progress"], supervisor, part)
+        progress, diverging = watch(state["progress"], supervisor, state["trips"], part)
     now = Standing(state["mode"], state["dwell"], state["trips"])
     seen = Seen(rate, rate_valid, status >> MRD_S_ESTIMATE_FELL_BACK & 1, diverging)
     after = advance(now, state["inhibit_commanded"], supervisor, inputs, seen)

@@ -153,7 +153,7 @@ def _span(kind: type, **values: object) -> Inject:
 
 def _jump(s: Setting) -> tuple[Event, ...]:
     most_ut = math.sqrt(s.path["jump_max_sq"]) * s.scaling.field_t * 1e6
-    return (AddCounts(s.first, s.end, every=11, offset=(s.field_counts(1.1 * most_ut + 1.0), 0, 0)),)
+    return (AddCounts(s.first, s.end, every=11, offset=(s.field_counts(2.2 * most_ut + 1.0), 0, 0)),)
 
 
 def _implausible(s: Setting) -> tuple[Event, ...]:
@@ -211,8 +211,9 @@ def _fast_tip_off(flight: Flight) -> Flight:
 
 
 def _mag(name: str, shows: str, inject: Inject, within: Within, does: str = "rejects the samples, no pulse",
-         recovers: str = "2 cycles after the first good sample", lasting: frozenset[Outcome] = HELD) -> Fault:  # fmt: skip
-    return Fault(name, shows, inject, within, does, recovers, "mag_faults", passing=SETTLES, lasting=lasting, holds=True)
+         recovers: str = "2 cycles after the first good sample", lasting: frozenset[Outcome] = HELD,
+         counter: str = "mag_faults") -> Fault:  # fmt: skip
+    return Fault(name, shows, inject, within, does, recovers, counter, passing=SETTLES, lasting=lasting, holds=True)
 
 
 def _gyro(name: str, shows: str, inject: Inject, within: Within, recovers: str) -> Fault:
@@ -224,8 +225,9 @@ def _coil(name: str, shows: str, inject: Inject, within: Within, does: str, last
     return Fault(name, shows, inject, within, does, recovers, counter, lasting=lasting, orbits=3.2)
 
 
-def _time(name: str, shows: str, inject: Inject, within: Within, does: str, recovers: str, holds: bool = False) -> Fault:
-    return Fault(name, shows, inject, within, does, recovers, "time_faults", passing=SETTLES, holds=holds)
+def _time(name: str, shows: str, inject: Inject, within: Within, does: str, recovers: str, holds: bool = False,
+          counter: str = "time_faults") -> Fault:  # fmt: skip
+    return Fault(name, shows, inject, within, does, recovers, counter, passing=SETTLES, holds=holds)
 
 
 def _upset(name: str, shows: str, inject: Inject, within: Within, does: str, recovers: str, counter: str, passing: frozenset[Outcome],
@@ -234,7 +236,7 @@ def _upset(name: str, shows: str, inject: Inject, within: Within, does: str, rec
 
 
 FAULTS: tuple[Fault, ...] = (
-    _mag("MAG_MISSING", "SAMPLE_MISSING", _span(DropSample), AT_ONCE, "rejects the cycle, no pulse"),
+    _mag("MAG_MISSING", "SAMPLE_MISSING", _span(DropSample), AT_ONCE, "rejects the cycle, no pulse", counter="rejected"),
     _mag("MAG_FROZEN", "MAG_FROZEN", _span(HoldCounts), Within("frozen_limit", lambda s: s.path["frozen_limit"]),
          "rejects the samples, no pulse; until it shows, the derivative is 0"),
     _mag("MAG_OUT_OF_RANGE", "MAG_RANGE", _span(SetAxis, axis=0, count=-32768), AT_ONCE),
@@ -265,10 +267,12 @@ FAULTS: tuple[Fault, ...] = (
           "2 cycles after the stamp", "coil_faults", passing=SETTLES, lasting=HELD, holds=True),
     _time("TIME_LATE", "SAMPLE_OFF_TIME", _off_time(1), AT_ONCE, "rejects the samples, no pulse", "2 cycles after the last", holds=True),
     _time("TIME_EARLY", "SAMPLE_OFF_TIME", _off_time(-1), AT_ONCE, "rejects the samples, no pulse", "2 cycles after the last", holds=True),
-    _time("TIME_REPEATED", "SWITCH_OFF_UNSTAMPED INTERVAL_SHORT", _span(RepeatInputs, every=3), AT_ONCE, "no derivative from the repeated sample", "with the next cycle"),
+    _time("TIME_REPEATED", "SWITCH_OFF_UNSTAMPED INTERVAL_SHORT", _span(RepeatInputs, every=3), AT_ONCE, "no derivative from the repeated sample", "with the next cycle",
+          counter="coil_faults"),
     _time("TIME_FORWARD", "INTERVAL_LONG", lambda s: (SetClock(s.first, us=37_000_000),), AT_ONCE, "no derivative across the jump", "1 cycle after the jump"),
     _time("TIME_BACKWARD", "BLANKED INTERVAL_LONG", lambda s: (SetClock(s.first, us=-37_000_000),), AT_ONCE,
-          "trusts no sample while a switch-off seems to lie ahead, no pulse", "when the clock has caught up, or the coils are stamped anew"),
+          "trusts no sample while a switch-off seems to lie ahead, no pulse", "when the clock has caught up, or the coils are stamped anew",
+          counter="blanked"),
     Fault("TIME_WRAP", "", lambda s: (), Within("does not show"), "takes every difference of stamps mod 2^32", "goes on", "",
           passing=frozenset({Outcome.AS_WITHOUT}), start=_wrapping),
     _upset("FLIP_STATE", "STATE_RESTARTED", lambda s: (FlipBit(s.first, "state", "path.field[0]", 9),), AT_ONCE,

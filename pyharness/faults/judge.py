@@ -73,7 +73,8 @@ def _outcome(case: Case, flown: Watched, nominal: Watched, told: int | None) -> 
 def _settled(flown: Watched, nominal: Watched, period_s: float) -> tuple[Outcome, float]:
     """Settled for good in the last cycle that came from another mode."""
     left = np.flatnonzero(flown.mode != mrd.MRD_MODE_SETTLED)
-    later_s = (int(left[-1]) + 1 - nominal.first(mrd.MRD_MODE_SETTLED)) * period_s
+    since = int(left[-1]) + 1 if left.size else 0
+    later_s = (since - nominal.first(mrd.MRD_MODE_SETTLED)) * period_s
     return (Outcome.AS_WITHOUT if later_s <= AS_WITHOUT_S else Outcome.LATER), later_s
 
 

@@ -97,5 +97,5 @@ def _orbits(fault: Fault, scaling: Scaling) -> float:
     supervisor = scaling.config["supervisor"]
     orbit = Setting(scaling, 0, 0).orbit
     trips = supervisor["retries"] + 1
-    cycles = trips * (2 * supervisor["window_cycles"] + 4) + supervisor["retries"] * supervisor["pause_cycles"]
+    cycles = trips * (3 * supervisor["window_cycles"] + 4) + supervisor["retries"] * supervisor["pause_cycles"]
     return cycles / orbit + 0.5

@@ -420,13 +420,14 @@ def _currents(inputs: np.ndarray, config: Config, seed: int) -> None:
 
 
 def _progress(inputs: np.ndarray, config: Config, seed: int) -> None:
-    """A field that turns ever faster, slower, and hardly: windows of eight cycles, pauses of four, one retry, then safe."""
+    """A field that turns ever faster, then evenly: windows of eight cycles, pauses of four, one retry, then safe."""
     row = np.arange(len(inputs))
     turn = np.zeros(len(inputs), dtype=np.int64)
-    for first, end, step in ((0, 8, 560), (8, 40, 600), (40, 60, 700), (60, 80, 800), (80, 96, 900), (100, 180, 400), (180, 260, 40)):
+    for first, end, step in ((0, 8, 560), (8, 40, 600), (40, 60, 700), (60, 80, 800), (80, 96, 900), (100, 180, 400)):
         turn[first:end] = step + 8 * (row[first:end] - first)
+    turn[180:] = 300  # the same from window to window: no progress
     inputs["path"]["mag_raw"][:, 0] = QUIET_FIELD[0] + np.where(row % 2 == 0, turn, -turn)
-    inputs["command"][97] = mrd.MRD_COMMAND_RESUME
+    inputs["command"][[97, 182]] = mrd.MRD_COMMAND_RESUME
     inputs["low_power"][140:143] = 1
 
 
@@ -463,7 +464,7 @@ UNIT = (
          overrides={"control": {"law": "rate"}, "current_sense": _SENSE}),
     Unit("progress", "modes: peaks from window to window, divergence, pause, retries, no progress", 260, _progress,
          overrides={"gyro": None, "control": {"settle_by": "field"}, "body": {"tip_off_deg_s": [10.0, 0.0, 0.0]},
-                    "defence": {"window_s": 4.0, "pause_s": 2.0, "retries": 1, "growth_percent": 5.0}}),
+                    "defence": {**_BARE, "window_s": 4.0, "pause_s": 2.0, "retries": 1, "growth_percent": 5.0}}),
     Unit("modes", "modes: every command in every mode, with and without low power; hold-off runs out at the end", 360, _modes),
     Unit("random-derivative", "whole steps of the derivative law, drawn", 500, _random, seed=101),
     Unit("random-rate", "whole steps of the rate-damping law, drawn", 500, _random, seed=102, overrides=_RATE),

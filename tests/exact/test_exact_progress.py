@@ -22,12 +22,12 @@ from pyharness.exact.progress import no_progress_yet, watch
 DAMPING, PAUSE, SAFE = MRD_MODE_DAMPING, MRD_MODE_PAUSE, MRD_MODE_SAFE
 
 
-def watched(estimates, begun=None, **supervisor):
+def watched(estimates, begun=None, trips=0, **supervisor):
     """Progress after these estimates, None for none, and the cycles in which the damping diverged."""
     progress, diverged = {**no_progress_yet(), **(begun or {})}, []
     for cycle, turn in enumerate(estimates):
         part = {"turn": turn or 0, "across": 0, "across_valid": int(turn is not None)}
-        progress, diverging = watch(progress, {**SUPERVISOR, **supervisor}, part)
+        progress, diverging = watch(progress, {**SUPERVISOR, **supervisor}, trips, part)
         diverged += [cycle] if diverging else []
     return progress, diverged
 
@@ -49,6 +49,17 @@ def test_peaks_by_hand(estimates, window, peaks):
     assert progress["peak"] == peaks
     assert progress["window"] == len(estimates) % window
     assert progress["in_four"] == (0 if progress["window"] == 0 else len(estimates) % 4)
+
+
+@pytest.mark.parametrize(("trips", "peak", "earlier", "diverges"), [
+    (0, 451, 500, False), (1, 451, 500, True), (65535, 451, 500, True),  # progress 230: 451 · 256 > 230 · 500
+    (1, 449, 500, False), (1, 250, 250, False), (1, 251, 251, True), (1, 500, 0, False),  # guard_turn 250
+])
+def test_after_a_trip_no_progress_is_divergence(trips, peak, earlier, diverges):
+    """Two windows of four turns; peak₂ is the peak of the window before both."""
+    begun = {"peak": (0, peak, earlier)}
+    _, diverged = watched((peak,) * 4, begun, trips, window_cycles=4, growth=1024, progress=230)
+    assert diverged == ([3] if diverges else [])
 
 
 @pytest.mark.parametrize(("before", "peak", "changes", "diverges"), [

@@ -123,7 +123,7 @@ KNOWN = {**path_state(), "field_valid": 1, "sample_us": 1_040_000}
         path_config(agree_limit=1), path_inputs(), 0)),
     ("agreement.residual", lambda: residual_of({"agree_mantissa": 65535, "agree_shift": 0}, (0, 0, 0),
         (0, 32767, -32767), (0, 32767, 32767))),
-    ("progress.window", lambda: watch({**no_progress_yet(), "window": 2**32 - 1}, SUPERVISOR,
+    ("progress.window", lambda: watch({**no_progress_yet(), "window": 2**32 - 1}, SUPERVISOR, 0,
         {"turn": 0, "across": 0, "across_valid": 0})),
     ("inputs.path.mag_raw", lambda: path_sense(path_reset(), path_config(),
         path_inputs(mag_raw=(32768, 0, 0)), 0)),
