@@ -36,6 +36,7 @@ if TYPE_CHECKING:
     from pyharness.loop import Flight
 
 WRAP = 2**32
+_SICK = (SickCoil, SwapCoils, StaysOn)
 Kind = TypeVar("Kind")
 
 
@@ -59,7 +60,6 @@ class Host:
         self._stuck = np.zeros((3, self._n))  # coils that stay on, with their sign
         self._events = [(i, event) for i, flight in enumerate(flights) for event in flight.events]
         self._by_kind: dict[type, list] = {}
-        self._any_sick = any(self._of(kind) for kind in (SickCoil, SwapCoils, StaysOn))
 
     def _of(self, kind: type[Kind]) -> list[tuple[int, Kind]]:
         """The events of a kind, with their spacecraft."""
@@ -164,8 +164,8 @@ class Host:
                 late[event.coil, i] = event.ticks
 
     def health(self, ticks: np.ndarray, cycle: int) -> CoilHealth | None:
-        """What coils and drivers make of the pulses (3, N) of this cycle; None where no coil is ever sick."""
-        if not self._any_sick:
+        """What coils and drivers make of the pulses (3, N) of this cycle; None where no coil is sick."""
+        if not any(self._now(kind, cycle) for kind in _SICK) and not self._stuck.any():
             return None
         health = CoilHealth.nominal(self._n)
         for i, event in self._now(SickCoil, cycle):

@@ -137,7 +137,7 @@ FAULTY = (
     _fault("COIL_BACKWARD", 60, 20, _SENSE), _fault("COIL_STAYS_ON", 30, 20), _fault("TIME_LATE", 10, 10), _fault("TIME_EARLY", 10, 10),
     _fault("TIME_REPEATED", 30, 10), _fault("TIME_FORWARD", 1, 20), _fault("TIME_BACKWARD", 1, 100), _fault("FLIP_INPUT", 1, 20),
     _fault("COMMAND_ILLEGAL", 1, 20), _fault("WRONG_SIGN", 400, 60, _SHORT_WINDOWS, rate_deg_s=(14.0, -13.0, 15.0)),
-    _fault("TOO_FAST", 160, 10, _SHORT_WINDOWS), _fault("TIP_OFF", 60, 10),
+    _fault("TOO_FAST", 160, 10, _SHORT_WINDOWS), _fault("TIP_OFF", 60, 10, orbit_s=1400.0),
 )  # fmt: skip
 """The faults that show in inputs, passing where they can."""
 

@@ -112,19 +112,25 @@ def _row(result: Result) -> tuple[str, ...]:
     )  # fmt: skip
 
 
+def flip_bits(scaling: Scaling, controller: CController) -> list[Tally]:
+    """Every bit flipped along the flight without a fault, with a progress bar."""
+    flight = nominal_flight(scaling)
+    with progress("recording", flight.cycles) as bar:
+        (record,) = fly([flight], controller, bar.update)
+    tallies = []
+    with progress("flipping", None, "flip") as bar:
+        for tally in flip_every_bit(record, controller):
+            tallies.append(tally)
+            bar.update(tally.tried)
+    return tallies
+
+
 def _bits(scaling: Scaling, controller: Controller, asked: bool) -> bool:
     if not isinstance(controller, CController):
         if asked:
             raise UsageError(f"--bits: {controller.name} is too slow for it, must be c or lib:PATH")
         return True
-    flight = nominal_flight(scaling)
-    with progress("recording", flight.cycles) as bar:
-        (record,) = fly([flight], controller, bar.update)
-    with progress("flipping", None, "flip") as bar:
-        tallies = []
-        for tally in flip_every_bit(record, controller):
-            tallies.append(tally)
-            bar.update(tally.tried)
+    tallies = flip_bits(scaling, controller)
     print("\n" + table([("moment", "bits of", "flipped", "caught at once", "no effect", "forgotten", "longest", "to the end", ""), *map(_tally, tallies)]))
     for tally in tallies:
         for example in tally.examples:

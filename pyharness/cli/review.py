@@ -18,14 +18,11 @@ from pyharness.cli.common import (
     replay,
     shown,
 )
-from pyharness.cli.faults import fly_faults
+from pyharness.cli.faults import flip_bits, fly_faults
 from pyharness.compare import compare_with_truth
 from pyharness.controllers import CController, load_controller
-from pyharness.faults import nominal_flight
-from pyharness.faults.bits import flip_every_bit
 from pyharness.loop import fly
 from pyharness.review import FaultsFlown, Flown, ReviewData, review_data, write_page
-from pyharness.scaling import Scaling
 from pyharness.scenarios import LONG
 from pyharness.vectors import Verdict, find_vectors
 from pyharness.vectors.digests import known_digests, verdict
@@ -58,7 +55,10 @@ def run(options: argparse.Namespace) -> int:
     find_vectors(folder)  # before the long flight: without vectors there is nothing to sign
     flights, digests = _fly(options.mission, controller, folder)
     vectors = [*replay(folder, controller, options.mission), *digests]
-    faults = _faults(flights[0].scaling, controller) if options.faults else None
+    faults = None
+    if options.faults:
+        scaling = flights[0].scaling
+        faults = FaultsFlown(fly_faults(scaling, controller), tuple(flip_bits(scaling, controller)), controller.interface.header)
     data = review_data(flights, vectors, _command(options), faults=faults)
     write_page(data, Path(options.out))
     _tell(data, folder)
@@ -79,19 +79,6 @@ def _fly(mission_path: str, controller: CController, folder: Path) -> tuple[list
     # The same flights, hashed: they must be the ones that the exact model flew when the vectors were written.
     contents = known_digests(folder, records)
     return flown, [verdict(content, record) for content, record in contents]
-
-
-def _faults(scaling: Scaling, controller: CController) -> FaultsFlown:
-    matrix = fly_faults(scaling, controller)
-    flight = nominal_flight(scaling)
-    with progress("recording", flight.cycles) as bar:
-        (record,) = fly([flight], controller, bar.update)
-    tallies = []
-    with progress("flipping", None, "flip") as bar:
-        for tally in flip_every_bit(record, controller):
-            tallies.append(tally)
-            bar.update(tally.tried)
-    return FaultsFlown(matrix, tuple(tallies), controller.interface.header)
 
 
 def _command(options: argparse.Namespace) -> str:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from functools import cache
 from typing import Literal
 
 import numpy as np
@@ -66,7 +67,7 @@ def bit_moments(record: Record) -> list[Moment]:
         Moment("hold-off", int(found[mrd.MRD_MODE_HOLD_OFF][-1]) // 2),
         Moment("first pulses", int(damping[0]) + 20),
         Moment("damping", middle),
-        Moment("dwell", int(settled[0]) - 50),
+        Moment("dwell", int(settled[0]) - record.flight.scaling.config["supervisor"]["settle_dwell"] // 2),
         Moment("settled", int(settled[0]) + 50),
         Moment("inhibited", middle, (mrd.MRD_COMMAND_INHIBIT,)),
         Moment("safe", middle, (mrd.MRD_COMMAND_SAFE,)),
@@ -113,6 +114,7 @@ class _Situation:
         return outputs
 
 
+@cache
 def _flips(dtype: np.dtype) -> list[tuple[str, int]]:
     """Every bit of every integer of a record; padding has no name."""
     zero = np.zeros(1, dtype)

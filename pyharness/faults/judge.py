@@ -40,7 +40,7 @@ class Result:
         if self.outcome is Outcome.LATER:
             return f"settled {self.later_s:.0f} s later"
         if self.outcome is Outcome.SAFE:
-            return f"safe within {self.later_s:.0f} s"
+            return f"safe within {self.later_s:.0f} s" if self.later_s else "safe at once"
         return self.outcome.value
 
 

@@ -21,8 +21,8 @@ def c() -> CController:
 
 
 def record_of(c: CController, **control: object) -> Record:
-    scaling = scale(load_mission(demo_path(), {"control": {"dwell_s": 30.0, "hold_off_s": 5, **control}}))
-    (record,) = fly([Flight(scaling, 500, rate_deg_s=(0.9, -0.7, 0.5), separation_s=0)], c)
+    scaling = scale(load_mission(demo_path(), {"control": {"dwell_s": 120.0, "hold_off_s": 5, **control}}))
+    (record,) = fly([Flight(scaling, 700, rate_deg_s=(0.9, -0.7, 0.5), separation_s=0)], c)
     return record
 
 

@@ -79,7 +79,7 @@ def test_another_end_fails(matrix, nominal, c):
     safe = of(matrix, "FLIP_CONFIG", "half-way")
     assert safe.outcome is Outcome.SAFE
     other = replace(safe.case, fault=replace(safe.case.fault, passing=frozenset({Outcome.LATER})))
-    assert judge(other, flown(safe, c), nominal).problems == ("ended as 'safe within 0 s', declared: settled later",)
+    assert judge(other, flown(safe, c), nominal).problems == ("ended as 'safe at once', declared: settled later",)
 
 
 def test_a_coil_driven_while_the_fault_shows_fails(matrix, nominal, c):

@@ -110,7 +110,7 @@ def test_the_scenarios_reach_what_they_are_for(flown):
     assert modes == set(interface.header.named("MRD_MODE_"))
     woken = records["settled-and-woken"].outputs["mode"]
     assert [interface.mode_name(int(m)) for m in woken[np.r_[True, np.diff(woken.astype(int)) != 0]]] == [
-        "damping", "settled", "damping", "settled"]  # fmt: skip
+        "hold-off", "damping", "settled", "damping", "settled"]  # fmt: skip
     laws = records["gyro-loss"].outputs["trace"]["law"]["active"]
     assert {1, 2} <= set(np.unique(laws).tolist())
     wrapped = records["stamp-wrap"].inputs["path"]["sample_us"].astype(int)
