@@ -172,7 +172,7 @@ enum {
     MRD_F_MODE_ILLEGAL = 31,      /* computer: mode value that is none, under a right digest */
     MRD_F_WRONG_SIGN = 32,        /* divergence: all coils the wrong way round */
     MRD_F_TOO_FAST = 33,          /* divergence: tumble too fast for the cycle */
-    MRD_F_TIP_OFF = 34,           /* divergence: tip-off twice as fast as foreseen */
+    MRD_F_TIP_OFF = 34,           /* divergence: tip-off three times as fast as foreseen */
     MRD_F_COUNT = 35
 };
 

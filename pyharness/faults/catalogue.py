@@ -204,7 +204,7 @@ def _too_fast(flight: Flight) -> Flight:
 
 
 def _fast_tip_off(flight: Flight) -> Flight:
-    return replace(flight, rate_deg_s=tuple(2.0 * rate for rate in flight.scaling.mission.body.tip_off_deg_s))
+    return replace(flight, rate_deg_s=tuple(3.0 * rate for rate in flight.scaling.mission.body.tip_off_deg_s))
 
 
 # ---- the list ----
@@ -280,8 +280,8 @@ FAULTS: tuple[Fault, ...] = (
     _upset("FLIP_CONFIG", "CONFIG_CORRUPT", lambda s: (FlipBit(s.first, "config", "path.derivative_gain.mantissa[1]", 3),), AT_ONCE,
            "safe, for as long as it is corrupt and after", "by command RESUME, once it is right", "corrupt", frozenset({Outcome.SAFE}), True),
     _upset("FLIP_INPUT", "", lambda s: (FlipBit(s.first, "inputs", "path.mag_raw[1]", 7),), Within("need not show"),
-           "takes it where it looks valid; no pulse beyond its limit", "after 3 cycles, and the memory of the low-pass", "",
-           frozenset({Outcome.AS_WITHOUT})),
+           "takes it where it looks valid; no pulse beyond its limit", "after 3 cycles, and the memory of the low-pass; a dwell may begin anew", "",
+           SETTLES),
     _upset("RESTART", "BLANKED", lambda s: (RestartController(s.first),), AT_ONCE, "begins anew; hold-off counts from separation, not from the restart",
            "4 cycles after the restart", "blanked", SETTLES, True),
     _upset("COMMAND_ILLEGAL", "COMMAND_REFUSED", lambda s: (Command(s.first, 1), Command(s.first + 1, 65535)), AT_ONCE, "refuses it", "goes on", "refused",

@@ -44,11 +44,19 @@ def fly_matrix(
 ) -> Matrix:
     """Fly and judge the cases. `progress(n)` is told of n more cycles flown, of all flights together."""
     results: dict[int, Result] = {}
-    # Flights of like length share a batch: a long one flies on alone.
-    by_length = sorted(range(len(cases)), key=lambda i: -cases[i].flight.cycles)
-    for start in range(0, len(cases), BATCH):
-        batch = by_length[start : start + BATCH]
+    for batch in _batches(cases):
         flown = watch([cases[i].flight for i in batch], controller, progress)
         for i, one in zip(batch, flown, strict=True):
             results[i] = judge(cases[i], one, nominal)
     return Matrix(nominal, tuple(results[i] for i in range(len(cases))))
+
+
+def _batches(cases: Sequence[Case]) -> list[list[int]]:
+    """Cases of like length together: a batch costs as if all were as long as its longest."""
+    batches: list[list[int]] = []
+    for i in sorted(range(len(cases)), key=lambda i: -cases[i].flight.cycles):
+        if batches and len(batches[-1]) < BATCH and cases[i].flight.cycles > 0.8 * cases[batches[-1][0]].flight.cycles:
+            batches[-1].append(i)
+        else:
+            batches.append([i])
+    return batches

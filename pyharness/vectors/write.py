@@ -23,14 +23,17 @@ def make_vectors(
 ) -> dict[str, str]:
     """The content of every file, by its path within the folder ("loop/nominal.csv").
 
-    All scenarios are flown in one batch, with the exact model in the loop. `progress(done, total)` counts cycles.
+    The short scenarios are flown in one batch, the long ones in another, with the exact model in the loop. `progress(done, total)`
+    counts cycles.
     Raises MissionError if a scenario's overrides do not fit the mission, naming the scenario.
     """
-    scenarios = [*LOOP, *FAULTY, *(LONG if long_flights else ())]
+    long = len(LONG) if long_flights else 0
+    scenarios = [*LOOP, *FAULTY, *LONG[:long]]
     flights = [_named(scenario, lambda s=scenario: s.flight(mission_path)) for scenario in scenarios]
     units = [(unit, _named(unit, lambda u=unit: u.scaling(mission_path))) for unit in UNIT]
 
-    total, done = max(flight.cycles for flight in flights), 0
+    batches = [batch for batch in (flights[: len(flights) - long], flights[len(flights) - long :]) if batch]
+    total, done = sum(max(flight.cycles for flight in batch) for batch in batches), 0
 
     def advance(cycles: int) -> None:
         nonlocal done
@@ -38,7 +41,7 @@ def make_vectors(
         if progress:
             progress(done, total)
 
-    records = fly(flights, ExactController(interface), advance)
+    records = [record for batch in batches for record in fly(batch, ExactController(interface), advance)]
     files = {}
     for unit, scaling in units:
         controller = ExactController(interface)
