@@ -229,7 +229,7 @@ typedef struct {
     uint32_t phase_us;               /* us, mid-sample after the start of the cycle */
     uint32_t tolerance_us;           /* us, largest departure of mid-sample from phase_us */
     uint32_t half_sample_us;         /* us, half the sample length */
-    uint32_t delay_us;               /* us, from mid-sample to the start of the drive window */
+    uint32_t delay_us;               /* us, from the nominal mid-sample, at phase_us, to the start of the drive window */
     uint32_t blanking_us[3];         /* us, least age of each coil's switch-off at the start of a sample */
     uint16_t tick_us;                /* us, of the pulse timer */
     int16_t window_ticks;            /* ticks in the drive window: 1..16384 */

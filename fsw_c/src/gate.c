@@ -24,17 +24,21 @@ static uint16_t stamps_pulse(const mrd_path_state *state, uint32_t stamp_us, uin
 }
 
 /*
- * A pulse that began more than 2^30 us ago is over, and one that lies ahead was commanded before the clock was set back: in
- * both cases a stamp of the present time is taken.
+ * A pulse that began more than 2^30 us ago is over, and one that lies ahead by more than a period was commanded before the
+ * clock was set back: in both cases a stamp of the present time is taken. The stamp is judged as it stands first.
  */
-static void age_pending(mrd_path_state *state, uint32_t cycle_start_us)
+static void take_stamp(mrd_path_state *state, const mrd_path_config *config, uint32_t cycle_start_us, uint32_t stamp_us, uint16_t i)
 {
-    uint16_t i;
+    uint32_t since_us = cycle_start_us - state->drive_us[i];
 
-    for (i = 0; i < 3u; i++) {
-        if (state->pending[i] && cycle_start_us - state->drive_us[i] > MRD_BIT(30)) {
-            state->drive_us[i] = cycle_start_us - MRD_BIT(30);
-        }
+    if (!state->pending[i]) {
+        return;
+    }
+    if (!stamps_pulse(state, stamp_us, i) && since_us > MRD_BIT(30) && since_us < (uint32_t)0 - config->period_us) {
+        state->drive_us[i] = cycle_start_us - MRD_BIT(30);
+    }
+    if (stamps_pulse(state, stamp_us, i)) {
+        state->pending[i] = 0;
     }
 }
 
@@ -45,9 +49,6 @@ static uint32_t gate_coil(mrd_path_state *state, uint32_t stamp_us, uint32_t bla
     uint16_t was_clear = stamp_us == state->switch_off_us[i] && state->off_clear[i];
 
     *clear = 0;
-    if (state->pending[i] && stamps_pulse(state, stamp_us, i)) {
-        state->pending[i] = 0;
-    }
     state->switch_off_us[i] = stamp_us;
     if (!state->off_known || state->pending[i]) {
         state->off_clear[i] = 0;
@@ -76,11 +77,11 @@ uint32_t mrd_gate(mrd_path_state *state, const mrd_path_config *config, const mr
     if (have_sample && !timed) {
         status |= MRD_BIT(MRD_S_SAMPLE_OFF_TIME);
     }
-    age_pending(state, inputs->cycle_start_us);
     for (i = 0; i < 3u; i++) {
         uint16_t clear;
 
         trace->age_us[i] = start_us - inputs->switch_off_us[i];
+        take_stamp(state, config, inputs->cycle_start_us, inputs->switch_off_us[i], i);
         status |= gate_coil(state, inputs->switch_off_us[i], config->blanking_us[i], timed,
                             currents->fault[i] == MRD_COIL_ON, i, &trace->age_us[i], &clear);
         if (!clear && have_sample) {

@@ -187,6 +187,13 @@ static uint16_t next_mode(mrd_state *state, const mrd_supervisor_config *config,
     }
 }
 
+/* Low power once an orbit must not blind the guard. */
+static uint16_t keeps_progress(const mrd_state *state)
+{
+    return state->mode == MRD_MODE_DAMPING || state->mode == MRD_MODE_HOLD_OFF
+           || (state->mode == MRD_MODE_INHIBIT && !state->inhibit_commanded);
+}
+
 static uint32_t told(const mrd_state *state, uint16_t diverging)
 {
     uint32_t status = 0;
@@ -219,7 +226,7 @@ uint32_t mrd_change_mode(mrd_state *state, const mrd_supervisor_config *config, 
     if (state->mode != before) {
         state->dwell = 0;
     }
-    if (state->mode != MRD_MODE_DAMPING) {
+    if (!keeps_progress(state)) {
         state->progress = anew;
     }
     return told(state, diverging);

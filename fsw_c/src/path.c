@@ -80,13 +80,15 @@ uint32_t mrd_path_drive(const mrd_path_config *config, mrd_trace *trace)
 void mrd_path_commit(mrd_path_state *state, const mrd_path_config *config, const mrd_path_inputs *inputs,
                      const int16_t ticks[3])
 {
+    uint32_t opens_us = config->phase_us + config->delay_us;
+    uint32_t earliest_us = opens_us > config->tolerance_us ? opens_us - config->tolerance_us : 0u; /* below 2e7 */
     uint16_t i;
 
     for (i = 0; i < 3u; i++) {
         state->ticks[i] = ticks[i];
         if (ticks[i] != 0) {
             state->pending[i] = 1;
-            state->drive_us[i] = inputs->cycle_start_us + config->phase_us + config->delay_us;
+            state->drive_us[i] = inputs->cycle_start_us + earliest_us;
         }
     }
 }

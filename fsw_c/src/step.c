@@ -15,7 +15,8 @@ void mrd_reset(mrd_state *state)
 static uint32_t restart_if_corrupt(mrd_state *state)
 {
     uint16_t mode = state->mode;
-    uint16_t inhibited = mode == MRD_MODE_INHIBIT && state->inhibit_commanded;
+    uint16_t flags = state->inhibit_commanded;
+    uint16_t inhibited = mode == MRD_MODE_INHIBIT && (flags & (uint16_t)(flags - 1u)) != 0u; /* at least two bits */
     uint16_t restarts = state->counters.restarts;
 
     if (state->digest == mrd_state_digest(state)) {

@@ -36,15 +36,25 @@ class Coil(NamedTuple):
     drive_us: int
 
 
-def earliest_stamp(state: Record, cycle_start: int, i: int) -> int:
-    """drive_us of coil i, moved to 2^30 us ago in two cases, so that a stamp of the present time is taken.
+def stamped(stamp: int, before: int, drive: int) -> bool:
+    """Whether a stamp is new, and from after the earliest time at which the pulse may have been on."""
+    since_drive = check("gate.since_drive_us", (stamp - drive) % WRAP)
+    return stamp != before and since_drive <= OLD
 
-    A pulse that began longer ago is over; one that lies ahead was commanded before the clock was set back.
+
+def take_stamp(state: Record, config: Record, stamp: int, cycle_start: int, i: int) -> tuple[int, int]:
+    """Whether coil i is still pending, and its drive_us.
+
+    A pulse that began more than 2^30 us ago is over; one that lies ahead by more than a period was commanded
+    before the clock was set back: both then take a stamp of the present time.
     """
-    since_start = check("gate.since_start_us", (cycle_start - state["drive_us"][i]) % WRAP)
-    if state["pending"][i] and since_start > 2**30:
-        return (cycle_start - 2**30) % WRAP
-    return state["drive_us"][i]
+    drive, before = state["drive_us"][i], state["switch_off_us"][i]
+    if not state["pending"][i]:
+        return 0, drive
+    since_start = check("gate.since_start_us", (cycle_start - drive) % WRAP)
+    if not stamped(stamp, before, drive) and 2**30 < since_start < WRAP - config["period_us"]:
+        drive = (cycle_start - 2**30) % WRAP
+    return flag(not stamped(stamp, before, drive)), drive
 
 
 def blanking(
@@ -58,10 +68,7 @@ def blanking(
     """
     age = (start - stamp) % WRAP
     fresh = stamp != state["switch_off_us"][i]
-    drive = earliest_stamp(state, cycle_start, i)
-    since_drive = check("gate.since_drive_us", (stamp - drive) % WRAP)
-    stamped = fresh and since_drive <= OLD
-    pending = flag(state["pending"][i] and not stamped)
+    pending, drive = take_stamp(state, config, stamp, cycle_start, i)
     if not state["off_known"]:
         return Coil(age, clear=0, unstamped=0, off_clear=0, pending=pending, drive_us=drive)
     if pending:

@@ -13,7 +13,7 @@ from pyharness.exact.fields import PATH_STATE, TRACE, zeros
 from pyharness.exact.gate import admit
 from pyharness.exact.law import command_demand
 from pyharness.exact.low_pass import smooth
-from pyharness.exact.num import WRAP, Record, Vector, select
+from pyharness.exact.num import WRAP, Record, Vector, select, vmax
 from pyharness.exact.plausibility import assess
 from pyharness.exact.pulses import make_pulses
 from pyharness.exact.ranges import check, check3
@@ -128,7 +128,8 @@ def path_restore(state: Record) -> Record:
 
 def path_commit(state: Record, config: Record, inputs: Record, ticks: Vector) -> Record:
     """The state that keeps the pulses really to be made in this cycle and waits for the end of each."""
-    opens = (inputs["cycle_start_us"] + config["phase_us"] + config["delay_us"]) % WRAP
+    earliest = vmax(0, config["phase_us"] + config["delay_us"] - config["tolerance_us"])
+    opens = (inputs["cycle_start_us"] + earliest) % WRAP
     drive_x, drive_y, drive_z = state["drive_us"]
     pending_x, pending_y, pending_z = state["pending"]
     x, y, z = check3("commit.ticks", ticks)

@@ -88,7 +88,7 @@ def restart(state: Record) -> Record:
     before, mode, inhibit_commanded = state["mode"], MRD_MODE_HOLD_OFF, 0
     if before not in MODES or before in (MRD_MODE_SAFE, MRD_MODE_BENCH):
         mode = MRD_MODE_SAFE
-    elif before == MRD_MODE_INHIBIT and state["inhibit_commanded"]:
+    elif before == MRD_MODE_INHIBIT and state["inhibit_commanded"].bit_count() >= 2:
         mode, inhibit_commanded = MRD_MODE_INHIBIT, COMMANDED
     elif before == MRD_MODE_PAUSE:
         mode = MRD_MODE_PAUSE
@@ -209,7 +209,7 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     status |= raised
     trace, raised = path_drive(path_config, {**trace, "estimate": part})
     status |= raised
-    progress, diverging = no_progress_yet(), 0
+    progress, diverging = state["progress"], 0
     if state["mode"] == MRD_MODE_DAMPING:
         progress, diverging = watch(state["progress"], supervisor, state["trips"], part)
     now = Standing(state["mode"], state["dwell"], state["trips"])
@@ -217,8 +217,9 @@ def step(state: Record, config: Record, inputs: Record) -> tuple[Record, Record]
     after = advance(now, state["inhibit_commanded"], supervisor, inputs, seen)
     # Where low power comes before it, the row of divergence does not apply.
     diverged = diverging and after.mode in (MRD_MODE_PAUSE, MRD_MODE_SAFE)
-    if after.mode != MRD_MODE_DAMPING:
-        progress = no_progress_yet()
+    low_power = after.mode == MRD_MODE_INHIBIT and not state["inhibit_commanded"]
+    if after.mode not in (MRD_MODE_DAMPING, MRD_MODE_HOLD_OFF) and not low_power:
+        progress = no_progress_yet()  # low power once an orbit must not blind the guard
     status |= bit(progress["stalled"], MRD_S_NO_PROGRESS)
     status |= bit(diverged or after.mode == MRD_MODE_PAUSE, MRD_S_DIVERGING)
     new = {

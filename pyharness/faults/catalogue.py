@@ -221,7 +221,7 @@ def _gyro(name: str, shows: str, inject: Inject, within: Within, recovers: str) 
     return Fault(name, shows, inject, within, does, recovers, "gyro_faults", passing=SETTLES, lasting=FLIES_ON)
 
 
-def _coil(name: str, shows: str, inject: Inject, within: Within, does: str, lasting: frozenset[Outcome], counter: str, recovers: str = "by command RESUME") -> Fault:
+def _coil(name: str, shows: str, inject: Inject, within: Within, does: str, lasting: frozenset[Outcome], counter: str, recovers: str = "by SAFE or INHIBIT, then RESUME") -> Fault:
     return Fault(name, shows, inject, within, does, recovers, counter, lasting=lasting, orbits=3.2)
 
 
