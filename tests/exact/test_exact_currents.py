@@ -152,16 +152,20 @@ def test_a_backward_coil_gets_no_pulse_of_the_law_but_one_of_the_bench(mode, tic
     assert state["path"]["pending"] == tuple(int(n != 0) for n in ticks)
 
 
-@pytest.mark.parametrize(("elapsed", "stamped"), [
-    (2**30, False), (2**30 + 1, True), (2**31, True), (2**32 - 1, True), (0, False),
+PERIOD = path_config()["period_us"]
+
+
+@pytest.mark.parametrize(("elapsed", "stamped", "moved"), [
+    (0, False, False), (10_000, True, False), (9_999, False, False),  # the stamp is 10 ms old
+    (2**30, True, False), (2**31 + 9_999, True, False), (2**31 + 10_000, True, True),
+    (2**32 - PERIOD - 1, True, True), (2**32 - PERIOD, False, False), (2**32 - 1, False, False),
 ])
-def test_a_pulse_of_long_ago_or_from_before_the_clock_was_set_back_takes_a_present_stamp(elapsed, stamped):
-    """The stamp is 10 ms before the start of the cycle, and always before the pulse, but where that is over."""
+def test_a_pulse_of_long_ago_or_from_before_the_clock_was_set_back_takes_a_present_stamp(elapsed, stamped, moved):
+    """A stamp is judged as it stands first; one that lies ahead by less than a period is of a pulse still to come."""
     start = path_inputs()["cycle_start_us"]
     opened = (start - elapsed) % 2**32
-    stamp = (opened - 1) % 2**32 if not stamped else (start - 10_000) % 2**32
     after, _, status = sense({"pending": (1, 0, 0), "drive_us": (opened, 0, 0)},
-        switch_off_us=(stamp, start - 10_000, start - 10_000))
+        switch_off_us=((start - 10_000) % 2**32,) * 3)
     assert after["pending"] == (int(not stamped), 0, 0)
     assert status >> MRD_S_SWITCH_OFF_UNSTAMPED & 1 == (not stamped)
-    assert after["drive_us"][0] == ((start - 2**30) % 2**32 if elapsed > 2**30 else opened)
+    assert after["drive_us"][0] == ((start - 2**30) % 2**32 if moved else opened)

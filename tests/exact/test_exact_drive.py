@@ -252,7 +252,8 @@ def test_the_limit_fills_every_window():
 def test_commit_waits_for_the_switch_off_of_every_pulse_made(cycle_start, opens):
     before = {**path_reset(), "drive_us": (5, 6, 7), "pending": (0, 1, 0)}
     after = path_commit(before, path_config(), path_inputs(cycle_start_us=cycle_start), (1, 0, -32768))
-    assert after == {**before, "drive_us": (opens, 6, opens), "pending": (1, 1, 1), "ticks": (1, 0, -32768)}
+    earliest = (opens - path_config()["tolerance_us"]) % 2**32
+    assert after == {**before, "drive_us": (earliest, 6, earliest), "pending": (1, 1, 1), "ticks": (1, 0, -32768)}
     assert path_commit(after, path_config(), path_inputs(cycle_start_us=77), (0, 0, 0)) == {
         **after, "ticks": (0, 0, 0)}
 

@@ -128,7 +128,9 @@ RESTARTS = [
     ((MRD_MODE_SETTLED, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
     ((MRD_MODE_INHIBIT, 0), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)),
     ((MRD_MODE_PAUSE, 0), (MRD_MODE_PAUSE, MRD_MODE_PAUSE)),
-    *[((MRD_MODE_INHIBIT, inhibited), (MRD_MODE_INHIBIT, MRD_MODE_INHIBIT)) for inhibited in (65535, 65534, 32767, 1)],
+    *[((MRD_MODE_INHIBIT, inhibited), (MRD_MODE_INHIBIT, MRD_MODE_INHIBIT)) for inhibited in (65535, 65534, 32767, 3)],
+    # One bit alone is a flip of 0: low power, which ends by itself.
+    *[((MRD_MODE_INHIBIT, 1 << bit), (MRD_MODE_HOLD_OFF, MRD_MODE_DAMPING)) for bit in (0, 7, 15)],
     *[((mode, inhibited), (MRD_MODE_SAFE, MRD_MODE_SAFE))
       for mode in (MRD_MODE_SAFE, MRD_MODE_BENCH, 0, 1, 2, 4, 7, 11, 14, 77, 65535) for inhibited in (0, 1)],
 ]

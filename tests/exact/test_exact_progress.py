@@ -138,7 +138,8 @@ def test_trips_stop():
 def test_what_turns_the_coils_off_comes_before_a_divergence(changes, mode):
     state, outputs = flight(GROWN, inputs={4: changes})
     assert (outputs[-1]["mode"], state["trips"], state["counters"]["trips"]) == (mode, 0, 0)
-    assert not any(tell(outputs, MRD_S_DIVERGING)) and state["progress"] == no_progress_yet()
+    assert not any(tell(outputs, MRD_S_DIVERGING))
+    assert (state["progress"] == no_progress_yet()) == ("command" in changes)  # low power does not blind the guard
 
 
 def test_settling_forgets_the_trips_and_the_peaks():
@@ -152,13 +153,20 @@ def test_no_progress_lasts_until_a_window_ends_otherwise_or_the_mode_changes():
     _, outputs = flight(stalled, 12, {"supervisor.guard_turn": 65535})
     assert tell(outputs, MRD_S_NO_PROGRESS) == [0] * 4 + [1] * 5 + [0] * 3  # against 65535 in the window after
     state, outputs = flight(stalled, 7, {"supervisor.guard_turn": 65535}, {6: {"low_power": 1}})
+    assert tell(outputs, MRD_S_NO_PROGRESS) == [0] * 4 + [1] * 3
+    state, outputs = flight(stalled, 7, {"supervisor.guard_turn": 65535}, {6: {"command": MRD_COMMAND_INHIBIT}})
     assert tell(outputs, MRD_S_NO_PROGRESS) == [0] * 4 + [1] * 2 + [0]
 
 
 @pytest.mark.parametrize("mode", [MRD_MODE_HOLD_OFF, MRD_MODE_SETTLED, SAFE, PAUSE])
 def test_progress_is_watched_in_damping_only(mode):
+    """In hold-off it waits, as in low power; in the others it is forgotten."""
     state, outputs = flight({**GROWN, "mode": mode}, 1)
-    assert state["progress"] == no_progress_yet() and outputs[0]["counters"]["trips"] == 0
+    assert outputs[0]["counters"]["trips"] == 0
+    if mode == MRD_MODE_HOLD_OFF:
+        assert state["progress"]["window"] == 0 and state["progress"]["peak"] == GROWN["progress.peak"]
+    else:
+        assert state["progress"] == no_progress_yet()
 
 
 # ---- telemetry ----

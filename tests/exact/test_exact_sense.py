@@ -185,7 +185,7 @@ def test_a_stamp_from_before_the_pulse_does_not_clear_it(after_opening, stamped,
     """On both sides of the window's opening and of half the wrap; once it opens 22 ms before the wrap."""
     state, first = driven(cycle=cycle)
     opens = state["drive_us"][0]
-    assert cycle == 1 or opens == 2**32 - 22_296
+    assert cycle == 1 or opens == 2**32 - 22_296 - path_config()["tolerance_us"]
     stamps = ((opens + after_opening) % 2**32,) * 3
     state, trace, status = sense(state, inputs=path_inputs(cycle + 1, switch_off_us=stamps))
     assert stamps != first["switch_off_us"] and status >> MRD_S_SWITCH_OFF_UNSTAMPED & 1 == (not stamped)
@@ -198,7 +198,7 @@ def test_an_unchanged_stamp_does_not_clear_a_pulse_even_from_after_its_window():
     ahead = path_inputs(1, switch_off_us=(1_150_000,) * 3)
     state, _, _ = sense(inputs=ahead)
     state = path_commit(state, path_config(), ahead, (1, 1, 1))
-    assert state["drive_us"] == (1_145_000,) * 3
+    assert state["drive_us"] == (1_145_000 - path_config()["tolerance_us"],) * 3  # the window may open that much early
     state, _, status = sense(state, inputs=path_inputs(2, switch_off_us=ahead["switch_off_us"]))
     assert raised(status, MRD_S_SWITCH_OFF_UNSTAMPED, MRD_S_BLANKED) and state["pending"] == (1, 1, 1)
 
