@@ -34,12 +34,9 @@ write_folder(Path(sys.argv[1]), make_vectors(str(demo_path()), Interface(find_so
 
 @pytest.fixture(scope="module")
 def flown():
-    """All scenarios, those with the long flights in one batch, with the C controller in the loop.
-
-    Those with sick coils fly by themselves: with them a plant takes longer for every cycle.
-    """
+    """All scenarios, with the C controller in the loop; those of like length in one batch."""
     controller, records = load_controller("c"), {}
-    for scenarios in (FAULTY, (*LOOP, *LONG)):
+    for scenarios in (FAULTY, LOOP, LONG):
         flights = [scenario.flight(str(demo_path())) for scenario in scenarios]
         records |= zip([s.name for s in scenarios], fly(flights, controller), strict=True)
     return records, controller.interface
