@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -87,7 +87,7 @@ def _case(fault: Fault, moment: Moment, nominal: Watched) -> Case:
         cycles = max(cycles, moment.cycle + round(_orbits(fault, scaling) * setting.orbit))
     if not moment.stays:
         setting = Setting(scaling, moment.cycle, moment.cycle + round(PASSES_AFTER_S / scaling.period_s))
-    return Case(fault, moment, setting, fault.flight(Flight(**{**flight.__dict__, "cycles": cycles}), setting))
+    return Case(fault, moment, setting, fault.flight(replace(flight, cycles=cycles), setting))
 
 
 def _orbits(fault: Fault, scaling: Scaling) -> float:

@@ -5,11 +5,11 @@ from __future__ import annotations
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
 from pyharness.mission import AXES
 from pyharness.replay.replayed import Replayed
 from pyharness.review.bins import Bins
+from pyharness.review.rates import rate_axis
 from pyharness.review.style import (
     AXIS_STYLE,
     BLUE,
@@ -67,16 +67,7 @@ def _rate(axes: Axes, replayed: Replayed) -> None:
     at, estimate = bins.mean(edge[:-1]), replayed.estimate_deg_s
     axes.plot(at, bins.greatest(estimate), color=ORANGE, label="estimate, extremes")
     axes.plot(at, np.maximum(bins.least(estimate), 1e-3), color=ORANGE, linewidth=0.7)
-    control = replayed.scaling.mission.control
-    for value, label, colour, pattern in (
-        (control.wake_deg_s, "wakes above", GREY, (0, (1, 1.5))),
-        (control.settled_deg_s, "slow up to", GREEN, (0, (5, 2))),
-    ):
-        axes.axhline(value, color=colour, linewidth=1, linestyle=pattern, label=f"{label} {value:g} °/s")
-    axes.set_yscale("log")
-    axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5)))
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
-    axes.yaxis.set_minor_formatter(NullFormatter())
+    rate_axis(axes, replayed.scaling.mission.control)
     axes.set_ylabel("[°/s]")
     axes.set_title("Rate estimate on board")
     legend_above(axes, 3)

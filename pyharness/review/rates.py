@@ -7,6 +7,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
+from pyharness.mission.model import Control
 from pyharness.review.bins import Bins
 from pyharness.review.flown import Flown
 from pyharness.review.style import (
@@ -73,7 +74,15 @@ def _rate(axes: Axes, flown: Flown) -> None:
             at, np.maximum(low, 1e-3), high, color=ORANGE, alpha=0.45, linewidth=0, label="estimate on board"
         )
     axes.plot(at, bins.mean(flown.record.true_rate_deg_s), color=INK, label="true ‖ω‖")
-    control = flown.scaling.mission.control
+    rate_axis(axes, flown.scaling.mission.control)
+    axes.set_ylabel("‖ω‖ [°/s]")
+    _mark_moments(axes, flown)
+    axes.set_title("Rate")
+    legend_above(axes, 4)
+
+
+def rate_axis(axes: Axes, control: Control) -> None:
+    """A logarithmic axis of rates, °/s, with both thresholds of the settled decision."""
     for value, label, colour, pattern in (
         (control.wake_deg_s, "wakes above", GREY, (0, (1, 1.5))),
         (control.settled_deg_s, "slow up to", GREEN, (0, (5, 2))),
@@ -83,10 +92,6 @@ def _rate(axes: Axes, flown: Flown) -> None:
     axes.yaxis.set_major_locator(LogLocator(subs=(1, 2, 5)))
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
     axes.yaxis.set_minor_formatter(NullFormatter())
-    axes.set_ylabel("‖ω‖ [°/s]")
-    _mark_moments(axes, flown)
-    axes.set_title("Rate")
-    legend_above(axes, 4)
 
 
 def _mark_moments(axes: Axes, flown: Flown) -> None:
